@@ -1,0 +1,120 @@
+"""Every exception the package raises on purpose, as one tree.
+
+GibbsminError
++-- FormulaError             a chemical formula that cannot be read
++-- UnknownSpeciesError      a name that is in no species file (suggestions attached)
++-- AmbiguousSpeciesError    a formula that several isomers share (candidates attached)
++-- SpeciesDataError         a species record or file with faults (all of them attached)
++-- TemperatureRangeError    a temperature outside a species record's validity range
++-- ScenarioError            a scenario file with faults (all of them attached)
++-- FolderExistsError        an output folder that would be overwritten without being asked
++-- ProblemError             arrays handed to the minimiser that do not fit together
+
+Facts are fields, so a caller need not parse the message; all of them survive pickling.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+
+class GibbsminError(Exception):
+    """Base of all errors that a user can cause and mend."""
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return (_rebuild, (type(self), self.args, self.__dict__))
+
+
+def _rebuild(kind: type[GibbsminError], args: tuple[Any, ...], fields: dict[str, Any]) -> GibbsminError:
+    error = kind.__new__(kind, *args)
+    error.args = args
+    error.__dict__.update(fields)
+    return error
+
+
+class FormulaError(GibbsminError):
+    """A chemical formula cannot be read."""
+
+    def __init__(self, formula: str, reason: str) -> None:
+        self.formula = formula
+        self.reason = reason
+        super().__init__(f"cannot read the formula {formula!r}: {reason}")
+
+
+class UnknownSpeciesError(GibbsminError):
+    """No species of that name, alias or formula."""
+
+    def __init__(self, query: str, suggestions: Sequence[str] = ()) -> None:
+        self.query = query
+        self.suggestions = tuple(suggestions)
+        hint = f"; did you mean {', '.join(self.suggestions)}?" if self.suggestions else ""
+        super().__init__(f"no species is called {query!r}{hint}")
+
+
+class AmbiguousSpeciesError(GibbsminError):
+    """Several species (isomers) share the formula that was asked for."""
+
+    def __init__(self, query: str, candidates: Sequence[str]) -> None:
+        self.query = query
+        self.candidates = tuple(candidates)
+        super().__init__(f"{query!r} is the formula of several species; choose one of {', '.join(self.candidates)}")
+
+
+@dataclass(frozen=True)
+class Fault:
+    """One fault in a file: where it is, what was found, and what would have been right."""
+
+    message: str
+    file: str = ""
+    line: int | None = None
+    column: int | None = None
+
+    def __str__(self) -> str:
+        place = self.file
+        if self.line is not None:
+            place += f":{self.line}"
+            if self.column is not None:
+                place += f":{self.column}"
+        return f"{place}: {self.message}" if place else self.message
+
+
+class _FaultyFileError(GibbsminError):
+    def __init__(self, faults: Sequence[Fault]) -> None:
+        self.faults = tuple(faults)
+        super().__init__("\n".join(str(fault) for fault in self.faults))
+
+
+class SpeciesDataError(_FaultyFileError):
+    """A species record or file has faults; all are listed."""
+
+
+class ScenarioError(_FaultyFileError):
+    """A scenario file has faults; all are listed."""
+
+
+class TemperatureRangeError(GibbsminError):
+    """A temperature outside the validity range of a species record."""
+
+    def __init__(self, species: str, temperature: float, lower: float, upper: float) -> None:
+        self.species = species
+        self.temperature = temperature
+        self.lower = lower
+        self.upper = upper
+        super().__init__(
+            f"{species}: {temperature:g} K is outside the range {lower:g} to {upper:g} K of its data; "
+            "leave the species out, change the temperatures, or allow extrapolation"
+        )
+
+
+class FolderExistsError(GibbsminError):
+    """The output folder exists and overwriting was not asked for."""
+
+    def __init__(self, folder: str) -> None:
+        self.folder = folder
+        super().__init__(f"{folder} exists already; choose another folder or ask for it to be overwritten")
+
+
+class ProblemError(GibbsminError):
+    """Arrays handed to the minimiser have wrong shapes or values that no gas can have."""
