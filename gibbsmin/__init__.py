@@ -1,0 +1,74 @@
+"""Equilibrium composition maps of high-temperature gas processes by Gibbs-energy minimisation.
+
+Names are loaded on first use (PEP 562), so that `import gibbsmin` stays light; the numerical
+libraries come in only with the function that needs them.
+
+    >>> import gibbsmin
+    >>> result = gibbsmin.equilibrium({"CH4": 1, "H2O": 3}, temperature=1100.0, pressure=20e5)
+    >>> float(result.mole_fraction.sel(species="H2"))  # doctest: +SKIP
+
+Equilibrium is a limit, not a rate: a real unit may stay far from it. See the cautions in the README.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from gibbsmin import errors
+    from gibbsmin.minimiser import minimise
+    from gibbsmin.outcome import Outcome
+    from gibbsmin.running import run
+    from gibbsmin.scenario import load_scenario
+    from gibbsmin.solving import equilibrium
+    from gibbsmin.species import standard_library
+
+    __version__: str
+
+_HOME_OF = {
+    "Outcome": "gibbsmin.outcome",
+    "equilibrium": "gibbsmin.solving",
+    "load_scenario": "gibbsmin.scenario",
+    "minimise": "gibbsmin.minimiser",
+    "run": "gibbsmin.running",
+    "standard_library": "gibbsmin.species",
+}
+
+__all__ = [
+    "Outcome",
+    "__version__",
+    "equilibrium",
+    "errors",
+    "load_scenario",
+    "minimise",
+    "run",
+    "standard_library",
+]
+
+
+def __getattr__(name: str) -> Any:
+    value: Any
+    if name == "__version__":
+        value = _installed_version()
+    elif name == "errors":
+        value = import_module("gibbsmin.errors")
+    elif name in _HOME_OF:
+        value = getattr(import_module(_HOME_OF[name]), name)
+    else:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    globals()[name] = value  # kept, so that the next access does not come here
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *__all__})
+
+
+def _installed_version() -> str:
+    from importlib.metadata import PackageNotFoundError, version
+
+    try:
+        return version("gibbsmin")
+    except PackageNotFoundError:  # a checkout on the path that was never installed
+        return "0+unknown"
