@@ -65,7 +65,7 @@ class Document:
     """What one YAML document holds and where.
 
     `data` is built of dict (keys are text), list, str, int, float, bool and None. `positions` maps the path
-    of every value to its line and column, `key_positions` the path of every mapping entry to those of its key.
+    of every value to its line and column, `key_positions` that of every mapping entry to those of its key.
     A document with a syntax fault has `data` None. Where a key is written twice, the first value is kept.
     """
 
@@ -110,7 +110,7 @@ def parse_file(path: str | PathLike[str], *, shown_as: str | None = None) -> Doc
 
 
 def parse(text: str, file: str = "", *, first_line: int = 1) -> Document:
-    """Parse one YAML document; `first_line` is the line number of its first line, for an excerpt of a file."""
+    """Parse one YAML document; `first_line` is the number of its first line when it is part of a file."""
     return _Reader(file, first_line).read(text)
 
 
