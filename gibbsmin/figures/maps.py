@@ -1,0 +1,160 @@
+"""Filled contour maps of one quantity over two axes of the grid, one panel per value of the others."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Literal
+
+import numpy as np
+import xarray as xr
+from matplotlib import colormaps
+from matplotlib.axes import Axes
+from matplotlib.collections import PolyCollection
+from matplotlib.colors import BoundaryNorm
+from matplotlib.contour import QuadContourSet
+from matplotlib.figure import Figure
+from numpy.typing import NDArray
+
+from gibbsmin.figures.axes import SI_UNITS, Axis, DisplayUnit, axes_of, plan_panels
+from gibbsmin.figures.levels import Levels, choose_levels
+from gibbsmin.figures.look import HATCH, HATCH_COLOUR, INK, MAP_COLOURS
+from gibbsmin.figures.page import Geometry, Page, Words
+from gibbsmin.figures.ticks import set_scale
+
+_ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.1, right=1.0)
+_PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.0)
+_FEW_POINTS = 150  # up to so many points a map marks each, so that its resolution can be seen
+_MOST_NUMBERED = 5  # contour lines with a number on them, in a panel
+_PALE = 0.5  # lightness above which a colour gets dark writing
+
+
+def draw_map(
+    field: xr.DataArray,
+    *,
+    title: str,
+    subtitle: str = "",
+    scale_label: str = "",
+    units: Mapping[str, DisplayUnit] = SI_UNITS,
+) -> Figure | None:
+    """A filled contour map of `field` [any unit] over its first two axes with more than one value.
+
+    Parameters: `field` has the dimensions of the grid only, NaN where a point is not solved; `title` and
+    `scale_label` may hold matplotlib markup, `subtitle` is taken literally; `units` says how temperature and
+    pressure are shown.
+
+    Returns None where there is no map to draw: fewer than two axes with several values, or the same
+    value everywhere.
+    Raises ValueError for a field that is not on a grid.
+    """
+    axes = axes_of(field, units)
+    spanned = [axis for axis in axes.values() if len(axis) > 1][:2]
+    levels = choose_levels(np.asarray(field.values, dtype=float))
+    if len(spanned) < 2 or levels is None:
+        return None
+    across, up = spanned
+    plan = plan_panels(axis for axis in axes.values() if axis not in spanned)
+    blank = ~np.isfinite(field.values)
+    few = len(across) * len(up) <= _FEW_POINTS
+    words = Words(
+        title=title,
+        subtitle=", ".join(filter(None, (subtitle, plan.fixed_words))),
+        notes=[*(["dots: computed points"] if few else []), *plan.notes],
+        unsolved=int(blank.sum()),
+        points=blank.size,
+    )
+    page = Page(plan, _PANELS if len(plan.panels) > 1 else _ONE_PANEL, words)
+    areas = None
+    for panel in plan.panels:
+        values = field.isel(panel.held).transpose(up.name, across.name).values.astype(float)
+        drawn = _draw_panel(page.panels[panel.row, panel.column], across, up, values, levels, few)
+        areas = areas or drawn
+    page.label_axes(across.label, up.label)
+    if areas is not None:
+        _draw_colour_scale(page, areas, levels, scale_label)
+    return page.figure
+
+
+def _draw_panel(
+    axes: Axes, across: Axis, up: Axis, values: NDArray[np.float64], levels: Levels, dots: bool
+) -> QuadContourSet | None:
+    """One panel; returns its coloured areas, or None where no point of it is solved."""
+    set_scale(axes, "x", across, most_ticks=6)
+    set_scale(axes, "y", up, most_ticks=6)
+    axes.spines[["top", "right"]].set_visible(True)
+    _hatch_blank(axes, across, up, np.isnan(values))
+    position = np.ma.masked_invalid(levels.position(values))
+    if position.count() == 0:
+        return None
+    if dots:
+        x, y = np.meshgrid(across.values, up.values)
+        known = ~np.isnan(values)
+        axes.plot(
+            x[known],
+            y[known],
+            linestyle="none",
+            marker=".",
+            markersize=2.2,
+            color="white",
+            markeredgecolor=INK,
+            markeredgewidth=0.3,
+            clip_on=False,
+            zorder=3,
+        )
+    grid = (across.values, up.values, position)
+    norm = _norm(levels)
+    # Whole squares next to an unsolved point stay blank: exactly those that are hatched.
+    areas = axes.contourf(
+        *grid, levels.places, cmap=MAP_COLOURS, norm=norm, extend=norm.extend, corner_mask=False
+    )
+    crossed = [place for place in levels.places if position.min() < place < position.max()]
+    if crossed:
+        lines = axes.contour(
+            *grid, crossed, colors="white", linewidths=0.45, linestyles="solid", corner_mask=False
+        )
+        _number_lines(axes, lines, levels, norm)
+    return areas
+
+
+def _norm(levels: Levels) -> BoundaryNorm:
+    extend: Literal["min", "neither"] = "min" if levels.floor is not None else "neither"
+    return BoundaryNorm(levels.places, colormaps[MAP_COLOURS].N, extend=extend)
+
+
+def _number_lines(axes: Axes, lines: QuadContourSet, levels: Levels, norm: BoundaryNorm) -> None:
+    numbered = [place for place in lines.levels if np.isclose(levels.numbered, place).any()]
+    while len(numbered) > _MOST_NUMBERED:
+        numbered = numbered[1::2]
+    colours = colormaps[MAP_COLOURS]
+    writing = ["black" if _lightness(colours(norm(place))) > _PALE else "white" for place in numbered]
+    axes.clabel(lines, numbered, fontsize=6.5, colors=writing, fmt=levels.text, inline_spacing=2)
+
+
+def _lightness(colour: tuple[float, float, float, float]) -> float:
+    """Luma in the weights of ITU-R BT.709: enough to choose black or white writing."""
+    return 0.2126 * colour[0] + 0.7152 * colour[1] + 0.0722 * colour[2]
+
+
+def _hatch_blank(axes: Axes, across: Axis, up: Axis, blank: NDArray[np.bool_]) -> None:
+    """Hatch every square of the grid that has an unsolved point at a corner."""
+    squares = blank[1:, 1:] | blank[1:, :-1] | blank[:-1, 1:] | blank[:-1, :-1]
+    if not squares.any():
+        return
+    x, y = across.values, up.values
+    corners = [
+        [(x[i], y[j]), (x[i + 1], y[j]), (x[i + 1], y[j + 1]), (x[i], y[j + 1])]
+        for j, i in zip(*np.nonzero(squares), strict=True)
+    ]
+    hatched = PolyCollection(
+        corners, facecolor="white", edgecolor=HATCH_COLOUR, hatch=HATCH, linewidth=0.0, zorder=0.5
+    )
+    hatched.set_gid("unsolved")
+    axes.add_collection(hatched, autolim=False)
+
+
+def _draw_colour_scale(page: Page, areas: QuadContourSet, levels: Levels, label: str) -> None:
+    scale = page.figure.colorbar(areas, cax=page.add_colour_box(), spacing="uniform")
+    scale.set_ticks(list(levels.numbered), labels=[levels.text(place) for place in levels.numbered])
+    scale.ax.tick_params(length=2, labelsize=7)
+    scale.outline.set_linewidth(0.5)
+    if label:
+        scale.set_label(label, fontsize=7.5)
