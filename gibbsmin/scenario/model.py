@@ -44,7 +44,7 @@ class Axis:
     Attributes:
         name: coordinate name in the results, an identifier ("temperature", "steam_to_carbon").
         title: the name as the file has it ("steam to carbon").
-        values: in `unit`, in the order of the file.
+        values: in `unit`, ascending and distinct.
         unit: "K", "Pa", "mol", "mol/h" or "1".
         display_values: the same points in `display_unit`.
         display_unit: the unit the user wrote ("degC", "bar(g)", "kmol/h"; "1" for a ratio).
@@ -156,8 +156,8 @@ class Yield:
     """Product formed per feed.
 
     With `element` None: (product out - product in) / (`reactant` in), mol/mol. With `element` given:
-    atoms of it in the product, out minus in, as a fraction of those in `reactant` in (or, with `reactant` None,
-    in the whole feed).
+    atoms of it in the product, out minus in, as a fraction of those in `reactant` in (with `reactant` None: in
+    the whole feed).
     """
 
     name: str
@@ -190,8 +190,8 @@ class WantedResults:
     """What to report and draw beside the full composition.
 
     `line_pressures` are the pressures [Pa], all of them points of the grid, at which composition is drawn
-    against temperature; empty means that the figures choose. An empty `key_species` does not occur: without a
-    word in the file it holds the feed's gases.
+    against temperature; empty means that the figures choose. With an empty `key_species` the most abundant
+    ones are chosen once they are known.
     """
 
     key_species: tuple[str, ...]
@@ -351,7 +351,7 @@ class Scenario:
         }
 
     def feed_amounts(self) -> Mapping[str, NDArray[np.float64]]:
-        """Species -> amounts in the whole feed [`amount_unit`], shape `feed_shape`, in order of appearance."""
+        """Species -> amounts in the whole feed [`amount_unit`], shape `feed_shape`, as they appear."""
         return {species: values.astype(np.float64) for species, values in self.exact_feed_amounts().items()}
 
     def describe(self) -> str:

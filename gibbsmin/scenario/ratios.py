@@ -23,7 +23,7 @@ if TYPE_CHECKING:
 
 
 class RatioImpossibleError(ValueError):
-    """No non-negative amount of the changed stream gives the ratio; `axis` is the axis title, `value` the ratio."""
+    """No non-negative amount of the changed stream gives the ratio `value` of the axis titled `axis`."""
 
     def __init__(self, axis: str, value: Fraction, reason: str) -> None:
         self.axis = axis
