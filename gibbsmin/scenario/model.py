@@ -156,8 +156,8 @@ class Yield:
     """Product formed per feed.
 
     With `element` None: (product out - product in) / (`reactant` in), mol/mol. With `element` given:
-    atoms of it in the product, out minus in, as a fraction of those in `reactant` in (with `reactant` None: in
-    the whole feed).
+    atoms of it in the product, out minus in, as a fraction of those in `reactant` in (in the whole
+    feed where `reactant` is None).
     """
 
     name: str

@@ -17,7 +17,7 @@ VALUES_PER_SPECIES = 2
 """Amount and mole fraction are kept for every species at every point."""
 
 SINGLE_VALUES = 7
-"""Numbers of a point that do not depend on the number of species: status, gap, residual, gas amount and so on."""
+"""Numbers of a point whatever the number of species: status, gap, residual, gas amount and so on."""
 
 
 @dataclass(frozen=True)

@@ -148,6 +148,7 @@ class _AxisReader:
         self, value: Mapping[str, Any], path: YamlPath, first: Quantity | Fraction, last: Quantity | Fraction
     ) -> tuple[Fraction, ...] | None:
         place = (*path, "step")
+        step: Quantity | Fraction | None
         if isinstance(first, Quantity):
             step = self._difference(value["step"], place, value.get("unit") or first.unit.symbol)
         else:

@@ -33,13 +33,12 @@ def add_own_species(reading: Reading, data: Mapping[str, Any], folder: Path) -> 
         except SpeciesDataError as error:
             reading.fault(place, f"the species file {name!r} has faults, listed below")
             reading.faults.extend(error.faults)
-    records = [each for each in data.get("own", ()) if each is not FAULTY]
-    if records:
-        try:
-            reading.library = reading.library.with_records(records)
-        except SpeciesDataError as error:
-            for fault in error.faults:
-                reading.fault(("species", "own"), fault.message)
+    if "own" in data:
+        from gibbsmin.species import read_species
+
+        records, faults = read_species(reading.document, ("species", "own"))
+        reading.faults.extend(faults)
+        reading.library = reading.library.with_records(records)
 
 
 def choose_species(

@@ -2,8 +2,8 @@
 
 `schema.json` is the only place that says which keys exist and what kind of value each takes; editors
 complete from it and this module checks against it. It knows only the part of JSON Schema that `schema.json`
-uses, and in exchange gives messages that name the place, what was found, what is allowed and the nearest valid
-word. What a schema cannot say (units, species, what fits together) is checked by the other modules.
+uses, and in exchange gives messages that name the place, what was found, what is allowed and the nearest
+valid word. What a schema cannot say (units, species, what fits together) is checked by the other modules.
 """
 
 from __future__ import annotations

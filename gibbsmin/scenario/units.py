@@ -8,7 +8,7 @@ Spelling:
 - temperature: K, degC, degF;
 - absolute pressure: Pa, hPa, kPa, MPa, mbar, bar, atm, torr, psi(a); bar(a) and its like are read too;
 - gauge pressure: kPa(g), MPa(g), mbar(g), bar(g), psi(g); the habitual barg, bara, psig, psia and "bar gauge"
-  are read as well. Plain "psi" is refused, because half of its readers take it for gauge and half for absolute;
+  are read as well. Plain "psi" is refused: some readers take it for gauge, some for absolute;
 - amount: mol, kmol, lbmol, g, kg, t, lb, normal m3 (273.15 K, 101325 Pa: DIN 1343), standard m3 (288.15 K,
   101325 Pa: ISO 13443), alone or per s, min, h or d; Nm3 and Sm3 are read as well.
 """
