@@ -1,0 +1,84 @@
+"""Zero failures on the declared population of random problems (see tests/population.py)."""
+
+from __future__ import annotations
+
+from collections import Counter
+
+import numpy as np
+import pytest
+
+from tests import reference
+from tests.population import COMMON, KINDS, problem, problems, run_population
+
+
+@pytest.mark.parametrize("block", range(4))
+def test_every_problem_is_solved_and_proved(block: int) -> None:
+    """Status solved, gap <= 1e-10 sum(b), balance residual <= 1e-12, nothing non-finite, no exception."""
+    report = run_population(1000, seed=2026, first=1000 * block)
+    assert report["failures"] == []
+    assert report["by_status"] == {"SOLVED": 1000}
+
+
+@pytest.mark.slow
+def test_twenty_thousand_more_are_solved_and_proved() -> None:
+    report = run_population(20_000, seed=7)
+    assert report["failures"] == []
+    assert report["by_status"] == {"SOLVED": 20_000}
+
+
+def test_problems_are_reproducible_one_by_one() -> None:
+    for case in problems(30, seed=5, first=100):
+        again = problem(5, case.index)
+        np.testing.assert_array_equal(case.formula_matrix, again.formula_matrix)
+        np.testing.assert_array_equal(case.element_amounts, again.element_amounts)
+        np.testing.assert_array_equal(case.potentials, again.potentials)
+        assert case.names == again.names
+
+
+def test_population_is_as_declared() -> None:
+    """Sizes, elements, conditions and kinds of feed cover what they claim to cover."""
+    drawn = list(problems(3000, seed=1))
+    sizes = np.array([case.formula_matrix.shape[1] for case in drawn])
+    assert sizes.min() >= 2
+    assert sizes.max() > 250
+    assert np.mean(sizes > 50) > 0.1
+    temperatures = np.array([case.temperature for case in drawn])
+    assert temperatures.min() < 210
+    assert temperatures.max() > 19000
+    assert np.all((temperatures >= 200 * (1 - 1e-12)) & (temperatures <= 20000 * (1 + 1e-12)))
+    pressures = np.array([case.pressure for case in drawn])
+    assert pressures.min() < 1e-7
+    assert pressures.max() > 1e3
+    counts = Counter(case.kind for case in drawn)
+    for kind, part in KINDS.items():
+        assert counts[kind] == pytest.approx(3000 * part, rel=0.25), kind
+    seen = Counter(element for case in drawn for element in case.elements)
+    assert set(COMMON) < set(seen)
+    assert len(seen) > 20  # metals, charge
+    assert 0.05 < np.mean(["charge" in case.elements for case in drawn]) < 0.3
+    for case in drawn:
+        assert np.all(np.isfinite(case.potentials))
+        assert np.all(case.element_amounts[: len(case.elements)] >= 0)
+    spread = [case.element_amounts[case.element_amounts > 0] for case in drawn if case.kind == "random"]
+    assert max(b.max() / b.min() for b in spread) > 1e10
+
+
+def test_kinds_hold_what_they_promise() -> None:
+    """By exact rational arithmetic: only rounded totals may be infeasible; boundary feeds exclude species."""
+    excluding: Counter[str] = Counter()
+    for case in problems(600, seed=3, most_species=60):
+        try:
+            support = reference.support(case.formula_matrix, case.exact_element_amounts)
+        except reference.InfeasibleError:
+            assert case.kind == "rounded", case.label
+            continue
+        fed = case.formula_matrix[:, case.formula_matrix[case.element_amounts == 0].any(axis=0)].shape[1]
+        excluding[case.kind] += int(np.sum(~support)) > 0
+        excluding[f"{case.kind}, beyond absent elements"] += int(np.sum(~support)) > fed
+        rank = np.linalg.matrix_rank(case.formula_matrix)
+        if case.kind == "square":
+            assert case.formula_matrix.shape[1] == rank
+        if case.kind == "redundant":
+            assert rank < len(case.formula_matrix)
+    assert excluding["boundary, beyond absent elements"] > 10
+    assert excluding["single, beyond absent elements"] > 5
