@@ -7,7 +7,9 @@ GibbsminError
 +-- SpeciesDataError         a species record or file with faults (all of them attached)
 +-- TemperatureRangeError    a temperature outside a species record's validity range
 +-- ScenarioError            a scenario file with faults (all of them attached)
++-- ConditionsError          a feed, temperature or pressure that no gas can have
 +-- FolderExistsError        an output folder that would be overwritten without being asked
++-- MissingPackageError      an optional package that the request needs is not installed
 +-- ProblemError             arrays handed to the minimiser that do not fit together
 
 Facts are fields, so a caller need not parse the message; all of them survive pickling.
@@ -108,12 +110,35 @@ class TemperatureRangeError(GibbsminError):
         )
 
 
-class FolderExistsError(GibbsminError):
-    """The output folder exists and overwriting was not asked for."""
+class ConditionsError(GibbsminError):
+    """A feed, temperature or pressure that no gas can have, or arrays of them that do not fit together.
 
-    def __init__(self, folder: str) -> None:
+    `quantity` names it as the caller does ("temperature", "feed", "feed of CH4").
+    """
+
+    def __init__(self, quantity: str, reason: str) -> None:
+        self.quantity = quantity
+        self.reason = reason
+        super().__init__(f"{quantity}: {reason}")
+
+
+class FolderExistsError(GibbsminError):
+    """The output folder exists and overwriting was not asked for, or would destroy what is not ours."""
+
+    def __init__(self, folder: str, reason: str = "") -> None:
         self.folder = folder
-        super().__init__(f"{folder} exists already; choose another folder or ask for it to be overwritten")
+        self.reason = reason
+        remedy = reason or "choose another folder or ask for it to be overwritten"
+        super().__init__(f"{folder} exists already; {remedy}")
+
+
+class MissingPackageError(GibbsminError):
+    """An optional package that the request needs is not installed."""
+
+    def __init__(self, package: str, purpose: str) -> None:
+        self.package = package
+        self.purpose = purpose
+        super().__init__(f"{purpose} needs the package {package}, which is not installed: pip install {package}")
 
 
 class ProblemError(GibbsminError):
