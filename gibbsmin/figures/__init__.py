@@ -17,7 +17,7 @@ from matplotlib.figure import Figure
 
 from gibbsmin.figures.axes import SI_UNITS, DisplayUnit
 from gibbsmin.figures.bars import draw_bars
-from gibbsmin.figures.labels import chemical, file_name, plain
+from gibbsmin.figures.labels import chemical, file_name, with_formulas
 from gibbsmin.figures.lines import draw_lines
 from gibbsmin.figures.look import house_look
 from gibbsmin.figures.maps import draw_map
@@ -141,8 +141,8 @@ def _quantity(field: xr.DataArray, name: str, common: Any) -> Drawn:
     title = words[:1].upper() + words[1:]
     spanned = sum(size > 1 for size in field.sizes.values())
     if spanned >= 2:
-        return _map(field, f"map_{file_name(name)}", plain(title), plain(label), common)
-    figure = draw_lines({name: field}, title=plain(title), value_label=label, **common)
+        return _map(field, f"map_{file_name(name)}", with_formulas(title), with_formulas(label), common)
+    figure = draw_lines({name: field}, title=with_formulas(title), value_label=label, **common)
     return Drawn(f"course_{file_name(name)}", figure, "the grid is a single point" if spanned == 0 else "")
 
 
@@ -166,8 +166,8 @@ def write_figures(
 ) -> Written:
     """Save the figures of a result as PNG and SVG in `folder`, which is made if need be.
 
-    `options` are those of `figures_of`; `progress` is called with the name of each picture once it is done.
-    Files of the same names are replaced.
+    `options` are those of `figures_of`; `progress` is called with the name of each picture as it is made
+    or left out. Files of the same names are replaced.
     """
     folder.mkdir(parents=True, exist_ok=True)
     files: list[Path] = []
@@ -175,13 +175,12 @@ def write_figures(
     taken: set[str] = set()
     with house_look():
         for drawn in figures_of(dataset, **options):
+            if progress is not None:
+                progress(drawn.name)
             if drawn.figure is None:
                 left_out[drawn.name] = drawn.reason
                 continue
-            name = _free_name(drawn.name, taken)
-            files += save_figure(drawn.figure, folder, name)
-            if progress is not None:
-                progress(name)
+            files += save_figure(drawn.figure, folder, _free_name(drawn.name, taken))
     return Written(tuple(files), left_out)
 
 

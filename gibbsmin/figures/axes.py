@@ -85,7 +85,8 @@ def _axis(name: str, coordinate: xr.DataArray, unit: DisplayUnit | None) -> Axis
     unit = unit or DisplayUnit("" if stored == "1" else stored)
     absolute = np.asarray(coordinate.values, dtype=float)
     logarithmic = name != "temperature" and is_logarithmic(absolute)
-    title = str(coordinate.attrs.get("long_name", name.replace("_", " ")))
+    # "Absolute pressure" would be wrong beside a gauge unit, and needless beside any other.
+    title = name if name in SI_UNITS else str(coordinate.attrs.get("long_name", name.replace("_", " ")))
     return Axis(name, title, unit.symbol, unit.show(absolute), logarithmic, unit.show(0.0))
 
 

@@ -5,9 +5,12 @@ from __future__ import annotations
 import math
 import re
 
+from gibbsmin.species.elements import ATOMIC_NUMBERS
+
 _COUNT = re.compile(r"(?<=[A-Za-z)\]])(\d+(?:\.\d+)?)")
 _CHARGE = re.compile(r"[+-]+$")
 _FORMULA = re.compile(r"(?:\d-)*(?:\(?[A-Z][a-z]?\d*(?:\)\d*)?)+(?:\((?:g|l|s|cr|gr|am|aq)\))?[+-]?$|^e-$")
+_WORD = re.compile(r"[A-Za-z0-9()+-]+")
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _MINUS = "\N{MINUS SIGN}"
 _SMALLEST_PLAIN, _LARGEST_PLAIN = 1e-3, 1e5  # outside, a number is printed with a power of ten
@@ -32,6 +35,19 @@ def chemical(name: str) -> str:
     if charge:
         markup += f"^{{{charge[0]}}}"
     return rf"$\mathregular{{{markup}}}$" + plain(rest)
+
+
+def with_formulas(text: str) -> str:
+    """A phrase as matplotlib markup, in which the words that are chemical formulas get their subscripts."""
+    return _WORD.sub(lambda word: chemical(word[0]) if _is_formula(word[0]) else word[0], plain(text))
+
+
+def _is_formula(word: str) -> bool:
+    symbols = re.findall(r"[A-Z][a-z]?", word)
+    has_count = any(character.isdigit() for character in word)
+    return (
+        has_count and bool(_FORMULA.fullmatch(word)) and all(symbol in ATOMIC_NUMBERS for symbol in symbols)
+    )
 
 
 def number(value: float, digits: int = 4) -> str:

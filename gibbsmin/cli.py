@@ -1,0 +1,338 @@
+"""The command `gibbsmin`: parse, call one library function, write, choose the exit code.
+
+Exit codes: 0 every point solved and confirmed; 1 some point not solved or not confirmed; 2 the request was
+wrong; 3 a defect of this program; 130 stopped by Ctrl-C.
+
+Results go to standard output and files, messages to standard error. Whatever a command needs is imported
+inside it, so that `gibbsmin --help` does not wait for numerical libraries.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+import traceback
+from collections.abc import Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from gibbsmin.errors import FolderExistsError, GibbsminError
+from gibbsmin.terminal import accept_any_text, progress_bar, say
+
+if TYPE_CHECKING:
+    from gibbsmin.figures import Written
+    from gibbsmin.outcome import Outcome
+    from gibbsmin.scenario.model import Scenario
+
+CONFIRMED, NOT_CONFIRMED, WRONG_REQUEST, DEFECT, STOPPED, PIPE_CLOSED = 0, 1, 2, 3, 130, 141
+
+_EXIT_CODES = """\
+exit codes:
+  0    every point was solved and confirmed
+  1    some point was not solved, or the cross-check does not confirm it
+  2    the request was wrong; nothing was computed
+  3    a defect of this program
+  130  stopped by Ctrl-C
+
+Equilibrium is a limit, not a rate. Nothing here sizes a relief device or shows that a gas is safe.
+"""
+
+_SCENARIO = "a scenario file, or the name of a shipped example where no file of that name exists"
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command and return its exit code; `arguments` are those after the program's name."""
+    accept_any_text(sys.stdout, sys.stderr)
+    try:
+        options = build_parser().parse_args(arguments)
+    except SystemExit as exit_:  # argparse has printed help or its complaint
+        return exit_.code if isinstance(exit_.code, int) else WRONG_REQUEST
+    try:
+        code: int = options.command(options)
+        sys.stdout.flush()
+        return code
+    except KeyboardInterrupt:
+        say("stopped")
+        return STOPPED
+    except BrokenPipeError:
+        # The reader has gone (`gibbsmin species | head`); Python must not complain again at exit.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return PIPE_CLOSED
+    except (GibbsminError, OSError, MemoryError) as error:
+        if options.debug:
+            traceback.print_exc()
+        say(*_in_words(error))
+        return WRONG_REQUEST
+    except Exception:
+        traceback.print_exc()
+        say("gibbsmin: this is a defect of the program, not of the request; please report the lines above")
+        return DEFECT
+
+
+def _in_words(error: BaseException) -> list[str]:
+    """One line for each thing that is wrong."""
+    if isinstance(error, MemoryError):
+        return [
+            "gibbsmin: not enough memory; take fewer points (gibbsmin check tells how much a scenario needs)"
+        ]
+    if isinstance(error, OSError):
+        place = f"{error.filename}: " if error.filename else ""
+        return [f"gibbsmin: {place}{error.strerror or error}"]
+    faults = getattr(error, "faults", None)
+    return [f"gibbsmin: {line}" for line in (map(str, faults) if faults else str(error).splitlines())]
+
+
+def build_parser() -> argparse.ArgumentParser:
+    """The options of all commands."""
+    parser = argparse.ArgumentParser(
+        prog="gibbsmin",
+        description="Equilibrium composition of reacting gases over maps of temperature, pressure and feed.",
+        epilog=_EXIT_CODES,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action=_Version)
+    parser.add_argument("--debug", action="store_true", help="show where in the program an error arose")
+    commands = parser.add_subparsers(title="commands", metavar="COMMAND", required=True)
+    _add_run(commands)
+    _add_check(commands)
+    _add_species(commands)
+    _add_scenarios(commands)
+    _add_schema(commands)
+    return parser
+
+
+class _Version(argparse.Action):
+    """Print the version; looked up only when asked for, because reading package metadata takes time."""
+
+    def __init__(self, option_strings: Sequence[str], dest: str) -> None:
+        super().__init__(option_strings, dest, nargs=0, help="print the version and exit")
+
+    def __call__(self, parser: argparse.ArgumentParser, *_: object) -> None:
+        import gibbsmin
+
+        print(f"gibbsmin {gibbsmin.__version__}")
+        parser.exit()
+
+
+Commands = argparse._SubParsersAction  # argparse has no public name for it
+
+
+def _add_command(
+    commands: Commands[argparse.ArgumentParser], name: str, words: str
+) -> argparse.ArgumentParser:
+    parser = commands.add_parser(name, help=words, description=words[:1].upper() + words[1:] + ".")
+    # The same switch after the command's name; a default of its own would undo the one before it.
+    parser.add_argument("--debug", action="store_true", default=argparse.SUPPRESS, help=argparse.SUPPRESS)
+    return parser
+
+
+# --- run
+
+
+def _add_run(commands: Commands[argparse.ArgumentParser]) -> None:
+    from gibbsmin.scenario.model import DEFAULT_SAMPLE_SIZE
+
+    parser = _add_command(
+        commands, "run", "solve a scenario, cross-check it, draw it and save everything in a folder"
+    )
+    parser.add_argument("scenario", metavar="SCENARIO", help=_SCENARIO)
+    parser.add_argument(
+        "--out", metavar="FOLDER", help="where to save; default: the scenario's name with -results, here"
+    )
+    parser.add_argument(
+        "--overwrite", action="store_true", help="replace the results of an earlier run in FOLDER"
+    )
+    parser.add_argument(
+        "--crosscheck",
+        choices=("sample", "all", "none"),
+        help="points to solve again with an independent library; default: what the scenario says, "
+        f"or else a sample of {DEFAULT_SAMPLE_SIZE}",
+    )
+    parser.add_argument(
+        "--threads",
+        type=_positive,
+        metavar="N",
+        help="processor cores to use; default: all that are available",
+    )
+    parser.add_argument(
+        "--table", choices=("csv", "parquet"), help="save the results as a plain table as well"
+    )
+    parser.add_argument("--no-figures", action="store_true", help="draw nothing")
+    parser.add_argument("-v", "--verbose", action="store_true", help="say what is being done")
+    parser.set_defaults(command=_run)
+
+
+def _positive(text: str) -> int:
+    number = int(text)
+    if number < 1:
+        raise argparse.ArgumentTypeError("must be at least 1")
+    return number
+
+
+def _run(options: argparse.Namespace) -> int:
+    from gibbsmin.examples import scenario_file
+    from gibbsmin.scenario import load_scenario
+
+    file = scenario_file(options.scenario)
+    folder = Path(options.out or f"{file.stem}-results")
+    if folder.exists() and not options.overwrite:  # before the work, not after it
+        raise FolderExistsError(str(folder))
+    scenario = _with_options(load_scenario(file), options)
+    say(*(f"note: {remark}" for remark in scenario.remarks))
+    tell = say if options.verbose else _silent
+    tell(f"{file}: {scenario.points} points, {len(scenario.species)} species")
+    from gibbsmin.running import run
+
+    with progress_bar(scenario.points, "solving", "points") as advance:
+        outcome = run(scenario, threads=options.threads, progress=advance)
+    tell(f"saving in {folder}")
+    outcome.save(folder, overwrite=options.overwrite)
+    figures = None if options.no_figures else _draw(outcome, folder / "figures")
+    print(outcome.summary())
+    print()
+    print(_written(folder, figures))
+    return CONFIRMED if outcome.confirmed else NOT_CONFIRMED
+
+
+def _silent(*_: str) -> None:
+    """Says nothing."""
+
+
+def _with_options(scenario: Scenario, options: argparse.Namespace) -> Scenario:
+    """The scenario with what the command line says otherwise."""
+    from dataclasses import replace
+
+    if options.crosscheck:
+        scenario = replace(scenario, cross_check=replace(scenario.cross_check, extent=options.crosscheck))
+    if options.table and options.table not in scenario.output.tables:
+        tables = (*scenario.output.tables, options.table)
+        scenario = replace(scenario, output=replace(scenario.output, tables=tables))
+    return scenario
+
+
+def _draw(outcome: Outcome, folder: Path) -> Written:
+    from gibbsmin.figures.of_outcome import count_figures, write_outcome_figures
+
+    with progress_bar(count_figures(outcome), "drawing", "figures") as advance:
+        return write_outcome_figures(outcome, folder, progress=lambda _: advance(1))
+
+
+def _written(folder: Path, figures: Written | None) -> str:
+    """What is in the output folder now, one line each."""
+    lines = [f"written to {folder}:"]
+    lines += [f"  {path.name}" for path in sorted(folder.iterdir()) if path.is_file()]
+    if figures is not None:
+        names = dict.fromkeys(path.stem for path in figures.files)
+        if names:
+            lines.append(f"  figures, as PNG and SVG: {', '.join(names)}")
+        lines += [f"  not drawn: {name}: {reason}" for name, reason in figures.left_out.items()]
+    return "\n".join(lines)
+
+
+# --- check
+
+
+def _add_check(commands: Commands[argparse.ArgumentParser]) -> None:
+    parser = _add_command(commands, "check", "say whether a scenario is sound and what it would compute")
+    parser.add_argument("scenario", metavar="SCENARIO", help=_SCENARIO)
+    parser.set_defaults(command=_check)
+
+
+def _check(options: argparse.Namespace) -> int:
+    from gibbsmin.examples import scenario_file
+    from gibbsmin.scenario import load_scenario
+
+    print(load_scenario(scenario_file(options.scenario)).describe())
+    return CONFIRMED
+
+
+# --- species
+
+
+def _add_species(commands: Commands[argparse.ArgumentParser]) -> None:
+    parser = _add_command(commands, "species", "list species, or show the data of one")
+    parser.add_argument(
+        "query",
+        metavar="QUERY",
+        nargs="?",
+        default="",
+        help="a name, formula, alias or CAS number, or part of one",
+    )
+    parser.add_argument(
+        "--temperatures",
+        metavar="K",
+        nargs="+",
+        type=float,
+        help="temperatures in K at which to show properties",
+    )
+    parser.set_defaults(command=_species)
+
+
+def _species(options: argparse.Namespace) -> int:
+    from gibbsmin.species.listing import list_species
+
+    print(list_species(options.query, temperatures=options.temperatures))
+    return CONFIRMED
+
+
+# --- scenarios
+
+
+def _add_scenarios(commands: Commands[argparse.ArgumentParser]) -> None:
+    parser = _add_command(commands, "scenarios", "list the example scenarios, print one, or copy them out")
+    parser.add_argument("names", metavar="NAME", nargs="*", help="print these examples; default: list all")
+    parser.add_argument(
+        "--copy-to", metavar="FOLDER", help="copy the named examples (all, if none is named) there"
+    )
+    parser.add_argument("--overwrite", action="store_true", help="replace files of the same name in FOLDER")
+    parser.set_defaults(command=_scenarios)
+
+
+def _scenarios(options: argparse.Namespace) -> int:
+    from gibbsmin.examples import example_named, examples, title_of
+
+    files = [example_named(name) for name in options.names] or list(examples().values())
+    if options.copy_to is not None:
+        for path in copy_files(files, Path(options.copy_to), overwrite=options.overwrite):
+            print(path)
+    elif options.names:
+        print("\n".join(path.read_text(encoding="utf-8") for path in files), end="")
+    else:
+        width = max(len(path.stem) for path in files)
+        print("\n".join(f"{path.stem:<{width}}  {title_of(path)}" for path in files))
+    return CONFIRMED
+
+
+def copy_files(files: Sequence[Path], folder: Path, *, overwrite: bool) -> list[Path]:
+    """Copy files into a folder, made if need be; all or, if one would be overwritten unasked, none."""
+    import shutil
+
+    targets = [folder / path.name for path in files]
+    for target in targets:
+        if target.exists() and not overwrite:
+            raise FolderExistsError(str(target))
+    folder.mkdir(parents=True, exist_ok=True)
+    for path, target in zip(files, targets, strict=True):
+        shutil.copyfile(path, target)
+    return targets
+
+
+# --- schema
+
+
+def _add_schema(commands: Commands[argparse.ArgumentParser]) -> None:
+    parser = _add_command(
+        commands, "schema", "print the JSON Schema of a file form, for editors that check as you type"
+    )
+    parser.add_argument(
+        "form", nargs="?", choices=("scenario", "species"), default="scenario", help="default: %(default)s"
+    )
+    parser.set_defaults(command=_schema)
+
+
+def _schema(options: argparse.Namespace) -> int:
+    from importlib.resources import files
+
+    print(files(f"gibbsmin.{options.form}").joinpath("schema.json").read_text(encoding="utf-8"), end="")
+    return CONFIRMED
