@@ -13,12 +13,12 @@ _PACKAGE = Path(__file__).resolve().parent
 
 
 def species_data_folder() -> Path:
-    """Folder of the species files and their index. Raises FileNotFoundError when the installation lacks it."""
+    """Folder of the species files and their index. Raises FileNotFoundError when it is not installed."""
     return _shipped("species_data", must_hold="README.md")
 
 
 def scenario_folder() -> Path:
-    """Folder of the example scenarios. Raises FileNotFoundError when the installation lacks it."""
+    """Folder of the example scenarios. Raises FileNotFoundError when it is not installed."""
     return _shipped("scenarios")
 
 

@@ -1,8 +1,8 @@
 """Builds the index of the shipped species: `python -m gibbsmin.species.build_index`.
 
 The index (`species_data/index.json`) lets a look-up find one record among all files without parsing them. It
-holds nothing that is not in the files, and a test compares the two. Run this after any change to the files; it
-checks every record on the way and names every fault.
+holds nothing that is not in the files, and a test compares the two. Run this after any change to the files;
+it checks every record on the way and names every fault.
 """
 
 from __future__ import annotations
@@ -26,8 +26,9 @@ _RECORD_START = b"\n- name:"
 
 _ABOUT = (
     "Generated from the YAML files of this folder by `python -m gibbsmin.species.build_index`; do not edit. "
-    "A file row is path, bytes, bytes before its first record; a species row is name, aliases, CAS number, formula, "
-    "composition, charge, state, radical, lowest and highest temperature in K, file number, byte offset, bytes, line."
+    "A file row is path, bytes, bytes before its first record; a species row is name, aliases, CAS number, "
+    "formula, composition, charge, state, radical, lowest and highest temperature in K, file number, byte "
+    "offset, bytes, line."
 )
 
 

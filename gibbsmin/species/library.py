@@ -7,8 +7,8 @@ the coefficients) is read when it is first asked for. The rules of a look-up, in
 2. an alias or CAS number, whatever its case, spaces and hyphens; where gas and condensed substance share a
    CAS number, the gas;
 3. a formula with a state symbol or a form: `H2O(l)`, `CaO(s)`, `Fe(gamma)`, `H2O(cd)` (all condensed forms);
-4. a plain formula: the gas of that composition; of several isomers, the one that is not a radical, if there is
-   just one; without such a gas the condensed substance.
+4. a plain formula: the gas of that composition; of several isomers, the one that is not a radical, if there
+   is just one; without such a gas the condensed substance.
 """
 
 from __future__ import annotations

@@ -1,7 +1,7 @@
 """Which species of the data count as radicals: the rule, and the departures from it.
 
-A user who leaves radicals out wants the molecules that can be sampled, stored or shipped, so the mark is wider
-than chemistry's word. A gas is marked when
+A user who leaves radicals out wants the molecules that can be sampled, stored or shipped, so the mark is
+wider than chemistry's word. A gas is marked when
 
 1. it has an odd number of electrons, unless it holds a transition metal, a lanthanide or an actinide, whose
    open d and f shells make that count meaningless (FeCl3 vapour is odd and perfectly stable); or
@@ -21,16 +21,44 @@ from gibbsmin.species.elements import ATOMIC_NUMBERS
 
 __all__ = ["REACTIVE", "STABLE", "has_odd_electron", "is_radical"]
 
-REACTIVE = frozenset(
-    """
-    C O S Si Ge
-    C2 C3 C4 C5 C2O CNN NCN HCCN B2 B2C BN AlN LiN Si2 Si3 SiC SiC2 Si2C
-    CH2 CHF CHCl CF2 CFCl CCl2 CBr2 CI2 SiH2 SiHF SiHCl BH BH3 B2H2
-    NH ND NF PH PF PCl SO
-    """.split()
+_ATOMS = ("C", "O", "S", "Si", "Ge")
+_BARE_CLUSTERS = (
+    "C2",
+    "C3",
+    "C4",
+    "C5",
+    "B2",
+    "B2C",
+    "BN",
+    "AlN",
+    "LiN",
+    "Si2",
+    "Si3",
+    "SiC",
+    "SiC2",
+    "Si2C",
 )
-"""Gases marked although their electrons are even in number. `C2H2 (vinylidene)` and the like are marked by name
-in their records. O2 and S2 have two unpaired electrons, but are ordinary gases: they are not here."""
+_CARBENES = (
+    "CH2",
+    "CHF",
+    "CHCl",
+    "CF2",
+    "CFCl",
+    "CCl2",
+    "CBr2",
+    "CI2",
+    "SiH2",
+    "SiHF",
+    "SiHCl",
+    "BH",
+    "BH3",
+    "B2H2",
+)
+_TRIPLETS = ("C2O", "CNN", "NCN", "HCCN", "NH", "ND", "NF", "PH", "PF", "PCl", "SO")
+
+REACTIVE = frozenset((*_ATOMS, *_BARE_CLUSTERS, *_CARBENES, *_TRIPLETS))
+"""Gases marked although their electrons are even in number. (`C2H2 (vinylidene)`, which shares its formula with
+acetylene, is marked in its record.) O2 and S2 have two unpaired electrons, but are ordinary gases."""
 
 STABLE = frozenset(["NO", "NO2", "ClO2", "Li", "Na", "K", "Rb", "Cs", "Cu", "Ag", "Al", "Ga", "In"])
 """Gases not marked although their electrons are odd in number."""

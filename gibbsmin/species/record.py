@@ -1,7 +1,7 @@
 """A species as data: what it is, and the coefficients of its thermodynamic functions.
 
-Objects here are frozen and were checked when read (`record_reader`); they hold no arrays and need no numpy, so
-that a look-up stays cheap. `thermo.ThermoTable` turns a list of them into functions of temperature.
+Objects here are frozen and were checked when read (`record_reader`); they hold no arrays and need no numpy,
+so that a look-up stays cheap. `thermo.ThermoTable` turns a list of them into functions of temperature.
 """
 
 from __future__ import annotations
@@ -13,10 +13,10 @@ from gibbsmin.errors import UnknownSpeciesError
 
 __all__ = [
     "COEFFICIENT_COUNTS",
+    "ROUNDING_GAP",
     "Critical",
     "Form",
     "FormationEnthalpyUncertainty",
-    "ROUNDING_GAP",
     "Interval",
     "Species",
     "plain_words",
@@ -76,7 +76,7 @@ class Form:
 
 @dataclass(frozen=True)
 class Critical:
-    """Critical temperature [K], critical pressure [Pa] and acentric factor [1], each with its source or None."""
+    """Critical temperature [K], critical pressure [Pa] and acentric factor [1], None where not known."""
 
     temperature: float | None = None
     pressure: float | None = None

@@ -1,8 +1,8 @@
 """Species files and records read into `Species`, with every fault listed.
 
 The form of a file is described in `species_data/README.md` and, for editors, in `species_file.schema.json`
-beside this module. The checks here go further than a schema can: ranges that are reversed or overlap, a formula
-that disagrees with the composition, a molar mass that does not follow from it, names used twice.
+beside this module. The checks here go further than a schema can: ranges that are reversed or overlap, a
+formula that disagrees with the composition, a molar mass that does not follow from it, names used twice.
 """
 
 from __future__ import annotations
@@ -32,10 +32,10 @@ from gibbsmin.strict_yaml import Document, YamlPath, parse_file
 __all__ = ["MOLAR_MASS_TOLERANCE", "SourceHeader", "document_of", "read_file", "read_header", "read_species"]
 
 MOLAR_MASS_TOLERANCE = 1.5e-3
-"""Relative; atomic weights were revised by up to 1e-4 (Li 1e-3) between the sources' editions and IUPAC 2021."""
+"""Relative; standard atomic weights were revised by up to this since the editions that sources used."""
 
 OVERLAP_ALLOWED = 150.0
-"""K by which the ranges of successive forms may overlap; in the overlap the form of lower Gibbs energy counts."""
+"""K by which the ranges of successive forms may overlap; the transition is where their Gibbs energies agree."""
 
 UNITS = {
     "temperature": "K",
@@ -101,7 +101,7 @@ def read_records(document: Document, header: SourceHeader) -> tuple[list[Species
 
 
 class _Reader:
-    """Walks plain data, collecting faults; a method that meets a fault returns None or leaves the part out."""
+    """Walks plain data and collects faults; a method that meets one returns None or leaves the part out."""
 
     def __init__(self, document: Document) -> None:
         self.document = document
@@ -374,8 +374,9 @@ class _Reader:
             elif below.upper - above.lower > OVERLAP_ALLOWED:
                 self.fault(
                     (*path, number),
-                    f"the range from {above.lower:g} K overlaps that of the form before it, up to {below.upper:g} K, "
-                    f"by more than {OVERLAP_ALLOWED:g} K; independent polymorphs are entries of their own",
+                    f"the range from {above.lower:g} K overlaps that of the form before it, up to "
+                    f"{below.upper:g} K, by more than {OVERLAP_ALLOWED:g} K; independent polymorphs are entries "
+                    "of their own",
                 )
         return tuple(forms)
 

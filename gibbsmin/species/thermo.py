@@ -7,18 +7,18 @@ For every species the record gives, by temperature interval, the nine coefficien
     s/R  = -a1 T^-2/2 - a2 T^-1 + a3 ln T + a4 T + a5 T^2/2 + a6 T^3/3 + a7 T^4/4 + b2
     g/RT = h/RT - s/R, summed term by term
 
-(NASA/TP-2002-211556 (2002); the seven-coefficient form is this with a1 = a2 = 0). Standard state: 1 bar, ideal
-gas for gases; entropies of gases whose source uses another pressure are converted by R ln(p_source / 1 bar).
-Enthalpies are relative to the elements in their reference states at 298.15 K.
+(NASA/TP-2002-211556 (2002); the seven-coefficient form is this with a1 = a2 = 0). Standard state: 1 bar,
+ideal gas for gases; entropies of gases whose source uses another pressure are converted by
+R ln(p_source / 1 bar). Enthalpies are relative to the elements in their reference states at 298.15 K.
 
-Evaluation: the interval limits of all species cut the temperature axis into segments; within one, each species
-has one row of coefficients, so a function is a sum of nine products basis(T) x coefficient. The sum is written
-out over the terms rather than left to a matrix product: each value is then rounded the same way whatever other
-temperatures and species stand beside it, so equal temperatures give equal bits.
+Evaluation: the interval limits of all species cut the temperature axis into segments; within one, each
+species has one row of coefficients, so a function is a sum of nine products basis(T) x coefficient. The sum
+is written out over the terms rather than left to a matrix product: each value is then rounded the same way
+whatever other temperatures and species stand beside it, so equal temperatures give equal bits.
 
-At an interval limit the lower interval counts. Dimensionless throughout: J/mol is h_RT * gas_constant * T with
-the gas constant of the species' own source. Sources with different gas constants (8.314510 and the exact value
-differ by 6e-6) are mixed as they stand.
+At an interval limit the lower interval counts. Dimensionless throughout: J/mol is h_RT * gas_constant * T
+with the gas constant of the species' own source. Sources with different gas constants (8.314510 and the
+exact value differ by 6e-6) are mixed as they stand.
 """
 
 from __future__ import annotations
@@ -53,16 +53,17 @@ class ThermoTable:
     Args:
         species: S of them, gases and condensed substances in any order.
         extrapolate: evaluate the lowest or highest interval of a species beyond its range, instead of raising
-            TemperatureRangeError (gases) or calling it absent (condensed substances). `extrapolated` says where.
+            TemperatureRangeError (gases) or calling it absent (condensed). `extrapolated` says where.
 
     Attributes:
         species: the species, as given.
         elements: their E elements in Hill order, then "charge" if any of the species is charged.
-        formula_matrix: (E, S), atoms of each element in each species; the last row is the charge if there is one.
+        formula_matrix: (E, S), atoms of each element in each species; the charge, if any, is the last row.
 
-    A condensed substance goes through its crystal forms and its liquid by its data: `form_index` says which is
-    in use. Where the ranges of two forms overlap, the one of lower Gibbs energy is used. Outside all forms the
-    substance is absent: `absent` is True, its g/RT is +inf, and its other functions are NaN.
+    A condensed substance goes through its crystal forms and liquid by its data: `form_index` says which is
+    in use. Where the ranges of two forms overlap, one gives way to the other at the temperature at which their
+    Gibbs energies agree. Outside all forms the substance is absent: `absent` is True, its g/RT is +inf, and its
+    other functions are NaN.
     """
 
     def __init__(self, species: Sequence[Species], *, extrapolate: bool = False) -> None:
@@ -102,7 +103,7 @@ class ThermoTable:
     # --- functions of temperature ---------------------------------------------------------------------------
 
     def gibbs_RT(self, T: ArrayLike) -> Array:  # noqa: N802
-        """Standard Gibbs energy g/RT [-], (nT, S), at T [K], (nT,); +inf where a condensed substance is absent.
+        """Standard Gibbs energy g/RT [-], (nT, S), at T [K], (nT,); +inf where a substance is absent.
 
         Raises TemperatureRangeError outside the range of a gas unless the table extrapolates.
         """
@@ -141,7 +142,7 @@ class ThermoTable:
         return absent
 
     def form_index(self, T: ArrayLike) -> NDArray[np.intp]:
-        """Which of the species' `forms` is in use, (nT, S), an index into that tuple; -1 where it is absent."""
+        """Which of the species' `forms` is in use, (nT, S), as an index into them; -1 where it is absent."""
         temperatures = _temperatures(T)
         self._check_range(temperatures)
         indices = np.empty((temperatures.size, len(self.species)), dtype=np.intp)
@@ -252,18 +253,20 @@ def _pieces_of(species: Species) -> list[_Piece]:
 
 
 def _transition(below: Form, above: Form) -> float:
-    """Temperature [K] in the overlap of two forms at which their Gibbs energies are equal.
+    """Temperature [K] in the overlap of two forms at which their Gibbs energies are equal, or else nearest.
 
-    Without such a temperature the form that is lower in the middle of the overlap has all of it.
+    Continuity decides, not the lower Gibbs energy: where a range was stated too wide (SrCl2 beta from 900 K
+    with the transition at 990 K), a polynomial used outside its fit may well lie lower.
     """
     low, high = above.lower, min(below.upper, above.upper)
-    if _excess(below, above, low) * _excess(below, above, high) >= 0.0:
-        return high if _excess(below, above, (low + high) / 2.0) <= 0.0 else low
+    at_low, at_high = _excess(below, above, low), _excess(below, above, high)
+    if at_low * at_high >= 0.0:
+        return low if abs(at_low) < abs(at_high) else high
     while True:
         middle = (low + high) / 2.0
         if middle in (low, high):
             return middle
-        if _excess(below, above, middle) <= 0.0:
+        if _excess(below, above, middle) * at_low > 0.0:
             low = middle
         else:
             high = middle
@@ -309,7 +312,7 @@ def _temperatures(T: ArrayLike) -> Array:
     return temperatures
 
 
-# --- the terms that multiply a1 ... a7, b1, b2 ------------------------------------------------------------------
+# --- the terms that multiply a1 ... a7, b1, b2 ----------------------------------------------------------
 
 
 def _heat_capacity_basis(T: Array) -> tuple[Array, ...]:
