@@ -6,16 +6,20 @@ import itertools
 import math
 from collections.abc import Mapping
 from fractions import Fraction
-from typing import Any, cast
+from typing import TYPE_CHECKING, Any, cast
 
 from gibbsmin.scenario.feed import Feed
 from gibbsmin.scenario.model import Axis, FeedRatio, FurtherAxis, Measure, RatioTerm
 from gibbsmin.scenario.ranges import RANGE_KEYS, AxisValues, read_values
-from gibbsmin.scenario.ratios import FeedEquations, RatioImpossibleError, as_exact
+from gibbsmin.scenario.ratios import OXYGEN_DEMAND, FeedEquations, RatioImpossibleError, as_exact
 from gibbsmin.scenario.reading import Reading, identifier
 from gibbsmin.scenario.structure import FAULTY
 from gibbsmin.scenario.units import Quantity, Unit
+from gibbsmin.scenario.words import listed
 from gibbsmin.strict_yaml import YamlPath
+
+if TYPE_CHECKING:
+    from gibbsmin.species import Species
 
 MOST_FEEDS = 100_000
 """Combinations of further-axis values in one scenario; a larger survey is many scenarios."""
@@ -28,7 +32,12 @@ RESERVED_NAMES = frozenset(
 )
 """Names of the results, which an axis cannot have as well."""
 
-_MEASURES: dict[str, Measure] = {"moles of": "moles", "atoms of": "atoms", "mass of": "mass"}
+_MEASURES: dict[str, Measure] = {
+    "moles of": "moles",
+    "atoms of": "atoms",
+    "mass of": "mass",
+    "oxygen demand of": "oxygen demand",
+}
 _FURTHER = ("grid", "further axes")
 
 
@@ -205,7 +214,7 @@ class _FurtherAxisReader:
         if len(given) != 1:
             found = " and ".join(repr(key) for key in given) or "none of them"
             self.reading.fault(
-                path, f"needs one of 'moles of', 'atoms of' or 'mass of'; found {found}", of_key=True
+                path, f"needs one of {listed(repr(key) for key in _MEASURES)}; found {found}", of_key=True
             )
             return None
         key = given[0]
@@ -231,12 +240,14 @@ class _FurtherAxisReader:
         self, key: str, value: Any, path: YamlPath, streams: tuple[str, ...]
     ) -> tuple[str, ...] | None:
         names = _several(value)
-        if names == ("everything",) and key != "atoms of":
-            return ()
         counted = [
             self.feed.streams[each] for each in streams or self.stream_names if each in self.feed.streams
         ]
         present = {name: self.feed.species[name] for stream in counted for name in stream.amounts}
+        if key == "oxygen demand of" and not self._burns(present, path):
+            return None
+        if names == ("everything",) and key != "atoms of":
+            return ()
         where = f"in {' or '.join(streams)}" if streams else "in the feed"
         if key == "atoms of":
             elements = dict.fromkeys(element for each in present.values() for element in each.composition)
@@ -254,6 +265,17 @@ class _FurtherAxisReader:
                 return None
             resolved.append(species.name)
         return tuple(resolved)
+
+    def _burns(self, present: Mapping[str, Species], path: YamlPath) -> bool:
+        """Whether the oxygen demand of all these species is defined."""
+        for name, species in present.items():
+            odd = [element for element in species.composition if element not in OXYGEN_DEMAND]
+            if odd:
+                self.reading.fault(
+                    path, f"the oxygen demand of {name} is not defined: what {odd[0]} burns to is open"
+                )
+                return False
+        return True
 
 
 def _several(value: Any) -> tuple[str, ...]:

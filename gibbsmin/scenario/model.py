@@ -27,7 +27,7 @@ from gibbsmin.scenario.ratios import FeedEquations
 if TYPE_CHECKING:
     from gibbsmin.species import Species, SpeciesLibrary
 
-Measure = Literal["moles", "atoms", "mass"]
+Measure = Literal["moles", "atoms", "mass", "oxygen demand"]
 Spacing = Literal["list", "linear", "logarithmic"]
 
 DEFAULT_SAMPLE_SIZE = 50
@@ -80,7 +80,8 @@ class RatioTerm:
     """Numerator or denominator of a feed ratio.
 
     Attributes:
-        measure: "moles" of species, "atoms" of elements (both mol) or "mass" of species (kg).
+        measure: "moles" of species, "atoms" of elements, "oxygen demand" of species (all mol), or "mass" of
+            species (kg).
         names: species (or elements, for "atoms"); empty means everything in the streams.
         streams: the streams that count; empty means the whole feed.
     """

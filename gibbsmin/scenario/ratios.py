@@ -17,6 +17,15 @@ from decimal import Decimal
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
+OXYGEN_DEMAND = {
+    "C": Fraction(1),
+    "H": Fraction(1, 4),
+    "S": Fraction(1),
+    "O": Fraction(-1, 2),
+    **dict.fromkeys(("N", "He", "Ne", "Ar", "Kr", "Xe"), Fraction(0)),
+}
+"""Moles of O2 that burn one mole of atoms to CO2, H2O, SO2 and N2."""
+
 if TYPE_CHECKING:
     from gibbsmin.scenario.model import FurtherAxis, RatioTerm, Stream
     from gibbsmin.species import Species
@@ -53,8 +62,19 @@ def term_amount(term: RatioTerm, stream: Stream, species: Mapping[str, Species])
                 (as_exact(composition.get(element, 0.0)) for element in counted), Fraction(0)
             )
         elif not term.names or name in term.names:
-            total += amount * (as_exact(species[name].molar_mass) if term.measure == "mass" else 1)
+            total += amount * _per_mole(term, species[name])
     return total
+
+
+def _per_mole(term: RatioTerm, species: Species) -> Fraction:
+    if term.measure == "mass":
+        return as_exact(species.molar_mass)
+    if term.measure == "oxygen demand":
+        return sum(
+            (as_exact(n) * OXYGEN_DEMAND.get(element, 0) for element, n in species.composition.items()),
+            Fraction(0),
+        )
+    return Fraction(1)
 
 
 class FeedEquations:
