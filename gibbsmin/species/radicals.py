@@ -21,44 +21,20 @@ from gibbsmin.species.elements import ATOMIC_NUMBERS
 
 __all__ = ["REACTIVE", "STABLE", "has_odd_electron", "is_radical"]
 
+# fmt: off
 _ATOMS = ("C", "O", "S", "Si", "Ge")
 _BARE_CLUSTERS = (
-    "C2",
-    "C3",
-    "C4",
-    "C5",
-    "B2",
-    "B2C",
-    "BN",
-    "AlN",
-    "LiN",
-    "Si2",
-    "Si3",
-    "SiC",
-    "SiC2",
-    "Si2C",
+    "C2", "C3", "C4", "C5", "B2", "B2C", "BN", "AlN", "LiN", "Si2", "Si3", "SiC", "SiC2", "Si2C",
 )
 _CARBENES = (
-    "CH2",
-    "CHF",
-    "CHCl",
-    "CF2",
-    "CFCl",
-    "CCl2",
-    "CBr2",
-    "CI2",
-    "SiH2",
-    "SiHF",
-    "SiHCl",
-    "BH",
-    "BH3",
-    "B2H2",
+    "CH2", "CHF", "CHCl", "CF2", "CFCl", "CCl2", "CBr2", "CI2", "SiH2", "SiHF", "SiHCl", "BH", "BH3", "B2H2",
 )
 _TRIPLETS = ("C2O", "CNN", "NCN", "HCCN", "NH", "ND", "NF", "PH", "PF", "PCl", "SO")
+# fmt: on
 
 REACTIVE = frozenset((*_ATOMS, *_BARE_CLUSTERS, *_CARBENES, *_TRIPLETS))
-"""Gases marked although their electrons are even in number. (`C2H2 (vinylidene)`, which shares its formula with
-acetylene, is marked in its record.) O2 and S2 have two unpaired electrons, but are ordinary gases."""
+"""Gases marked although their electrons are even in number. `C2H2 (vinylidene)`, which shares its formula
+with acetylene, is marked in its record. O2 and S2 have two unpaired electrons, but are ordinary gases."""
 
 STABLE = frozenset(["NO", "NO2", "ClO2", "Li", "Na", "K", "Rb", "Cs", "Cu", "Ag", "Al", "Ga", "In"])
 """Gases not marked although their electrons are odd in number."""

@@ -35,7 +35,7 @@ MOLAR_MASS_TOLERANCE = 1.5e-3
 """Relative; standard atomic weights were revised by up to this since the editions that sources used."""
 
 OVERLAP_ALLOWED = 150.0
-"""K by which the ranges of successive forms may overlap; the transition is where their Gibbs energies agree."""
+"""K by which the ranges of successive forms may overlap; `thermo` places the transition."""
 
 UNITS = {
     "temperature": "K",
@@ -375,8 +375,8 @@ class _Reader:
                 self.fault(
                     (*path, number),
                     f"the range from {above.lower:g} K overlaps that of the form before it, up to "
-                    f"{below.upper:g} K, by more than {OVERLAP_ALLOWED:g} K; independent polymorphs are entries "
-                    "of their own",
+                    f"{below.upper:g} K, by more than {OVERLAP_ALLOWED:g} K; "
+                    "independent polymorphs are entries of their own",
                 )
         return tuple(forms)
 
