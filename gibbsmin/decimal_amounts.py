@@ -50,7 +50,9 @@ def element_amounts(feed: FloatArray, composition: FloatArray) -> tuple[FloatArr
     return np.where(exact[:, None], whole, feed) @ composition, factor
 
 
-def element_amounts_of_fractions(feed: NDArray[Any], composition: FloatArray) -> tuple[FloatArray, FloatArray]:
+def element_amounts_of_fractions(
+    feed: NDArray[Any], composition: FloatArray
+) -> tuple[FloatArray, FloatArray]:
     """As `element_amounts`, for feeds given as `fractions.Fraction` (F, J).
 
     Where no factor makes whole numbers below 2^53, the exact element amounts are rounded once.
@@ -60,7 +62,10 @@ def element_amounts_of_fractions(feed: NDArray[Any], composition: FloatArray) ->
     factors = np.ones(len(feed))
     for i, row in enumerate(feed):
         exact = [
-            sum((amount * per_molecule[e] for amount, per_molecule in zip(row, atoms, strict=True)), Fraction(0))
+            sum(
+                (amount * per_molecule[e] for amount, per_molecule in zip(row, atoms, strict=True)),
+                Fraction(0),
+            )
             for e in range(composition.shape[1])
         ]
         denominator = math.lcm(*(value.denominator for value in exact))

@@ -38,7 +38,9 @@ class Labelled:
         return np.broadcast_to(self.values.transpose(order).reshape(shape), tuple(sizes.values()))
 
 
-def read_number(value: float | ArrayLike | xr.DataArray, quantity: str, own_dimension: str | None) -> Labelled:
+def read_number(
+    value: float | ArrayLike | xr.DataArray, quantity: str, own_dimension: str | None
+) -> Labelled:
     """A caller's number, 1-D array or DataArray as finite doubles with named dimensions.
 
     Args:
@@ -87,7 +89,9 @@ def joint_sizes(parts: Iterable[Labelled]) -> dict[str, int]:
             if dim in part.coordinates:
                 own = part.coordinates[dim].values
                 if not np.array_equal(labels.setdefault(dim, own), own):
-                    raise ConditionsError(f"dimension {dim!r}", "its coordinate differs between the arguments")
+                    raise ConditionsError(
+                        f"dimension {dim!r}", "its coordinate differs between the arguments"
+                    )
     return sizes
 
 

@@ -1,0 +1,184 @@
+"""An outcome in a few lines, as text and as HTML."""
+
+from __future__ import annotations
+
+import html
+from collections.abc import Iterator, Sequence
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from gibbsmin.crosscheck import CheckedPoint
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from gibbsmin.outcome import Outcome
+
+_SPECIES_SHOWN = 6  # in lists of names, and of key species when the scenario names none
+_MOST_ROWS = 12  # key results shown; the files hold all
+_MOST_POINTS = 5  # differing or unanswered points spelled out; crosscheck.csv lists all
+CAUTION = (
+    "Equilibrium is a limit, not a rate. It sizes no relief device, proves no atmosphere non-flammable, "
+    "and says nothing of toxic traces below the accuracy of its data. Local codes and licensed practice "
+    "come first."
+)
+
+_STYLE = (
+    "<style>.gibbsmin-outcome{font-family:sans-serif}.gibbsmin-outcome td,.gibbsmin-outcome th"
+    "{padding:.15em .8em;text-align:right}.gibbsmin-outcome td:first-child,.gibbsmin-outcome th:first-child"
+    "{text-align:left}.gibbsmin-outcome .warning{font-weight:bold}</style>"
+)
+
+
+def summary_text(outcome: Outcome) -> str:
+    """Plain text for a terminal, at most about 100 columns wide."""
+    lines = [outcome.scenario.title, ""]
+    lines += _facts(outcome)
+    heading, rows = _key_table(outcome)
+    widths = [max(len(row[i]) for row in (heading, *rows)) for i in range(len(heading))]
+    lines.append("")
+    for row in (heading, *rows):
+        cells = [
+            row[0].ljust(widths[0]),
+            *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)),
+        ]
+        lines.append("  ".join(cells).rstrip())
+    lines += ["", *_evidence(outcome), "", CAUTION]
+    return "\n".join(lines)
+
+
+def summary_html(outcome: Outcome) -> str:
+    """The same for a notebook; every text from outside is escaped."""
+    heading, rows = _key_table(outcome)
+    head = "".join(f"<th>{html.escape(cell)}</th>" for cell in heading)
+    body = "".join(
+        "<tr>" + "".join(f"<td>{html.escape(cell)}</td>" for cell in row) + "</tr>" for row in rows
+    )
+    sound = outcome.all_solved and outcome.all_confirmed
+    mark = "" if sound else ' class="warning"'
+    return (
+        f'{_STYLE}<div class="gibbsmin-outcome"><h3>{html.escape(outcome.scenario.title)}</h3>'
+        + _list(_facts(outcome))
+        + f"<table><thead><tr>{head}</tr></thead><tbody>{body}</tbody></table>"
+        + f"<div{mark}>{_list(_evidence(outcome))}</div>"
+        + f"<p><small>{html.escape(CAUTION)}</small></p></div>"
+    )
+
+
+def _facts(outcome: Outcome) -> list[str]:
+    scenario, dataset = outcome.scenario, outcome.dataset
+    facts = []
+    for axis in scenario.axes:
+        low, high = min(axis.display_values), max(axis.display_values)
+        unit = "" if axis.display_unit == "1" else f" {axis.display_unit}"
+        span = f"{low:g}{unit}" if low == high else f"{low:g} to {high:g}{unit}, {len(axis)} points"
+        facts.append(f"{axis.title}: {span}")
+    names = ", ".join(str(name) for name in dataset["species"].values[:_SPECIES_SHOWN])
+    more = dataset.sizes["species"] - _SPECIES_SHOWN
+    facts.append(f"{dataset.sizes['species']} gases: {names}" + (f" and {more} more" if more > 0 else ""))
+    facts += list(scenario.remarks)
+    return facts
+
+
+def _key_table(outcome: Outcome) -> tuple[list[str], list[list[str]]]:
+    """Heading and rows: smallest and largest value over the grid, and where the largest is."""
+    dataset = outcome.dataset
+    rows = [_row(name, array, outcome) for name, array in _key_results(outcome)]
+    heading = ["result", "unit", "lowest", "highest", "highest at"]
+    return heading, rows[:_MOST_ROWS] if dataset["status"].size else []
+
+
+def _key_results(outcome: Outcome) -> Iterator[tuple[str, xr.DataArray]]:
+    dataset, wanted = outcome.dataset, outcome.scenario.results
+    for name in wanted.key_species or _most_abundant(dataset):
+        yield f"{name}, mole fraction", dataset["mole_fraction"].sel(species=name)
+    for result, array in dataset.data_vars.items():
+        if "description" in array.attrs:  # what the scenario asks for by name has one
+            yield str(result), array
+    if "heat_duty" in dataset:
+        yield "heat duty per mol of feed", dataset["heat_duty_per_feed"]
+        yield "heat duty", dataset["heat_duty"]
+
+
+def _most_abundant(dataset: xr.Dataset) -> list[str]:
+    points = [dim for dim in dataset["mole_fraction"].dims if dim != "species"]
+    largest = dataset["mole_fraction"].max(points).fillna(0.0).values
+    order = np.argsort(-largest, kind="stable")[:_SPECIES_SHOWN]
+    return [str(name) for name in dataset["species"].values[order]]
+
+
+def _row(name: str, array: xr.DataArray, outcome: Outcome) -> list[str]:
+    units = array.attrs.get("units", "1")
+    values = array.values
+    if not np.isfinite(values).any():
+        return [name, units, "-", "-", "-"]
+    place = np.unravel_index(int(np.nanargmax(values)), values.shape)
+    at = []
+    for axis, position in zip(outcome.scenario.axes, place, strict=True):
+        if len(axis) > 1:
+            unit = "" if axis.display_unit == "1" else f" {axis.display_unit}"
+            title = f"{axis.title} " if axis.display_unit == "1" else ""
+            at.append(f"{title}{axis.display_values[int(position)]:g}{unit}")
+    return [
+        name,
+        "" if units == "1" else units,
+        f"{np.nanmin(values):.4g}",
+        f"{np.nanmax(values):.4g}",
+        ", ".join(at),
+    ]
+
+
+def _evidence(outcome: Outcome) -> list[str]:
+    dataset, check = outcome.dataset, outcome.crosscheck
+    solved = outcome.points - outcome.unsolved
+    lines = [f"solved {solved} of {outcome.points} points"]
+    if solved:
+        gap = float((dataset["gap"] / dataset["gas_amount"]).max())
+        balance = float(dataset["balance_residual"].max())
+        lines[0] += f"; largest gap {gap:.1e} per mol of gas, largest balance error {balance:.1e}"
+    lines += _unsolved(outcome)
+    if "extrapolated" in dataset and bool((dataset["extrapolated"] != 0).any()):
+        lines.append("data were used outside their temperature range: see the variable 'extrapolated'")
+    if check.extent == "none":
+        return [*lines, "cross-check: none, as asked"]
+    text = f"cross-check by {check.library}, {len(check.points)} points: {check.confirmed} confirmed"
+    text += f", {check.differing} differ, {check.unanswered} without an independent answer"
+    if (worst := check.worst) is not None:
+        text += f"; largest relative difference {worst.relative:.1e} ({worst.species}, {_where(worst)})"
+    lines.append(text)
+    lines += _spelled_out("differs", check.having("differs"))
+    lines += _spelled_out("no independent answer", check.having("no independent answer"))
+    return lines
+
+
+def _unsolved(outcome: Outcome) -> list[str]:
+    from gibbsmin.minimiser import Status
+
+    codes, counts = np.unique(outcome.dataset["status"].values, return_counts=True)
+    return [
+        f"{count} points unsolved: {Status(int(code)).explanation} {Status(int(code)).remedy}"
+        for code, count in zip(codes, counts, strict=True)
+        if code != 0
+    ]
+
+
+def _spelled_out(what: str, points: Sequence[CheckedPoint]) -> list[str]:
+    lines = []
+    for point in points[:_MOST_POINTS]:
+        difference = f" by {point.relative:.1e} ({point.species})" if np.isfinite(point.relative) else ""
+        lines.append(f"  {what}{difference} at {_where(point)}: {point.reason}")
+    if len(points) > _MOST_POINTS:
+        lines.append(f"  and {len(points) - _MOST_POINTS} more; crosscheck.csv lists all")
+    return lines
+
+
+def _where(point: CheckedPoint) -> str:
+    units = {"temperature": " K", "pressure": " Pa"}
+    return ", ".join(
+        f"{value:g}{units[name]}" if name in units else f"{name} {value}" for name, value in point.place
+    )
+
+
+def _list(lines: Sequence[str]) -> str:
+    return "<ul>" + "".join(f"<li>{html.escape(line.strip())}</li>" for line in lines) + "</ul>"
