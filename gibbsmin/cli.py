@@ -13,7 +13,7 @@ import argparse
 import os
 import sys
 import traceback
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -44,8 +44,9 @@ _SCENARIO = "a scenario file, or the name of a shipped example where no file of 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code; `arguments` are those after the program's name."""
     accept_any_text(sys.stdout, sys.stderr)
+    given = list(sys.argv[1:] if arguments is None else arguments)
     try:
-        options = build_parser().parse_args(arguments)
+        options = build_parser(next((word for word in given if word in _COMMANDS), None)).parse_args(given)
     except SystemExit as exit_:  # argparse has printed help or its complaint
         return exit_.code if isinstance(exit_.code, int) else WRONG_REQUEST
     try:
@@ -83,8 +84,12 @@ def _in_words(error: BaseException) -> list[str]:
     return [f"gibbsmin: {line}" for line in (map(str, faults) if faults else str(error).splitlines())]
 
 
-def build_parser() -> argparse.ArgumentParser:
-    """The options of all commands."""
+def build_parser(command: str | None = None) -> argparse.ArgumentParser:
+    """The parser of all commands, with the options of `command` only.
+
+    The help of an option prints the library's own default, and asking the library costs time that the general
+    help need not spend.
+    """
     parser = argparse.ArgumentParser(
         prog="gibbsmin",
         description="Equilibrium composition of reacting gases over maps of temperature, pressure and feed.",
@@ -94,11 +99,12 @@ def build_parser() -> argparse.ArgumentParser:
     parser.add_argument("--version", action=_Version)
     parser.add_argument("--debug", action="store_true", help="show where in the program an error arose")
     commands = parser.add_subparsers(title="commands", metavar="COMMAND", required=True)
-    _add_run(commands)
-    _add_check(commands)
-    _add_species(commands)
-    _add_scenarios(commands)
-    _add_schema(commands)
+    for name, (words, add_options) in _COMMANDS.items():
+        each = commands.add_parser(name, help=words, description=words[:1].upper() + words[1:] + ".")
+        # The same switch after the command's name; a default of its own would undo the one before it.
+        each.add_argument("--debug", action="store_true", default=argparse.SUPPRESS, help=argparse.SUPPRESS)
+        if name == command:
+            add_options(each)
     return parser
 
 
@@ -115,27 +121,12 @@ class _Version(argparse.Action):
         parser.exit()
 
 
-Commands = argparse._SubParsersAction  # argparse has no public name for it
-
-
-def _add_command(
-    commands: Commands[argparse.ArgumentParser], name: str, words: str
-) -> argparse.ArgumentParser:
-    parser = commands.add_parser(name, help=words, description=words[:1].upper() + words[1:] + ".")
-    # The same switch after the command's name; a default of its own would undo the one before it.
-    parser.add_argument("--debug", action="store_true", default=argparse.SUPPRESS, help=argparse.SUPPRESS)
-    return parser
-
-
 # --- run
 
 
-def _add_run(commands: Commands[argparse.ArgumentParser]) -> None:
+def _add_run(parser: argparse.ArgumentParser) -> None:
     from gibbsmin.scenario.model import DEFAULT_SAMPLE_SIZE
 
-    parser = _add_command(
-        commands, "run", "solve a scenario, cross-check it, draw it and save everything in a folder"
-    )
     parser.add_argument("scenario", metavar="SCENARIO", help=_SCENARIO)
     parser.add_argument(
         "--out", metavar="FOLDER", help="where to save; default: the scenario's name with -results, here"
@@ -172,14 +163,13 @@ def _positive(text: str) -> int:
 
 def _run(options: argparse.Namespace) -> int:
     from gibbsmin.examples import scenario_file
+    from gibbsmin.outcome.saving import check_folder
     from gibbsmin.scenario import load_scenario
 
     file = scenario_file(options.scenario)
     folder = Path(options.out or f"{file.stem}-results")
-    if folder.exists() and not options.overwrite:  # before the work, not after it
-        raise FolderExistsError(str(folder))
+    check_folder(folder, options.overwrite)  # before the work, not after it
     scenario = _with_options(load_scenario(file), options)
-    say(*(f"note: {remark}" for remark in scenario.remarks))
     tell = say if options.verbose else _silent
     tell(f"{file}: {scenario.points} points, {len(scenario.species)} species")
     from gibbsmin.running import run
@@ -187,12 +177,12 @@ def _run(options: argparse.Namespace) -> int:
     with progress_bar(scenario.points, "solving", "points") as advance:
         outcome = run(scenario, threads=options.threads, progress=advance)
     tell(f"saving in {folder}")
-    outcome.save(folder, overwrite=options.overwrite)
-    figures = None if options.no_figures else _draw(outcome, folder / "figures")
+    figures = _Figures(outcome, wanted=not options.no_figures)
+    outcome.save(folder, overwrite=options.overwrite, further_files=figures.write)
     print(outcome.summary())
     print()
-    print(_written(folder, figures))
-    return CONFIRMED if outcome.confirmed else NOT_CONFIRMED
+    print("\n".join([*_files(folder), *figures.in_words()]))
+    return CONFIRMED if outcome.all_solved and outcome.all_confirmed else NOT_CONFIRMED
 
 
 def _silent(*_: str) -> None:
@@ -211,30 +201,44 @@ def _with_options(scenario: Scenario, options: argparse.Namespace) -> Scenario:
     return scenario
 
 
-def _draw(outcome: Outcome, folder: Path) -> Written:
-    from gibbsmin.figures.of_outcome import count_figures, write_outcome_figures
+class _Figures:
+    """The figures of an outcome: written when the folder is made, told of when it is there."""
 
-    with progress_bar(count_figures(outcome), "drawing", "figures") as advance:
-        return write_outcome_figures(outcome, folder, progress=lambda _: advance(1))
+    def __init__(self, outcome: Outcome, *, wanted: bool) -> None:
+        self._outcome = outcome
+        self._wanted = wanted
+        self._written: Written | None = None
+
+    def write(self, folder: Path) -> None:
+        if not self._wanted:
+            return
+        from gibbsmin.figures.of_outcome import count_figures, write_outcome_figures
+
+        with progress_bar(count_figures(self._outcome), "drawing", "figures") as advance:
+            self._written = write_outcome_figures(
+                self._outcome, folder / "figures", progress=lambda _: advance(1)
+            )
+
+    def in_words(self) -> list[str]:
+        if self._written is None:
+            return []
+        names = list(dict.fromkeys(path.stem for path in self._written.files))
+        lines = [f"  figures/ ({len(names)}, each as PNG and SVG): {', '.join(names)}"] if names else []
+        return lines + [f"  not drawn: {name}: {why}" for name, why in self._written.left_out.items()]
 
 
-def _written(folder: Path, figures: Written | None) -> str:
-    """What is in the output folder now, one line each."""
-    lines = [f"written to {folder}:"]
-    lines += [f"  {path.name}" for path in sorted(folder.iterdir()) if path.is_file()]
-    if figures is not None:
-        names = dict.fromkeys(path.stem for path in figures.files)
-        if names:
-            lines.append(f"  figures, as PNG and SVG: {', '.join(names)}")
-        lines += [f"  not drawn: {name}: {reason}" for name, reason in figures.left_out.items()]
-    return "\n".join(lines)
+def _files(folder: Path) -> list[str]:
+    """What a run has left in its folder, one line each."""
+    return [
+        f"written to {folder}:",
+        *(f"  {path.name}" for path in sorted(folder.iterdir()) if path.is_file()),
+    ]
 
 
 # --- check
 
 
-def _add_check(commands: Commands[argparse.ArgumentParser]) -> None:
-    parser = _add_command(commands, "check", "say whether a scenario is sound and what it would compute")
+def _add_check(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("scenario", metavar="SCENARIO", help=_SCENARIO)
     parser.set_defaults(command=_check)
 
@@ -250,8 +254,7 @@ def _check(options: argparse.Namespace) -> int:
 # --- species
 
 
-def _add_species(commands: Commands[argparse.ArgumentParser]) -> None:
-    parser = _add_command(commands, "species", "list species, or show the data of one")
+def _add_species(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "query",
         metavar="QUERY",
@@ -279,8 +282,7 @@ def _species(options: argparse.Namespace) -> int:
 # --- scenarios
 
 
-def _add_scenarios(commands: Commands[argparse.ArgumentParser]) -> None:
-    parser = _add_command(commands, "scenarios", "list the example scenarios, print one, or copy them out")
+def _add_scenarios(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("names", metavar="NAME", nargs="*", help="print these examples; default: list all")
     parser.add_argument(
         "--copy-to", metavar="FOLDER", help="copy the named examples (all, if none is named) there"
@@ -321,10 +323,7 @@ def copy_files(files: Sequence[Path], folder: Path, *, overwrite: bool) -> list[
 # --- schema
 
 
-def _add_schema(commands: Commands[argparse.ArgumentParser]) -> None:
-    parser = _add_command(
-        commands, "schema", "print the JSON Schema of a file form, for editors that check as you type"
-    )
+def _add_schema(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "form", nargs="?", choices=("scenario", "species"), default="scenario", help="default: %(default)s"
     )
@@ -336,3 +335,12 @@ def _schema(options: argparse.Namespace) -> int:
 
     print(files(f"gibbsmin.{options.form}").joinpath("schema.json").read_text(encoding="utf-8"), end="")
     return CONFIRMED
+
+
+_COMMANDS: dict[str, tuple[str, Callable[[argparse.ArgumentParser], None]]] = {
+    "run": ("solve a scenario, cross-check it, draw it and save everything in a folder", _add_run),
+    "check": ("say whether a scenario is sound and what it would compute", _add_check),
+    "species": ("list species, or show the data of one", _add_species),
+    "scenarios": ("list the example scenarios, print one, or copy them out", _add_scenarios),
+    "schema": ("print the JSON Schema of a file form, for editors that check as you type", _add_schema),
+}

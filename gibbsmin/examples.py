@@ -30,7 +30,7 @@ def title_of(path: Path) -> str:
 
 def example_named(name: str) -> Path:
     """The file of an example. Raises ScenarioError, with the nearest names, if there is none."""
-    path = examples().get(_without_ending(name))
+    path = examples().get(_plain(name))
     if path is None:
         raise ScenarioError([Fault(f"is no example{_nearest(name)}", name)])
     return path
@@ -48,7 +48,7 @@ def scenario_file(argument: str) -> Path:
         raise ScenarioError([Fault("is a folder, not a scenario file", argument)])
     if path.name != argument:
         raise ScenarioError([Fault("there is no such file", argument)])
-    example = examples().get(_without_ending(argument))
+    example = examples().get(_plain(argument))
     if example is None:
         raise ScenarioError(
             [Fault(f"there is no such file and no such example{_nearest(argument)}", argument)]
@@ -57,14 +57,14 @@ def scenario_file(argument: str) -> Path:
 
 
 def _nearest(name: str) -> str:
-    near = difflib.get_close_matches(_without_ending(name), examples(), n=3, cutoff=0.5)
+    near = difflib.get_close_matches(_plain(name), examples(), n=3, cutoff=0.5)
     if near:
         return f"; did you mean {' or '.join(near)}?"
     return "; the command `gibbsmin scenarios` lists the examples"
 
 
-def _without_ending(name: str) -> str:
+def _plain(name: str) -> str:
+    """The name as the examples spell theirs: no ending, words joined by underscores."""
     for ending in _ENDINGS:
-        if name.endswith(ending):
-            return name[: -len(ending)]
-    return name
+        name = name.removesuffix(ending)
+    return name.replace("-", "_").replace(" ", "_")
