@@ -57,7 +57,7 @@ def scenario_file(argument: str) -> Path:
 
 
 def _nearest(name: str) -> str:
-    near = difflib.get_close_matches(_plain(name), examples(), n=3, cutoff=0.5)
+    near = difflib.get_close_matches(_plain(name), examples(), n=3, cutoff=0.75)
     if near:
         return f"; did you mean {' or '.join(near)}?"
     return "; the command `gibbsmin scenarios` lists the examples"

@@ -1,6 +1,6 @@
 """The command in-process: what it prints, where, what it writes, and its exit codes.
 
-Exit codes, messages and files are this project's own; how a command should behave is common practice, no source.
+Exit codes, messages and files are the project's own; how a command behaves is common practice, no source.
 """
 
 from __future__ import annotations
@@ -242,9 +242,8 @@ def test_a_missing_file_gets_one_line(work: Path, command: str, capsys: pytest.C
 def test_a_name_close_to_an_example_is_suggested(work: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["check", "steam_refroming"]) == 2
     err = capsys.readouterr().err
-    assert err == (
-        "gibbsmin: steam_refroming: there is no such file and no such example; did you mean steam_reforming?\n"
-    )
+    problem = "there is no such file and no such example"
+    assert err == f"gibbsmin: steam_refroming: {problem}; did you mean steam_reforming?\n"
 
 
 def test_a_folder_is_no_scenario(work: Path, capsys: pytest.CaptureFixture[str]) -> None:

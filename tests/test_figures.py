@@ -31,6 +31,7 @@ from gibbsmin.figures.labels import chemical, file_name, number, with_formulas
 from gibbsmin.figures.levels import choose_levels
 from gibbsmin.figures.lines import spread_apart
 from gibbsmin.figures.look import LINE_COLOURS
+from gibbsmin.figures.refining import refine
 from gibbsmin.figures.ticks import log_ticks
 
 UNITS = {"temperature": DisplayUnit("°C", 1.0, 273.15), "pressure": DisplayUnit("bar", 1e5)}
@@ -205,6 +206,30 @@ def test_scattered_points_are_refused() -> None:
     scattered = xr.DataArray([1.0, 2.0], dims="point", coords={"temperature": ("point", [1.0, 2.0])})
     with pytest.raises(ValueError, match="'point' is no axis of a grid"):
         draw_map(scattered, title="")
+
+
+def test_a_field_is_refined_by_straight_lines_on_the_scales_as_drawn() -> None:
+    axes = axes_of(
+        field_of(made_up(temperatures=[700.0, 800.0, 1000.0], pressures=np.geomspace(1e5, 1e7, 3))), UNITS
+    )
+    up, across = axes["pressure"], axes["temperature"]
+    plane = across.values[None, :] + 50.0 * np.log(up.values)[:, None]
+    x, y, fine = refine(plane, up, across)
+    assert set(across.values) <= set(x)
+    assert set(up.values) <= set(y)
+    assert len(x) >= 80
+    assert len(y) >= 80
+    np.testing.assert_allclose(fine, x[None, :] + 50.0 * np.log(y)[:, None], rtol=1e-12)
+
+
+def test_refining_leaves_squares_beside_an_unsolved_point_blank_and_no_others() -> None:
+    axes = axes_of(field_of(made_up(temperatures=[700.0, 800.0, 900.0], pressures=[1e5, 2e5, 3e5])), UNITS)
+    up, across = axes["pressure"], axes["temperature"]
+    x, y, fine = refine(np.array([[np.nan, 1.0, 1.0], [1.0, 1.0, 1.0], [1.0, 1.0, 1.0]]), up, across)
+    inside = (x[None, :] < across.values[1] - 1e-9) & (y[:, None] < up.values[1] - 1e-9)
+    on_an_edge = (x[None, :] == across.values[0]) | (y[:, None] == up.values[0])
+    assert np.isnan(fine[inside & ~on_an_edge]).all()
+    assert np.isfinite(fine[~inside]).all()
 
 
 # --- colour levels

@@ -142,7 +142,9 @@ def _quantity(field: xr.DataArray, name: str, common: Any) -> Drawn:
     spanned = sum(size > 1 for size in field.sizes.values())
     if spanned >= 2:
         return _map(field, f"map_{file_name(name)}", with_formulas(title), with_formulas(label), common)
-    figure = draw_lines({name: field}, title=with_formulas(title), value_label=label, **common)
+    figure = draw_lines(
+        {name: field}, title=with_formulas(title), value_label=label, name_lines=False, **common
+    )
     return Drawn(f"course_{file_name(name)}", figure, "the grid is a single point" if spanned == 0 else "")
 
 

@@ -55,6 +55,15 @@ class Axis:
         return len(self.values)
 
     @property
+    def places(self) -> NDArray[np.float64]:
+        """The values on the scale as drawn: their logarithm above absolute zero, or themselves."""
+        return np.log(self.values - self.zero) if self.logarithmic else self.values
+
+    def values_at(self, places: NDArray[np.float64]) -> NDArray[np.float64]:
+        """The inverse of `places`."""
+        return np.exp(places) + self.zero if self.logarithmic else places
+
+    @property
     def label(self) -> str:
         title = self.title[:1].upper() + self.title[1:]
         return f"{title} ({self.symbol})" if self.symbol else title

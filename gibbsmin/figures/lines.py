@@ -18,7 +18,7 @@ from gibbsmin.figures.axes import SI_UNITS, Axis, DisplayUnit, axes_of, plan_pan
 from gibbsmin.figures.labels import chemical, number
 from gibbsmin.figures.look import HATCH, HATCH_COLOUR, LINE_COLOURS, LINE_STYLES
 from gibbsmin.figures.page import Geometry, Page, Words
-from gibbsmin.figures.ticks import set_scale, shown_edges
+from gibbsmin.figures.ticks import cell_edges, set_scale
 
 _ONE_PANEL = Geometry(panel_width=4.4, panel_height=3.1, right=0.85)
 _PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=0.85)
@@ -51,11 +51,12 @@ def draw_lines(
     subtitle: str = "",
     value_label: str,
     units: Mapping[str, DisplayUnit] = SI_UNITS,
+    name_lines: bool = True,
 ) -> Figure | None:
     """Several `fields` (mole fractions of species, say) along the first axis with more than one value.
 
     All fields share the dimensions of the grid and hold NaN where a point is not solved. The keys are species
-    names, written at the ends of the lines where there are several. Returns None where no axis has more than
+    names, written at the ends of the lines if `name_lines`. Returns None where no axis has more than
     one value, or where no point is solved.
     Raises ValueError for fields that are not on a grid.
     """
@@ -83,7 +84,7 @@ def draw_lines(
         _hatch_gaps(target, along, np.isnan(next(iter(curves.values()))))
         for index, (name, values) in enumerate(curves.items()):
             target.plot(along.values, _loggable(values, scale), label=name, **_style(index))
-        if len(curves) > 1 and (panel.row, panel.column + 1) not in page.panels:
+        if name_lines and (panel.row, panel.column + 1) not in page.panels:
             _label_ends(target, page.geometry, curves, scale)
     page.label_axes(along.label, value_label)
     return page.figure
@@ -134,7 +135,7 @@ def _set_value_scale(axes: Axes, scale: _Scale) -> None:
 
 
 def _hatch_gaps(axes: Axes, along: Axis, blank: NDArray[np.bool_]) -> None:
-    edges = shown_edges(along.values, along.logarithmic, along.zero)
+    edges = cell_edges(along)
     for index in np.flatnonzero(blank):
         span = axes.axvspan(
             edges[index],

@@ -19,12 +19,14 @@ from gibbsmin.figures.axes import SI_UNITS, Axis, DisplayUnit, axes_of, plan_pan
 from gibbsmin.figures.levels import Levels, choose_levels
 from gibbsmin.figures.look import HATCH, HATCH_COLOUR, INK, MAP_COLOURS
 from gibbsmin.figures.page import Geometry, Page, Words
+from gibbsmin.figures.refining import refine
 from gibbsmin.figures.ticks import set_scale
 
 _ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.1, right=1.0)
 _PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.0)
 _FEW_POINTS = 150  # up to so many points a map marks each, so that its resolution can be seen
 _MOST_NUMBERED = 5  # contour lines with a number on them, in a panel
+_EDGE = 0.05  # share of a panel beside its frame where no number is written
 _PALE = 0.5  # lightness above which a colour gets dark writing
 
 
@@ -100,7 +102,8 @@ def _draw_panel(
             clip_on=False,
             zorder=3,
         )
-    grid = (across.values, up.values, position)
+    x, y, fine = refine(position.filled(np.nan), up, across)
+    grid = (x, y, np.ma.masked_invalid(fine))
     norm = _norm(levels)
     # Whole squares next to an unsolved point stay blank: exactly those that are hatched.
     areas = axes.contourf(
@@ -126,7 +129,11 @@ def _number_lines(axes: Axes, lines: QuadContourSet, levels: Levels, norm: Bound
         numbered = numbered[1::2]
     colours = colormaps[MAP_COLOURS]
     writing = ["black" if _lightness(colours(norm(place))) > _PALE else "white" for place in numbered]
-    axes.clabel(lines, numbered, fontsize=6.5, colors=writing, fmt=levels.text, inline_spacing=2)
+    texts = axes.clabel(lines, numbered, fontsize=6.5, colors=writing, fmt=levels.text, inline_spacing=2)
+    for text in list(texts):
+        place = axes.transAxes.inverted().transform(axes.transData.transform(text.get_position()))
+        if place.min() < _EDGE or place.max() > 1 - _EDGE:
+            text.remove()  # the frame would cut it
 
 
 def _lightness(colour: tuple[float, float, float, float]) -> float:

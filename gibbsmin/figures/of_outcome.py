@@ -29,9 +29,9 @@ def figure_options(outcome: Outcome) -> dict[str, Any]:
     """The options of `gibbsmin.figures.figures_of` that belong to an outcome."""
     scenario, dataset = outcome.scenario, outcome.dataset
     wanted = scenario.results
-    asked = {
-        each.name for each in (*wanted.conversions, *wanted.yields, *wanted.selectivities, *wanted.ratios)
-    }
+    asked: set[str] = set()
+    for results in (wanted.conversions, wanted.yields, wanted.selectivities, wanted.ratios):
+        asked.update(result.name for result in results)
     # The variable's own name may differ (NetCDF takes no slash); its long_name is what the scenario says.
     quantities = [
         str(name)

@@ -59,11 +59,8 @@ def log_ticks(low: float, high: float, most: int) -> list[float]:
     return places
 
 
-def shown_edges(values: NDArray[np.float64], logarithmic: bool, zero: float) -> NDArray[np.float64]:
+def cell_edges(axis: Axis) -> NDArray[np.float64]:
     """The n + 1 limits of the cells around n values, half way between neighbours on the axis' own scale."""
-    u = np.log(values - zero) if logarithmic else values
-    if len(u) == 1:
-        return np.array([values[0], values[0]])
-    middle = (u[1:] + u[:-1]) / 2
-    edges = np.concatenate([[u[0]], middle, [u[-1]]])
-    return np.exp(edges) + zero if logarithmic else edges
+    places = axis.places
+    middle = (places[1:] + places[:-1]) / 2
+    return axis.values_at(np.concatenate([places[:1], middle, places[-1:]]))
