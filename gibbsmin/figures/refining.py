@@ -1,8 +1,8 @@
 """A coarse field made fine by straight lines between its points, on the scales of the axes as drawn.
 
 Contours of a coarse grid have few vertices. Between them they are straight on the page, while the numbers on
-them are placed as if they were straight in the values: on a logarithmic axis the two part. On a fine grid they
-meet. Nothing is smoothed: at the grid's points the values are those computed, inside a
+them are placed as if they were straight in the values: on a logarithmic axis the two part. On a fine grid
+they meet. Nothing is smoothed: at the grid's points the values are those computed, inside a
 square they are bilinear.
 """
 
@@ -19,7 +19,7 @@ _FINE = 80  # points along an axis from which straight pieces look smooth
 def refine(
     field: NDArray[np.float64], up: Axis, across: Axis
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
-    """Values across, values up and the field (up, across) on a finer grid, which keeps the coarse one's points.
+    """Values across, values up and the field (up, across) on a finer grid that keeps the coarse points.
 
     A square of the coarse grid with NaN at a corner is NaN inside.
     """
