@@ -3,7 +3,7 @@
 GibbsminError
 +-- FormulaError             a chemical formula that cannot be read
 +-- UnknownSpeciesError      a name that is in no species file (suggestions attached)
-+-- AmbiguousSpeciesError    a formula that several isomers share (candidates attached)
++-- AmbiguousSpeciesError    a formula or CAS number that several species share (candidates attached)
 +-- SpeciesDataError         a species record or file with faults (all of them attached)
 +-- TemperatureRangeError    a temperature outside a species record's validity range
 +-- ScenarioError            a scenario file with faults (all of them attached)
@@ -56,12 +56,12 @@ class UnknownSpeciesError(GibbsminError):
 
 
 class AmbiguousSpeciesError(GibbsminError):
-    """Several species (isomers) share the formula that was asked for."""
+    """Several species share the formula or CAS number that was asked for."""
 
     def __init__(self, query: str, candidates: Sequence[str]) -> None:
         self.query = query
         self.candidates = tuple(candidates)
-        super().__init__(f"{query!r} is the formula of several species; choose one of {', '.join(self.candidates)}")
+        super().__init__(f"{query!r} can mean several species; choose one of {', '.join(self.candidates)}")
 
 
 @dataclass(frozen=True)

@@ -4,8 +4,8 @@ A library knows every species' name, aliases, formula, composition, state and ra
 the coefficients) is read when it is first asked for. The rules of a look-up, in order:
 
 1. the name, exactly as written (`CO` is carbon monoxide, `Co` cobalt);
-2. an alias or CAS number, whatever its case, spaces and hyphens; where gas and condensed substance share a
-   CAS number, the gas;
+2. an alias or CAS number, whatever its case, spaces and hyphens; a CAS number that gas and condensed substance
+   share is ambiguous;
 3. a formula with a state symbol or a form: `H2O(l)`, `CaO(s)`, `Fe(gamma)`, `H2O(cd)` (all condensed forms);
 4. a plain formula: the gas of that composition; of several isomers, the one that is not a radical, if there
    is just one; without such a gas the condensed substance.
@@ -113,7 +113,7 @@ class SpeciesLibrary:
 
         Raises:
             UnknownSpeciesError: there is none; it carries suggestions.
-            AmbiguousSpeciesError: several isomers share the formula; it carries their names.
+            AmbiguousSpeciesError: several species share the formula or CAS number; it carries their names.
         """
         text = query.strip()
         if text in self._entries:
@@ -139,11 +139,8 @@ class SpeciesLibrary:
         names = self._alias_map().get(plain_words(text))
         if names is None:
             return None
-        if len(names) > 1:
-            gases = [name for name in names if self._entries[name].state == "g"]
-            if len(gases) != 1:
-                raise AmbiguousSpeciesError(text, names)
-            return gases[0]
+        if len(names) > 1:  # a CAS number does not tell a gas from its condensed substance
+            raise AmbiguousSpeciesError(text, names)
         return names[0]
 
     def _find_form(self, text: str) -> Species | None:

@@ -45,7 +45,7 @@ RANGE_SLACK = 1e-9
 """Relative; a temperature this little beyond a limit is that limit after a unit conversion."""
 
 JOINED = 1e-4
-"""Difference in g/RT within which two forms count as joined: the accuracy of the joins of the shipped data."""
+"""Difference in g/RT within which two forms count as joined; joins of the shipped data are this accurate."""
 
 _TERMS = 9
 
@@ -64,8 +64,8 @@ class ThermoTable:
         formula_matrix: (E, S), atoms of each element in each species; the charge, if any, is the last row.
 
     A condensed substance goes through its crystal forms and liquid by its data: `form_index` says which is
-    in use. Where the ranges of two forms overlap, one gives way to the other where their Gibbs energies agree.
-    Outside all forms the substance is absent: `absent` is True, its g/RT is +inf, its other functions are NaN.
+    in use. Where the ranges of two forms overlap, one gives way to the other where their Gibbs energies
+    agree. Outside all forms the substance is absent: `absent` is True, g/RT is +inf, the rest is NaN.
     """
 
     def __init__(self, species: Sequence[Species], *, extrapolate: bool = False) -> None:
@@ -258,9 +258,9 @@ def _transition(below: Form, above: Form) -> float:
     """Temperature [K] in the overlap of two forms at which one gives way to the other.
 
     That is an end of the overlap at which their Gibbs energies agree, for there the source joined them; else
-    the temperature at which they are equal; else the end at which they are nearest. The lower Gibbs energy does
-    not decide: where a range was stated too wide (SrCl2 beta from 900 K, with its transition at 990 K), a
-    polynomial outside its fit may well lie lower.
+    the temperature at which they are equal; else the end at which they are nearest. The lower Gibbs energy
+    does not decide: where a range was stated too wide (SrCl2 beta from 900 K, with its transition at 990 K),
+    a polynomial outside its fit may well lie lower.
     """
     low, high = above.lower, min(below.upper, above.upper)
     at_low, at_high = _excess(below, above, low), _excess(below, above, high)
