@@ -121,11 +121,11 @@ def from_cantera(gas: Any, feed: Mapping[str, float], temperature: float, pressu
         if element == "E":
             A[row] = gas.charges  # atoms of "E" are electrons: the sign differs, the constraint does not
     amounts = sum(amount * A[:, gas.species_index(name)] for name, amount in feed.items())
-    keep = A.any(axis=1)
+    keep = np.asarray(A.any(axis=1))
     return Case(
         A[keep],
         np.asarray(amounts)[keep],
         potentials,
         tuple(gas.species_names),
-        tuple(e for e, k in zip(elements, keep, strict=True) if k),
+        tuple(e for e, k in zip(elements, keep.tolist(), strict=True) if k),
     )

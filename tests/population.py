@@ -53,7 +53,7 @@ KINDS = {
     "stoichiometric": 0.18,  # small whole numbers of one to three species
     "single": 0.08,  # one species alone
     "trace": 0.12,  # whole numbers, and one more species at ppb level
-    "boundary": 0.10,  # the feed has the least ratio of two elements: the balance excludes species
+    "boundary": 0.10,  # the feed lies on a face of the feasible cone: the balance excludes species
     "square": 0.06,  # as many species as independent elements
     "redundant": 0.06,  # fewer independent element rows than rows
     "rounded": 0.06,  # element totals of decimal amounts, summed in double precision
@@ -176,6 +176,8 @@ def _draw(rng: np.random.Generator, kind: str, most_species: int) -> Any:
     usable = gases.valid[row] & ((gases.outside & ~mask) == 0)
     if not ionised:
         usable &= gases.charge == 0
+    if kind == "boundary":  # with every element as a species of its own, a face is only an absent element
+        usable &= (gases.composition > 0).sum(axis=1) != 1
     candidates = np.flatnonzero(usable)
     if len(candidates) < 2:
         return None
@@ -272,16 +274,20 @@ def _feed(rng: np.random.Generator, kind: str, A: np.ndarray, neutral: np.ndarra
 
 
 def _extreme(rng: np.random.Generator, A: np.ndarray, neutral: np.ndarray) -> np.ndarray:
-    """Neutral columns with the least ratio of a random element to another, columns without both included."""
-    if len(A) < 2:
-        return neutral
-    top, bottom = rng.choice(len(A), 2, replace=False)
-    a, c = A[top], A[bottom]
-    having = np.flatnonzero(c > 0)
-    if len(having) == 0:
-        return neutral
-    best = having[np.argmin(a[having] / c[having])]
-    return neutral[a[neutral] * c[best] == c[neutral] * a[best]]
+    """Neutral columns on a face of the cone of feasible element amounts.
+
+    The face of least ratio of two elements where no species has one without the other; else an extreme ray.
+    """
+    for _ in range(6 if len(A) > 1 else 0):
+        top, bottom = rng.choice(len(A), 2, replace=False)
+        a, c = A[top, neutral], A[bottom, neutral]
+        having = np.flatnonzero(c > 0)
+        if len(having) and a[having].min() > 0:
+            best = having[np.argmin(a[having] / c[having])]
+            return np.asarray(neutral[a * c[best] == c * a[best]])
+    fractions = A[:, neutral] / A[:, neutral].sum(axis=0)
+    outermost = np.argmax(rng.normal(size=len(A)) @ fractions)
+    return np.asarray(neutral[[outermost]])
 
 
 # -------------------------------------------------------------------------------------------------- judging
@@ -359,7 +365,7 @@ def run_population(
 def _status_name(answer: Any) -> str:
     from gibbsmin.minimiser import Status
 
-    return Status(int(np.ravel(answer.status)[0])).name
+    return str(Status(int(np.ravel(answer.status)[0])).name)
 
 
 def judge(case: Problem, answer: Any) -> tuple[list[str], float, float]:

@@ -179,7 +179,7 @@ def interior_point(tableau: Tableau) -> list[mpq]:
     return [weight * sum(vertex[j] for vertex in vertices) for j in range(tableau.columns)]
 
 
-def support(formula_matrix: Any, element_amounts: Sequence[Exact]) -> np.ndarray:
+def support(formula_matrix: Any, element_amounts: Sequence[Exact] | np.ndarray) -> np.ndarray:
     """bool (S,): True for species that some feasible composition contains.  Raises InfeasibleError."""
     A = [[exact(v) for v in row] for row in formula_matrix]
     point = interior_point(_feasible_tableau(A, [exact(v) for v in element_amounts]))
@@ -245,7 +245,9 @@ class _System:
 def _solve(M: list[list[Any]], rhs: list[list[Any]]) -> tuple[list[list[Any]], Any]:
     """Gaussian elimination with full row scaling and partial pivoting; also the smallest scaled pivot."""
     size = len(M)
-    scale = [gmpy2.sqrt(abs(M[i][i])) if M[i][i] > 0 and i < size - 1 else None for i in range(size)]
+    scale: list[Any] = [
+        gmpy2.sqrt(abs(M[i][i])) if M[i][i] > 0 and i < size - 1 else None for i in range(size)
+    ]
     last = max((abs(M[i][size - 1]) / scale[i] for i in range(size - 1) if scale[i]), default=mpfr(1))
     scale = [s if s else (last if last > 0 else mpfr(1)) for s in scale]
     rows = [
@@ -361,8 +363,8 @@ def _follow(system: _System, start: list[Any], c0: list[Any], c1: list[Any]) -> 
 
 def solve(
     formula_matrix: Any,
-    element_amounts: Sequence[Exact],
-    potentials: Sequence[Any],
+    element_amounts: Sequence[Exact] | np.ndarray,
+    potentials: Sequence[Any] | np.ndarray,
     *,
     digits: int = DEFAULT_DIGITS,
 ) -> Reference:
