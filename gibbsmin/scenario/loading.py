@@ -70,14 +70,14 @@ def parse_scenario(
     document = parse(text, file)
     if document.data is None and not document.faults:
         raise ScenarioError([Fault("the file is empty", file)])
-    if document.data is None:
-        raise ScenarioError(document.faults)
+    data, faults = check_structure(document)
+    if not isinstance(document.data, dict):
+        raise ScenarioError([*document.faults, *(faults if document.data is not None else ())])
     if library is None:
         from gibbsmin.species import standard_library
 
         library = standard_library()
     reading = Reading(document, library)
-    data, faults = check_structure(document)
     reading.faults += [*document.faults, *faults]
     home = Path(folder) if folder is not None else Path(file).parent
     scenario = _assemble(reading, data, text, home)
@@ -109,7 +109,8 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
     further = grid.get("further axes", {})
     streams = data.get("feed", {})
     feed = read_feed(reading, streams, streams_set_by_axes(reading, further))
-    feed.sound = feed.sound and len(streams) == len(reading.document.data.get("feed") or ())
+    whole = reading.document.data.get("feed")
+    feed.sound = feed.sound and isinstance(whole, dict) and len(streams) == len(whole)
     further_axes = read_further_axes(reading, further, tuple(streams), feed)
     if not feed.sound or not feed.streams:
         return None

@@ -129,11 +129,7 @@ class FeedEquations:
             factors[self.axes[k].stream] = factor
         for k in unknown:
             if sum(factors.get(s, Fraction(1)) * parts[1] for s, parts in self._parts[k].items()) == 0:
-                ratio = self.axes[k].ratio
-                assert ratio is not None
-                raise RatioImpossibleError(
-                    self.axes[k].title, values[k], f"the {ratio.denominator} would be nothing"
-                )
+                raise RatioImpossibleError(self.axes[k].title, values[k], self._why(k, factors, unknown))
         return factors
 
     def _slope(self, k: int, stream: str, ratio: Fraction) -> Fraction:
@@ -145,8 +141,6 @@ class FeedEquations:
         numerator, denominator = self._parts[k][axis.stream]
         if numerator == 0 and denominator == 0:
             return f"changing {axis.stream!r} does not change this ratio"
-        if len(unknown) > 1:
-            return f"no amount of {axis.stream!r} gives it together with the other ratios"
         others = [s for s in self._parts[k] if s != axis.stream]
         fixed_numerator = sum(
             (factors.get(s, Fraction(1)) * self._parts[k][s][0] for s in others), Fraction(0)
@@ -156,8 +150,13 @@ class FeedEquations:
         )
         without = _shown(fixed_numerator, fixed_denominator)
         alone = _shown(numerator, denominator)
+        assert axis.ratio is not None
+        if not denominator and not fixed_denominator:
+            return f"the {axis.ratio.denominator} would be nothing"
         if not fixed_numerator and not fixed_denominator:
             return f"changing {axis.stream!r} keeps it at {alone}, since no other stream takes part in it"
+        if len(unknown) > 1:
+            return f"no amount of {axis.stream!r} gives it together with the other ratios"
         return (
             f"changing {axis.stream!r} can only give values between {without} (with none of it) "
             f"and {alone} (with nothing else)"

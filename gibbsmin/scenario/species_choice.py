@@ -12,6 +12,7 @@ from gibbsmin.scenario.model import Axis, SpeciesChoice
 from gibbsmin.scenario.reading import Reading
 from gibbsmin.scenario.structure import FAULTY
 from gibbsmin.scenario.words import listed
+from gibbsmin.species.elements import ATOMIC_NUMBERS
 
 if TYPE_CHECKING:
     from gibbsmin.species import Species
@@ -134,10 +135,15 @@ def _elements(reading: Reading, data: Mapping[str, Any], feed: Feed) -> list[str
     of_feed = list(dict.fromkeys(e for species in feed.species.values() for e in species.composition))
     if "elements" not in data:
         return of_feed
-    given = [each for each in data["elements"] if each is not FAULTY]
+    given: list[str] = []
     for i, element in enumerate(data["elements"]):
-        if element is not FAULTY:
-            reading.choice(element, of_feed, "an element of the feed", ("species", "elements", i))
+        if element is FAULTY or element in given:
+            continue
+        if reading.choice(element, ATOMIC_NUMBERS, "the symbol of an element", ("species", "elements", i)):
+            given.append(element)
+    idle = [each for each in given if each not in of_feed]
+    if idle:
+        reading.remarks.append(f"elements: no stream holds {', '.join(idle)}, so its gases stay at zero")
     missing = [each for each in of_feed if each not in given]
     if missing:
         reading.fault(
