@@ -4,8 +4,8 @@ A library knows every species' name, aliases, formula, composition, state and ra
 the coefficients) is read when it is first asked for. The rules of a look-up, in order:
 
 1. the name, exactly as written (`CO` is carbon monoxide, `Co` cobalt);
-2. an alias or CAS number, whatever its case, spaces and hyphens; a CAS number that gas and condensed substance
-   share is ambiguous;
+2. an alias or CAS number, whatever its case, spaces and hyphens; a CAS number that a gas and a condensed
+   substance share is ambiguous;
 3. a formula with a state symbol or a form: `H2O(l)`, `CaO(s)`, `Fe(gamma)`, `H2O(cd)` (all condensed forms);
 4. a plain formula: the gas of that composition; of several isomers, the one that is not a radical, if there
    is just one; without such a gas the condensed substance.
@@ -208,9 +208,13 @@ class SpeciesLibrary:
             by_word.setdefault(word, names[0])
         for name in self._entries:
             by_word.setdefault(plain_words(name), name)
-        if wanted in by_word:  # right but for its case, such as co2
-            exact = [name for name in self._entries if plain_words(name) == wanted]
-            return tuple(exact[:count]) or (by_word[wanted],)
+        but_for_case = [
+            entry.name
+            for entry in self._entries.values()
+            if wanted in (plain_words(entry.name), plain_words(entry.formula))
+        ]
+        if but_for_case:  # co2, c4h10
+            return tuple(but_for_case[:count])
         near = difflib.get_close_matches(wanted, by_word, n=2 * count, cutoff=0.7)
         shown = (
             f"{by_word[word]} ({self._spelling(by_word[word], word)})"

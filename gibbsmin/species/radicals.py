@@ -50,7 +50,7 @@ def has_odd_electron(composition: Mapping[str, float], charge: int) -> bool:
 
 def is_radical(formula: str, composition: Mapping[str, float], charge: int) -> bool:
     """The mark that the rule above gives a gas of this formula."""
-    if formula in STABLE:
+    if formula in STABLE or not composition:  # the electron is no radical
         return False
     return formula in REACTIVE or has_odd_electron(composition, charge)
 
