@@ -396,6 +396,31 @@ def solve(
     raise UnprovedError(f"not proved with {LARGEST_DIGITS} digits: {last_error}")
 
 
+def excess(
+    formula_matrix: Any, potentials: Sequence[Any] | np.ndarray, amounts: Sequence[float] | np.ndarray
+) -> float:
+    """(G - Gmin)/RT [mol] of these very amounts (doubles, taken exactly) over the minimum for their own
+    balance."""
+    n = [exact(v) for v in amounts]
+    b = [sum((exact(a) * v for a, v in zip(row, n, strict=True) if a), mpq(0)) for row in formula_matrix]
+    totals = [Fraction(int(v.numerator), int(v.denominator)) for v in b]
+    least = solve(formula_matrix, totals, potentials)
+    with gmpy2.context(precision=500) as context:
+        context.emax, context.emin = gmpy2.get_emax_max(), gmpy2.get_emin_min()
+        N = _real(sum(n))
+        energy = gmpy2.fsum(
+            [
+                _real(v) * (_real(exact(c)) + gmpy2.log(_real(v) / N))
+                for v, c in zip(n, potentials, strict=True)
+                if v
+            ]
+        )
+        above = energy - least.gibbs_energy
+        if above < -(mpfr(10) ** -90):
+            raise UnprovedError(f"an energy {float(above):.1e} below the minimum")
+        return max(float(above), 0.0)  # rounding of the last digits
+
+
 def _solve_with(
     digits: int, tableau: Tableau, inside: list[mpq], kept: list[int], S: int, c_exact: list[mpq]
 ) -> Reference:
