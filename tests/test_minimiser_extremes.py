@@ -1,0 +1,147 @@
+"""Problems no species data would give: invented formula matrices, potentials and amounts at the ends of
+the range."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pytest
+
+from tests import reference
+from tests.gas_cases import assert_agrees
+
+
+def solve(A: Any, b: Any, c: Any) -> Any:
+    from gibbsmin import minimise
+    from gibbsmin.minimiser import Status
+
+    answer = minimise(np.asarray(A, dtype=float), np.asarray(b, dtype=float), np.asarray(c, dtype=float))
+    assert np.all(answer.status == Status.SOLVED), answer.status
+    return answer
+
+
+def check(A: Any, b: Any, c: Any) -> Any:
+    answer = solve(A, b, c)
+    judged = reference.solve(np.asarray(A), np.asarray(b, dtype=float).tolist(), np.asarray(c, dtype=float))
+    assert_agrees(answer, judged)
+    return answer
+
+
+@pytest.mark.parametrize("size", [1.0, 30.0, 300.0, 1000.0])
+def test_invented_potentials_of_any_size(size: float) -> None:
+    """Up to 12 made-up species of up to 4 made-up elements; |c| up to several times `size`.
+
+    The agreement is 1e-9 or, where larger, what 16 roundings of the largest potential amount to.
+    """
+    rng = np.random.default_rng(int(size))
+    for number in range(150):
+        elements, species = int(rng.integers(1, 5)), int(rng.integers(2, 13))
+        A = rng.integers(0, 4, (elements, species)).astype(float)
+        A[rng.integers(0, elements, species), np.arange(species)] += 1  # no column without matter
+        feed = rng.integers(0, 5, species) * 2.0 ** -rng.integers(0, 20, species)
+        feed[rng.integers(0, species)] += 1.0
+        b = A @ feed
+        c = rng.normal(0, size, species)
+        answer = solve(A, b, c)
+        judged = reference.solve(A, b.tolist(), c)
+        tolerance = max(1e-9, 16 * np.finfo(float).eps * float(np.abs(c).max()) * float(A.max()) * elements)
+        try:
+            assert_agrees(answer, judged, tolerance=tolerance)
+        except AssertionError as error:
+            raise AssertionError(f"problem {number} of size {size}\n{error}") from None
+
+
+@pytest.mark.parametrize("exponent", [-300, -200, -100, 100, 200, 300])
+def test_amounts_of_any_scale(exponent: int) -> None:
+    """H2, O2, H2O, OH from 2 H + O scaled by powers of two near 10^exponent: same mole fractions."""
+    A = [[2, 0, 2, 1], [0, 2, 1, 1]]
+    c = [0.0, 0.0, -30.0, 10.0]
+    factor = 2.0 ** round(exponent * np.log2(10))
+    expected = check(A, [2.0, 1.0], c)
+    answer = solve(A, [2.0 * factor, 1.0 * factor], c)
+    np.testing.assert_allclose(answer.log_mole_fractions, expected.log_mole_fractions, rtol=1e-12)
+    np.testing.assert_allclose(answer.amounts[0, 2], expected.amounts[0, 2] * factor, rtol=1e-12)
+
+
+@pytest.mark.parametrize("ratio", [1e-15, 1e-30, 1e-100, 1e-200, 1e-290])
+def test_elements_hundreds_of_decades_apart(ratio: float) -> None:
+    """An element at any trace level: its species share it as they would if it were alone in the carrier."""
+    A = [[2, 0, 2, 1, 0], [0, 2, 1, 1, 0], [0, 0, 0, 0, 1]]
+    answer = check(A, [2.0 * ratio, 1.0 * ratio, 1.0], [0.0, 0.0, -30.0, 10.0, 0.0])
+    assert answer.amounts[0, 4] == pytest.approx(1.0, rel=1e-15)
+
+
+def test_the_same_species_listed_twice() -> None:
+    """Two identical columns share what one would hold, and the amounts of the others follow the lumped
+    potential."""
+    A = np.array([[2.0, 0, 2, 1, 2], [0.0, 2, 1, 1, 1]])
+    twice = check(A, [2.0, 1.0], [0.0, 0.0, -8.0, 1.0, -8.0])
+    once = check(A[:, :4], [2.0, 1.0], [0.0, 0.0, -8.0 - np.log(2.0), 1.0])
+    assert twice.amounts[0, 2] == pytest.approx(twice.amounts[0, 4], rel=1e-13)
+    assert twice.amounts[0, 2] + twice.amounts[0, 4] == pytest.approx(once.amounts[0, 2], rel=1e-13)
+
+
+def test_rows_given_twice_or_as_sums() -> None:
+    A = np.array([[2.0, 0, 2, 1], [0.0, 2, 1, 1]])
+    c = [0.0, 0.0, -8.0, 1.0]
+    plain = solve(A, [2.0, 1.0], c)
+    more = check(np.vstack([A, A[0], A.sum(axis=0), 2 * A[1]]), [2.0, 1.0, 2.0, 3.0, 2.0], c)
+    np.testing.assert_allclose(more.log_mole_fractions, plain.log_mole_fractions, rtol=1e-12)
+
+
+def test_contradicting_rows_are_infeasible() -> None:
+    from gibbsmin import minimise
+    from gibbsmin.minimiser import Status
+
+    A = np.array([[2.0, 0, 2, 1], [0.0, 2, 1, 1], [2.0, 0, 2, 1]])
+    answer = minimise(A, np.array([2.0, 1.0, 2.1]), np.zeros(4))
+    assert answer.status[0] == Status.INFEASIBLE
+    assert np.all(np.isnan(answer.amounts))
+
+
+@pytest.mark.parametrize("b", [[0.0, 1.0], [1.0, -1.0], [-1.0, -1.0]])
+def test_amounts_no_list_can_hold_are_infeasible(b: list[float]) -> None:
+    """CH4 and C2H4 from hydrogen without carbon, or from negative totals: a status, not an exception."""
+    from gibbsmin import minimise
+    from gibbsmin.minimiser import Status
+
+    answer = minimise(np.array([[1.0, 2.0], [4.0, 4.0]]), np.array(b), np.zeros(2))
+    assert answer.status[0] == Status.INFEASIBLE
+    assert np.all(np.isnan(answer.amounts))
+
+
+def test_fractional_formulas() -> None:
+    """Formulas need not be whole numbers: CH1.5 O0.25 as a lumped fuel."""
+    A = np.array([[1.0, 1, 1, 0, 0], [1.5, 0, 0, 2, 2], [0.25, 1, 2, 0, 1]])
+    check(A, [1.0, 1.5, 1.25], [5.0, -12.0, -20.0, 0.0, -15.0])
+
+
+@pytest.mark.parametrize("species", [2, 5, 40, 300])
+def test_one_element_many_clusters(species: int) -> None:
+    """X1 ... Xn of one element, potentials nearly linear in size: all amounts alike, then all in the
+    extremes."""
+    size = np.arange(1, species + 1, dtype=float)
+    for slope, bend in ((0.0, 0.0), (1.0, 1e-3), (-1.0, -1e-3), (3.0, 0.01)):
+        check(size[None, :], [1.0], slope * size + bend * size**2)
+
+
+def test_tie_between_two_stable_assemblages() -> None:
+    """Reaction Gibbs energy exactly zero: the linear program without mixing has a whole edge of optima."""
+    A = np.array([[1.0, 0, 1, 0], [0.0, 1, 0, 1], [1.0, 0, 0, 1], [0.0, 1, 1, 0]])
+    check(A, [1.0, 1.0, 1.0, 1.0], [0.0, 0.0, 0.0, 0.0])
+    check([[2, 0, 1], [0, 2, 1]], [1.0, 1.0], [0.0, 0.0, 0.0])
+
+
+def test_charges_without_a_neutral_species() -> None:
+    """A fully ionised gas: only ions and electrons listed, the balance allows no other."""
+    A = np.array([[1.0, 1, 0], [1.0, 2, -1]])  # X+, X2+, e-
+    check(A, [1.0, 0.0], [0.0, 3.0, 0.0])
+
+
+def test_negative_ions_hold_all_electrons() -> None:
+    """Electron attachment so strong that free electrons are traces of 1e-60."""
+    A = np.array([[1.0, 1, 0, 0, 0], [0.0, 0, 1, 1, 0], [0.0, 1, 0, -1, -1]])  # M, M+, X, X-, e-
+    check(A, [1.0, 1.0, 0.0], [0.0, 60.0, 0.0, -60.0, 80.0])
+    check(A, [1.0, 0.5, 0.0], [0.0, 10.0, 0.0, -300.0, 200.0])
+    check(A, [0.5, 1.0, 0.0], [0.0, 300.0, 0.0, -100.0, 200.0])
