@@ -31,7 +31,7 @@ from gibbsmin.strict_yaml import Document, YamlPath, parse_file
 
 __all__ = ["MOLAR_MASS_TOLERANCE", "SourceHeader", "document_of", "read_file", "read_header", "read_species"]
 
-MOLAR_MASS_TOLERANCE = 1.5e-3
+MOLAR_MASS_TOLERANCE = 5e-4
 """Relative; standard atomic weights were revised by up to this since the editions that sources used."""
 
 OVERLAP_ALLOWED = 150.0
