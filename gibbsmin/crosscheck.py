@@ -10,6 +10,7 @@ a point for which Cantera has no answer is listed as such, with the reason.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, Literal
@@ -35,6 +36,7 @@ THRESHOLD = 1e-6  # mole fraction; below it Cantera's stopping rule does not set
 SAMPLE_SIZE = 50
 SEED = 20020902  # any fixed number: the same run checks the same points
 LEAST_TEMPERATURE_WITH_IONS = 2000.0  # K; below it Cantera's electron fractions were found wrong by decades
+SAME_ENERGY = 1e-12  # relative; nearer, the Gibbs energies of two compositions differ by rounding alone
 SAME_DATA = 1e-10  # largest accepted difference of the standard potentials, in units of RT and relative
 
 STATUS_CODES: dict[CheckStatus, int] = {"confirmed": 1, "differs": 2, "no independent answer": 3}
@@ -229,6 +231,8 @@ def stationarity(
     The potentials of its most abundant independent species fix those of all others: each should have the mole
     fraction x*_j = exp(sum_i C_ij mu_i - c_j). Returned is the largest |x_j - x*_j| / max(x_j, x*_j) over
     species of which either exceeds `threshold`; so a species that is absent but ought to be there counts.
+    Blind to species that the ones present cannot make up: a composition of so few species needs a comparison of
+    energies besides.
 
     Args:
         formula_matrix: (E, S). potentials: c_j = mu_j0/RT + ln(p/p0), (S,). fraction: (S,).
@@ -350,8 +354,14 @@ class _Comparison:
             return "ours", f"{found}; ours meets the equilibrium conditions, Cantera's does not{third}"
         if other_residual <= self._tolerance < residual:
             return "theirs", f"{found}; Cantera's meets the equilibrium conditions, ours does not{third}"
-        difference = self._energy(index, potentials, ours) - self._energy(index, potentials, other)
-        return "undecided", f"{found}; G/RT per mol of atoms, ours less Cantera's: {difference:.1e}{third}"
+        energy, other_energy = self._energy(potentials, ours), self._energy(potentials, other)
+        found += f"; G/RT per mol of atoms: ours less Cantera's {energy - other_energy:.1e}"
+        # Both conserve the elements and are stationary as far as their own species tell: lower energy is right.
+        if max(residual, other_residual) <= self._tolerance and not math.isclose(
+            energy, other_energy, rel_tol=SAME_ENERGY, abs_tol=SAME_ENERGY
+        ):
+            return ("ours" if energy < other_energy else "theirs"), f"{found}{third}"
+        return "undecided", f"{found}{third}"
 
     def _third_opinion(
         self, index: tuple[int, ...], T: float, p: float, ours: FloatArray, other: FloatArray
@@ -379,7 +389,7 @@ class _Comparison:
             balance = np.abs(found - fed * scale) / np.maximum(size, np.abs(fed) * scale)
         return max(stationarity(self._A, potentials, fraction), float(np.nan_to_num(balance).max()))
 
-    def _energy(self, index: tuple[int, ...], potentials: FloatArray, fraction: FloatArray) -> float:
+    def _energy(self, potentials: FloatArray, fraction: FloatArray) -> float:
         """G/RT per mol of atoms, which compares answers of different gas amounts."""
         present = fraction > 0
         energy = fraction[present] @ (potentials[present] + np.log(fraction[present]))

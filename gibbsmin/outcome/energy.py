@@ -65,10 +65,9 @@ def mixture_enthalpy(dataset: xr.Dataset, table: ThermoTable) -> xr.DataArray:
 
 
 def feed_enthalpy(parts: Sequence[FeedPart]) -> xr.DataArray:
-    """Enthalpy of the whole feed, each stream at its own temperature: sum over streams of sum n0_j
-    h_j(T_stream).
+    """Enthalpy of the whole feed, each stream at its own temperature: sum over streams of sum n0_j h_j(T).
 
-    In J per mol of the amounts' unit: J for mol, J/h for mol/h. Dimensions are those of the amounts.
+    In J for amounts in mol, in J/h for mol/h; over the dimensions of the amounts.
     """
     total = xr.DataArray(0.0)
     for part in parts:

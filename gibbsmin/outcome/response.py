@@ -24,7 +24,7 @@ FloatArray = NDArray[np.float64]
 # A basis serves a point as long as no species outgrows a component it is made of by more than this; the
 # scaled system's condition number grows with it, and 100 leaves 13 digits.
 _OUTGROWN = 100.0
-_NO_ENTRY = 1e-9  # entries of C are ratios of small whole numbers; smaller ones are rounding
+_NO_ENTRY = 1e-9  # far above rounding, far below any ratio of numbers of atoms
 _DEPENDENT = 1e-9  # same, for what is left of a column after projection
 
 
@@ -85,9 +85,16 @@ def in_components(formula_matrix: FloatArray, components: NDArray[np.intp]) -> F
 
     Columns of species outside the span of the components (all of zero amount) are meaningless.
     """
-    C = np.asarray(
-        np.linalg.lstsq(formula_matrix[:, components], formula_matrix, rcond=None)[0], dtype=np.float64
-    )
+    columns = formula_matrix[:, components]
+    # Independent rows of the components' columns, found as independent columns of their transpose.
+    rows = abundant_components(columns.T, np.ones(len(columns)))
+    C: FloatArray = np.linalg.solve(columns[rows], formula_matrix[rows])
+    # By Cramer's rule the entries are whole numbers over the determinant (for whole numbers of atoms).
+    # Made so again, a balance that is zero by stoichiometry is zero, and traces are not drowned in it.
+    determinant = round(abs(float(np.linalg.det(columns[rows]))))
+    if determinant:
+        whole = np.rint(C * determinant)
+        C = np.where(np.abs(C * determinant - whole) < _NO_ENTRY, whole / determinant, C)
     C[np.abs(C) < _NO_ENTRY] = 0.0
     C[:, components] = np.eye(len(components))
     return C
