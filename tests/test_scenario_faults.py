@@ -66,6 +66,7 @@ FAULTS = [
     ("{points: sample,", "{points: most,", "most", "expected 'sample', 'all' or 'none', found 'most'"),
     ("sample size: 20", "sample size: 0", "0,", "expected at least 1, found 0"),
     ("sample size: 20", "sample size: many", "many", "expected a whole number, found 'many'"),
+    ("sample size: 20", "sample size: -1" + 350 * "0", "-1", "a number of 352 digits is too large"),
     ("tolerance: 1e-6", "tolerance: 0", "0}", "expected more than 0, found 0"),
     ("tolerance: 1e-6", "tolerance: .nan", ".nan", "expected a finite number, found nan"),
     ("[csv]", "[cvs]", "cvs", "expected 'csv' or 'parquet', found 'cvs'; did you mean 'csv'?"),
@@ -153,6 +154,8 @@ FAULTS = [
         "vacuum",
     ),
     ("{H2O: 300 kmol/h}", "{H2O+: 300 kmol/h}", "steam:\n", "carries a charge"),
+    ("{H2O: 300 kmol/h}", "{H2O: 1e999 kmol/h}", "1e999", "1e999 kmol/h is beyond all measure"),
+    ("{H2O: 300 kmol/h}", "{H2O: 1e-99 kmol/h}", "1e-99", "1e-99 kmol/h is beyond all measure"),
     # grid
     ("step: 50 K}", "step: 0 K}", "0 K}", "the step must be more than zero"),
     ("step: 50 K}", "step: 500 K}", "500 K}", "the step (500 K) is larger than the range"),

@@ -98,7 +98,9 @@ def test_structure_check_agrees_with_the_schema_and_nothing_else_escapes() -> No
         document = parse(text)
         _, faults = check_structure(document)
         valid = VALIDATOR.is_valid(document.data)
-        assert valid == (not faults), (text, faults)
+        # JSON Schema knows no largest number; we refuse what no float can hold
+        ours = [fault for fault in faults if "digits is too large" not in fault.message]
+        assert valid == (not ours), (text, faults)
         seen[valid] += 1
         try:
             parse_scenario(text)

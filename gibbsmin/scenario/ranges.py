@@ -15,7 +15,7 @@ from typing import Any
 
 from gibbsmin.scenario.model import Spacing
 from gibbsmin.scenario.ratios import as_exact
-from gibbsmin.scenario.reading import Reading
+from gibbsmin.scenario.reading import Reading, out_of_bounds
 from gibbsmin.scenario.structure import FAULTY
 from gibbsmin.scenario.units import Kind, Quantity, Unit, UnitFault, split_quantity
 from gibbsmin.strict_yaml import YamlPath
@@ -232,8 +232,9 @@ class _AxisReader:
         if number is None or word:
             self.reading.fault(path, f"expected a plain number (a ratio has no unit), found {item!r}")
             return None
-        if number < 0:
-            self.reading.fault(path, f"the ratio {item} is negative")
+        problem = out_of_bounds(number, None)
+        if problem:
+            self.reading.fault(path, f"the ratio {item} {problem}")
             return None
         return number
 

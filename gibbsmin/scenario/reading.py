@@ -71,13 +71,19 @@ class Reading:
         return False
 
 
-def out_of_bounds(value: Fraction, kind: Kind) -> str:
-    """What is wrong with an SI value of this kind, or ''."""
+MAGNITUDES = (Fraction(1, 10**30), Fraction(10**30))
+"""Smallest and largest size, in SI, of a number that is not zero; beyond it floats would overflow later."""
+
+
+def out_of_bounds(value: Fraction, kind: Kind | None) -> str:
+    """What is wrong with an SI value of this kind (None: a ratio), or ''."""
+    if value and not MAGNITUDES[0] <= abs(value) <= MAGNITUDES[1]:
+        return "is beyond all measure"
     if kind == "temperature" and value <= 0:
         return "is not above absolute zero (0 K, -273.15 degC, -459.67 degF)"
     if kind == "pressure" and value <= 0:
         return "is not above vacuum (0 Pa absolute)"
-    if kind == "amount" and value < 0:
+    if kind in ("amount", None) and value < 0:
         return "is negative"
     return ""
 

@@ -124,7 +124,7 @@ def _all_gases(reading: Reading, data: Mapping[str, Any], feed: Feed) -> tuple[l
         reading.remarks.append(f"species: {', '.join(added)} takes part beyond the limits because it is fed")
     fed_names = {species.name for species in fed}
     rest = [s for s in found if s.name not in fed_names and s.name not in unwanted]
-    limits = [f"at most {carbon} carbon atoms"] if carbon is not None else []
+    limits = [f"at most {carbon} carbon {'atom' if carbon == 1 else 'atoms'}"] if carbon is not None else []
     limits += [] if ions else ["no ions"]
     limits += [] if radicals else ["no radicals"]
     limits += [f"without {', '.join(unwanted)}"] if unwanted else []

@@ -37,6 +37,10 @@ def schema() -> Schema:
     return loaded
 
 
+LARGEST_NUMBER = 10**300
+"""Whole numbers beyond it have no float value, or soon lose it."""
+
+
 class Faulty:
     """Marks a value that has a fault and was taken out."""
 
@@ -114,6 +118,9 @@ class _Walk:
             return value
         if isinstance(value, bool) or not isinstance(value, int | float):
             return value
+        if isinstance(value, int) and abs(value) > LARGEST_NUMBER:
+            self._fault(path, f"a number of {len(str(value))} digits is too large")
+            return FAULTY
         if not math.isfinite(value):
             self._fault(path, f"expected a finite number, found {value}")
             return FAULTY
