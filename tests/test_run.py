@@ -150,7 +150,7 @@ grid:
         {"C3H8": 1, "O2": 5}, [400.0, 1500.0], 1e5, species=dataset["species"].values.tolist()
     )
     np.testing.assert_allclose(dataset["mole_fraction"].values, whole["mole_fraction"].values, rtol=1e-10)
-    assert float(dataset["mole_fraction"].sel(species="O2")[0]) < 1e-20
+    assert float(dataset["mole_fraction"].sel(species="O2")[0]) < 1e-19  # doubles taken as they are leave 1e-17
 
 
 def test_extent_and_tolerance_of_the_crosscheck_come_from_the_scenario() -> None:

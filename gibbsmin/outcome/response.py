@@ -88,7 +88,7 @@ def in_components(formula_matrix: FloatArray, components: NDArray[np.intp]) -> F
     columns = formula_matrix[:, components]
     # Independent rows of the components' columns, found as independent columns of their transpose.
     rows = abundant_components(columns.T, np.ones(len(columns)))
-    C: FloatArray = np.linalg.solve(columns[rows], formula_matrix[rows])
+    C = np.asarray(np.linalg.solve(columns[rows], formula_matrix[rows]), dtype=np.float64)
     # By Cramer's rule the entries are whole numbers over the determinant (for whole numbers of atoms).
     # Made so again, a balance that is zero by stoichiometry is zero, and traces are not drowned in it.
     determinant = round(abs(float(np.linalg.det(columns[rows]))))

@@ -148,7 +148,7 @@ def write_table(dataset: xr.Dataset, path: Path, kind: str) -> None:
 
 def write_crosscheck(check: CrossCheck, path: Path) -> None:
     """One row a checked point; a heading and no row when nothing was checked."""
-    from gibbsmin.crosscheck import CheckedPoint
+    from gibbsmin.comparison import CheckedPoint
 
     shown = [field.name for field in fields(CheckedPoint) if field.name not in ("index", "place")]
     places = list(dict(check.points[0].place)) if check.points else []

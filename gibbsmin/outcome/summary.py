@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from gibbsmin.crosscheck import CheckedPoint
+from gibbsmin.comparison import CheckedPoint
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -157,7 +157,7 @@ def _unsolved(outcome: Outcome) -> list[str]:
 
     codes, counts = np.unique(outcome.dataset["status"].values, return_counts=True)
     return [
-        f"{count} points unsolved: {Status(int(code)).explanation} {Status(int(code)).remedy}"
+        f"{count} points unsolved: {Status(int(code)).explanation}; {Status(int(code)).remedy}"
         for code, count in zip(codes, counts, strict=True)
         if code != 0
     ]
