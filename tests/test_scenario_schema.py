@@ -34,6 +34,12 @@ JUNK: list[Any] = [
     {},
     {"x": 1},
     {"of": "x"},
+    10**350,
+    5e-324,
+    "1e999 bar",
+    "1e-999 kmol/h",
+    "1e20 kmol/h",
+    "850 degC",
 ]
 
 FULL = SOUND.replace(
@@ -99,8 +105,8 @@ def test_structure_check_agrees_with_the_schema_and_nothing_else_escapes() -> No
         _, faults = check_structure(document)
         valid = VALIDATOR.is_valid(document.data)
         # JSON Schema knows no largest number; we refuse what no float can hold
-        ours = [fault for fault in faults if "digits is too large" not in fault.message]
-        assert valid == (not ours), (text, faults)
+        too_large = any("digits is too large" in fault.message for fault in faults)
+        assert too_large or valid == (not faults), (text, faults)
         seen[valid] += 1
         try:
             parse_scenario(text)

@@ -21,7 +21,7 @@ from gibbsmin.strict_yaml import YamlPath
 if TYPE_CHECKING:
     from gibbsmin.species import Species
 
-MOST_FEEDS = 100_000
+MOST_FEEDS = 10_000
 """Combinations of further-axis values in one scenario; a larger survey is many scenarios."""
 
 RESERVED_NAMES = frozenset(
