@@ -123,6 +123,12 @@ FAULTS = [
         "300 kmol}",
         "kmol is an amount, but the feed began with a rate (kmol/h)",
     ),
+    (
+        "{H2O: 300 kmol/h}",
+        "{H20: 300 kmol}",
+        "300 kmol}",
+        "kmol is an amount, but the feed began with a rate",
+    ),
     ("{H2O: 300 kmol/h}", "{H2O: 0 kmol/h}", "steam:\n", "cannot change it"),
     ("{H2O: 300 kmol/h}", "{H20: 300 kmol/h}", "H20", "no species is called 'H20'; did you mean"),
     (

@@ -120,7 +120,7 @@ def test_factors_agree_with_the_list_that_comes_with_pint() -> None:
         ("5 baar", "pressure", "did you mean 'bar'?"),
         ("5 Bar", "pressure", "did you mean 'bar'?"),
         ("5 mol", "pressure", "is not a unit of pressure; allowed: Pa, hPa"),
-        ("5 C", "temperature", "is not a unit of temperature; allowed: K, degC, degF"),
+        ("5 C", "temperature", "is not a unit of temperature; allowed: K, degC, degF; did you mean 'degC'?"),
         ("5", "temperature", "has no unit"),
         ("5,3 bar", "pressure", "write decimals with a point"),
         ("1 000 bar", "pressure", "no separators"),

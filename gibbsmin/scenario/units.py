@@ -75,6 +75,9 @@ _ALIASES = {
     **{f"{unit[:-3]} gauge": unit for unit in _GAUGE},
 }
 
+_TEMPERATURE_WORDS = {"c": "degC", "celsius": "degC", "f": "degF", "fahrenheit": "degF", "kelvin": "K"}
+"""Not read, for C is the coulomb and F the farad, but understood well enough to suggest the right word."""
+
 _QUANTITY = re.compile(r"\s*([-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d{1,3})?)\s*(.*?)\s*\Z", re.DOTALL)
 
 Kind = Literal["temperature", "temperature difference", "pressure", "pressure difference", "amount"]
@@ -189,7 +192,8 @@ def find_unit(word: str, kind: Kind, *, ambient: Fraction) -> Unit:
             return unit_of_amount
     known: Iterable[str] = [*allowed_units(kind), *_ALIASES] if kind != "amount" else _amount_spellings()
     listing = listed(allowed_units(kind))
-    raise UnitFault(f"{word!r} is not a unit of {kind}; allowed: {listing}{nearest(word, known)}")
+    hint = nearest(_TEMPERATURE_WORDS.get(word.casefold(), word), known)
+    raise UnitFault(f"{word!r} is not a unit of {kind}; allowed: {listing}{hint}")
 
 
 def _amount(word: str) -> Unit | None:
