@@ -138,11 +138,8 @@ class _StreamReader:
             place = (*self.path, "amounts", name)
             species = self._species(name, place, amounts)
             quantity = self.reading.quantity(value, "amount", place, unit=unit)
-            if (
-                species is None
-                or quantity is None
-                or not self.feed.agree_on_rate(self.reading, quantity, place)
-            ):
+            agrees = quantity is not None and self.feed.agree_on_rate(self.reading, quantity, place)
+            if species is None or quantity is None or not agrees:
                 sound = False
                 continue
             shown = shown or quantity.unit.symbol
