@@ -35,6 +35,7 @@ CROSSCHECK_FILE = "crosscheck.csv"
 SCENARIO_FILE = "scenario.yaml"
 TABLE_FILES = {"csv": "results.csv", "parquet": "results.parquet"}
 _PROGRAM = "gibbsmin"
+_BY_SPECIES = ("mole_fraction", "feed_amount")
 
 
 def save(
@@ -111,9 +112,11 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
 
 
 def as_table(dataset: xr.Dataset) -> pd.DataFrame:
-    """One row a point: coordinates, then every result, mole fractions and amounts by species.
+    """One row a point: coordinates, mole fractions and feed by species, and every single-valued result.
 
-    Column headings carry the unit: "temperature [K]", "mole_fraction H2 [1]".
+    Column headings carry the unit: "temperature [K]", "mole_fraction H2 [1]". Amounts by species are left
+    out, they are the mole fraction times `gas_amount`; element potentials and dry fractions are in the NetCDF
+    file alone.
     """
     import pandas as pd
 
@@ -128,7 +131,7 @@ def as_table(dataset: xr.Dataset) -> pd.DataFrame:
         further = [dim for dim in array.dims if dim not in points.dims]
         if not further:
             columns[_heading(str(name), array)] = _over_points(array, points)
-        elif len(further) == 1 and further[0] in ("species", "element", "feed_species"):
+        elif len(further) == 1 and name in _BY_SPECIES:
             for label in dataset[further[0]].values:
                 part = array.sel({further[0]: label})
                 columns[_heading(f"{name} {label}", array)] = _over_points(part, points)

@@ -3,20 +3,23 @@
 from __future__ import annotations
 
 import html
+import textwrap
 from collections.abc import Iterator, Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from gibbsmin.comparison import CheckedPoint
-
 if TYPE_CHECKING:
     import xarray as xr
 
+    from gibbsmin.comparison import CheckedPoint
     from gibbsmin.outcome import Outcome
+    from gibbsmin.scenario import Scenario
 
 _SPECIES_SHOWN = 6  # in lists of names, and of key species when the scenario names none
-_MOST_ROWS = 12  # key results shown; the files hold all
+_MOST_ROWS = 20  # key results shown; the files hold all
+_WIDTH = 100  # of the text, in columns
+_SHOWN = {"1": ("", 1.0), "J mol-1": ("kJ/mol", 1e-3), "J": ("kJ", 1e-3), "W": ("kW", 1e-3)}
 _MOST_POINTS = 5  # differing or unanswered points spelled out; crosscheck.csv lists all
 CAUTION = (
     "Equilibrium is a limit, not a rate. It sizes no relief device, proves no atmosphere non-flammable, "
@@ -32,9 +35,8 @@ _STYLE = (
 
 
 def summary_text(outcome: Outcome) -> str:
-    """Plain text for a terminal, at most about 100 columns wide."""
-    lines = [outcome.scenario.title, ""]
-    lines += _facts(outcome)
+    """Plain text for a terminal; only a wide table of results exceeds 100 columns."""
+    lines = [outcome.scenario.title, "", *_filled(_facts(outcome))]
     heading, rows = _key_table(outcome)
     widths = [max(len(row[i]) for row in (heading, *rows)) for i in range(len(heading))]
     lines.append("")
@@ -44,7 +46,7 @@ def summary_text(outcome: Outcome) -> str:
             *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)),
         ]
         lines.append("  ".join(cells).rstrip())
-    lines += ["", *_evidence(outcome), "", CAUTION]
+    lines += ["", *_filled(_evidence(outcome)), "", *_filled([CAUTION])]
     return "\n".join(lines)
 
 
@@ -113,24 +115,19 @@ def _row(name: str, array: xr.DataArray, outcome: Outcome) -> list[str]:
     values = array.values
     if not np.isfinite(values).any():
         return [name, units, "-", "-", "-"]
+    shown, factor = _SHOWN.get(units, (units, 1.0))
     place = np.unravel_index(int(np.nanargmax(values)), values.shape)
-    at = []
-    for axis, position in zip(outcome.scenario.axes, place, strict=True):
-        if len(axis) > 1:
-            unit = "" if axis.display_unit == "1" else f" {axis.display_unit}"
-            title = f"{axis.title} " if axis.display_unit == "1" else ""
-            at.append(f"{title}{axis.display_values[int(position)]:g}{unit}")
     return [
         name,
-        "" if units == "1" else units,
-        f"{np.nanmin(values):.4g}",
-        f"{np.nanmax(values):.4g}",
-        ", ".join(at),
+        shown,
+        f"{np.nanmin(values) * factor:.4g}",
+        f"{np.nanmax(values) * factor:.4g}",
+        _where([int(position) for position in place], outcome.scenario),
     ]
 
 
 def _evidence(outcome: Outcome) -> list[str]:
-    dataset, check = outcome.dataset, outcome.crosscheck
+    dataset, check, scenario = outcome.dataset, outcome.crosscheck, outcome.scenario
     solved = outcome.points - outcome.unsolved
     lines = [f"solved {solved} of {outcome.points} points"]
     if solved:
@@ -145,10 +142,11 @@ def _evidence(outcome: Outcome) -> list[str]:
     text = f"cross-check by {check.library}, {len(check.points)} points: {check.confirmed} confirmed"
     text += f", {check.differing} differ, {check.unanswered} without an independent answer"
     if (worst := check.worst) is not None:
-        text += f"; largest relative difference {worst.relative:.1e} ({worst.species}, {_where(worst)})"
+        text += f"; largest relative difference {worst.relative:.1e}"
+        text += f" ({worst.species}, {_where(worst.index, scenario)})"
     lines.append(text)
-    lines += _spelled_out("differs", check.having("differs"))
-    lines += _spelled_out("no independent answer", check.having("no independent answer"))
+    lines += _spelled_out("differs", check.having("differs"), scenario)
+    lines += _spelled_out("no independent answer", check.having("no independent answer"), scenario)
     return lines
 
 
@@ -163,21 +161,29 @@ def _unsolved(outcome: Outcome) -> list[str]:
     ]
 
 
-def _spelled_out(what: str, points: Sequence[CheckedPoint]) -> list[str]:
+def _spelled_out(what: str, points: Sequence[CheckedPoint], scenario: Scenario) -> list[str]:
     lines = []
     for point in points[:_MOST_POINTS]:
         difference = f" by {point.relative:.1e} ({point.species})" if np.isfinite(point.relative) else ""
-        lines.append(f"  {what}{difference} at {_where(point)}: {point.reason}")
+        lines.append(f"{what}{difference} at {_where(point.index, scenario)}: {point.reason}")
     if len(points) > _MOST_POINTS:
-        lines.append(f"  and {len(points) - _MOST_POINTS} more; crosscheck.csv lists all")
+        lines.append(f"and {len(points) - _MOST_POINTS} more; crosscheck.csv lists all")
     return lines
 
 
-def _where(point: CheckedPoint) -> str:
-    units = {"temperature": " K", "pressure": " Pa"}
-    return ", ".join(
-        f"{value:g}{units[name]}" if name in units else f"{name} {value}" for name, value in point.place
-    )
+def _where(index: Sequence[int], scenario: Scenario) -> str:
+    """A point of the grid in the units of the scenario; axes of one value are left out."""
+    places = []
+    for axis, position in zip(scenario.axes, index, strict=True):
+        if len(axis) > 1:
+            value = f"{axis.display_values[position]:g}"
+            bare = axis.display_unit == "1"  # a ratio needs its name, a temperature only its unit
+            places.append(f"{axis.title} {value}" if bare else f"{value} {axis.display_unit}")
+    return ", ".join(places)
+
+
+def _filled(lines: Sequence[str]) -> list[str]:
+    return [part for line in lines for part in textwrap.wrap(line, _WIDTH, subsequent_indent="  ")]
 
 
 def _list(lines: Sequence[str]) -> str:
