@@ -90,7 +90,7 @@ def test_the_shape_is_further_axes_then_temperature_then_pressure() -> None:
         pressure="[1 bar, 2 bar, 3 bar]",
         further="{Air flow!: {stream: air, values: [1 mol, 2 mol, 3 mol, 4 mol]}}",
     )
-    assert [axis.name for axis in result.axes] == ["air_flow", "temperature", "pressure"]
+    assert [axis.name for axis in result.axes] == ["Air_flow", "temperature", "pressure"]
     assert result.further_axes[0].title == "Air flow!"
     assert result.shape == (4, 2, 3)
     assert result.points == 24

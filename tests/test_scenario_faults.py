@@ -231,7 +231,7 @@ FAULTS = [
         "of: {in",
         "needs one of 'moles of', 'atoms of', 'mass of', 'oxygen demand of'",
     ),
-    ("    steam to carbon:", "    temperature:", "temperature:\n", "an axis cannot be called 'temperature'"),
+    ("    steam to carbon:", "    Temperature:", "Temperature:\n", "an axis cannot be called 'Temperature'"),
     ("    steam to carbon:", "    '%':", "'%'", "has no letter or digit"),
     (
         "      ratio:\n",

@@ -75,7 +75,7 @@ def read_further_axes(
         name = identifier(title)
         if not name:
             reading.fault(place, f"the axis name {title!r} has no letter or digit", of_key=True)
-        elif name in RESERVED_NAMES:
+        elif name.casefold() in RESERVED_NAMES:
             reading.fault(
                 place, f"an axis cannot be called {title!r}; the results use that name", of_key=True
             )

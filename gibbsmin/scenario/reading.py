@@ -89,8 +89,8 @@ def out_of_bounds(value: Fraction, kind: Kind | None) -> str:
 
 
 def identifier(title: str) -> str:
-    """Coordinate name for a title: 'steam to carbon' becomes 'steam_to_carbon'."""
-    name = re.sub(r"\W+", "_", title).strip("_").lower()
+    """Coordinate name for a title: 'CO2 to methane' becomes 'CO2_to_methane'."""
+    name = re.sub(r"\W+", "_", title).strip("_")
     return f"axis_{name}" if name[:1].isdigit() else name
 
 
