@@ -18,6 +18,7 @@ from numpy.typing import ArrayLike, NDArray
 from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.decimal_amounts import element_amounts
 from gibbsmin.errors import ConditionsError
+from gibbsmin.grid import solve_grid, solve_points
 from gibbsmin.labelled import Labelled, count, joint_sizes, read_number
 from gibbsmin.outcome.assembling import RESERVED_DIMENSIONS, assemble
 from gibbsmin.species import ThermoTable, standard_library
@@ -182,43 +183,32 @@ def solve(
     """Solve prepared conditions; the data set is the one `equilibrium` describes."""
     table = conditions.table
     T = conditions.temperature.values.ravel()
-    distinct, which = (T, np.arange(T.size)) if T.size == 1 else np.unique(T, return_inverse=True)
-    gibbs = table.gibbs_RT(distinct)
+    gibbs = table.gibbs_RT(T)
     log_pressure = np.log(conditions.pressure.values.ravel() / STANDARD_PRESSURE)
-    common = {"threads": threads, "progress": progress}
-    sizes = conditions.sizes
+    common = (table.formula_matrix, conditions.element_amounts, gibbs)
     if conditions.is_product:
-        from gibbsmin.grid import solve_grid
-
-        solution: Any = solve_grid(
-            table.formula_matrix, conditions.element_amounts, gibbs[which], T, log_pressure, **common
-        )
-        further = len(sizes) - len(conditions.feed_sizes)
-        factor = conditions.factor.reshape((*conditions.feed_sizes.values(), *([1] * further)))
+        solution: Any = solve_grid(*common, T, log_pressure, threads=threads, progress=progress)
     else:
-        from gibbsmin.grid import solve_points
-
-        indices = [
-            np.ascontiguousarray(
-                Labelled(tuple(part), np.arange(count(part)).reshape(tuple(part.values()))).spread_over(sizes)
-            ).ravel()
-            for part in (conditions.feed_sizes, conditions.temperature.sizes, conditions.pressure.sizes)
-        ]
-        solution = solve_points(
-            table.formula_matrix,
-            conditions.element_amounts,
-            gibbs,
-            log_pressure,
-            indices[0],
-            which[indices[1]],
-            indices[2],
-            **common,
-        )
-        factor = conditions.factor[indices[0]].reshape(tuple(sizes.values()))
+        indices = _point_indices(conditions)
+        solution = solve_points(*common, log_pressure, *indices, threads=threads, progress=progress)
     extrapolated = (
         table.extrapolated(T).reshape(*conditions.temperature.values.shape, -1) if extrapolate else None
     )
-    return assemble(conditions, solution, factor, extrapolated)
+    return assemble(conditions, solution, extrapolated)
+
+
+def _point_indices(conditions: Conditions) -> tuple[NDArray[np.intp], NDArray[np.intp], NDArray[np.intp]]:
+    """Which feed, temperature and pressure every point of the result has, each (N,) in C order."""
+
+    def numbered(sizes: Mapping[str, int]) -> NDArray[np.intp]:
+        own = Labelled(tuple(sizes), np.arange(count(sizes)).reshape(tuple(sizes.values())))
+        return np.ascontiguousarray(own.spread_over(conditions.sizes)).ravel()
+
+    return (
+        numbered(conditions.feed_sizes),
+        numbered(conditions.temperature.sizes),
+        numbered(conditions.pressure.sizes),
+    )
 
 
 def composition_matrix(

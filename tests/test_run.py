@@ -150,7 +150,9 @@ grid:
         {"C3H8": 1, "O2": 5}, [400.0, 1500.0], 1e5, species=dataset["species"].values.tolist()
     )
     np.testing.assert_allclose(dataset["mole_fraction"].values, whole["mole_fraction"].values, rtol=1e-10)
-    assert float(dataset["mole_fraction"].sel(species="O2")[0]) < 1e-19  # doubles taken as they are leave 1e-17
+    assert (
+        float(dataset["mole_fraction"].sel(species="O2")[0]) < 1e-19
+    )  # doubles taken as they are leave 1e-17
 
 
 def test_extent_and_tolerance_of_the_crosscheck_come_from_the_scenario() -> None:
@@ -192,7 +194,7 @@ def test_the_notebook_page_escapes_what_comes_from_the_file(outcome: Outcome) ->
 
 
 def test_unsolved_points_are_counted_and_explained(monkeypatch: pytest.MonkeyPatch) -> None:
-    from gibbsmin import grid
+    from gibbsmin import grid, solving
     from gibbsmin.minimiser import Status
 
     genuine = grid.solve_grid
@@ -204,7 +206,7 @@ def test_unsolved_points_are_counted_and_explained(monkeypatch: pytest.MonkeyPat
             values[0, 1, 0] = np.nan
         return solution
 
-    monkeypatch.setattr(grid, "solve_grid", one_point_fails)
+    monkeypatch.setattr(solving, "solve_grid", one_point_fails)
     outcome = gibbsmin.run(parse_scenario(REFORMER))
     assert outcome.unsolved == 1
     assert not outcome.all_solved

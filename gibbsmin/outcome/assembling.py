@@ -9,6 +9,8 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from gibbsmin.labelled import Labelled
+
 if TYPE_CHECKING:
     from gibbsmin.solving import Conditions
 
@@ -18,24 +20,24 @@ RESERVED_DIMENSIONS = frozenset({"species", "element", "feed_species"})
 RATE_UNIT = {"mol": "mol", "mol/h": "mol h-1"}  # as UDUNITS and hence CF write it
 
 
-def assemble(
-    conditions: Conditions, solution: Any, factor: FloatArray, extrapolated: NDArray[np.bool_] | None
-) -> xr.Dataset:
+def assemble(conditions: Conditions, solution: Any, extrapolated: NDArray[np.bool_] | None) -> xr.Dataset:
     """The data set that `gibbsmin.equilibrium` describes.
 
     Args:
         conditions: what was solved.
         solution: arrays named as in `gibbsmin.minimiser.Minimum`, their leading shape the points in the order
-            of `conditions.sizes` (flattened or not).
-        factor: what the element amounts were multiplied by, broadcastable to the points' shape and with as
-            many dimensions.
+            of `conditions.sizes` (flattened or not). Amounts are those of the scaled feed.
         extrapolated: (*temperature dimensions, S), or None to leave it out.
     """
     sizes = conditions.sizes
     dims, shape = tuple(sizes), tuple(sizes.values())
     unit = RATE_UNIT[conditions.amount_unit]
+    own = Labelled(
+        tuple(conditions.feed_sizes), conditions.factor.reshape(tuple(conditions.feed_sizes.values()))
+    )
+    factor = own.spread_over(sizes)
     amount = solution.amounts.reshape(*shape, -1)
-    if (factor != 1).any():
+    if (conditions.factor != 1).any():
         amount = amount / factor[..., None]
     status = solution.status.reshape(shape).astype(np.int8, copy=False)
     gas = amount.sum(axis=-1)
