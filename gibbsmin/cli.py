@@ -255,6 +255,9 @@ def _check(options: argparse.Namespace) -> int:
 
 
 def _add_species(parser: argparse.ArgumentParser) -> None:
+    from gibbsmin.species.listing import DEFAULT_TEMPERATURES
+
+    usual = ", ".join(f"{temperature:g}" for temperature in DEFAULT_TEMPERATURES)
     parser.add_argument(
         "query",
         metavar="QUERY",
@@ -267,7 +270,7 @@ def _add_species(parser: argparse.ArgumentParser) -> None:
         metavar="K",
         nargs="+",
         type=float,
-        help="temperatures in K at which to show properties",
+        help=f"temperatures in K at which to show properties; default: {usual}, as far as the data go",
     )
     parser.set_defaults(command=_species)
 
@@ -322,10 +325,15 @@ def copy_files(files: Sequence[Path], folder: Path, *, overwrite: bool) -> list[
 
 # --- schema
 
+_SCHEMAS = {
+    "scenario": ("gibbsmin.scenario", "schema.json"),
+    "species": ("gibbsmin.species", "species_file.schema.json"),
+}
+
 
 def _add_schema(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
-        "form", nargs="?", choices=("scenario", "species"), default="scenario", help="default: %(default)s"
+        "form", nargs="?", choices=tuple(_SCHEMAS), default="scenario", help="default: %(default)s"
     )
     parser.set_defaults(command=_schema)
 
@@ -333,7 +341,8 @@ def _add_schema(parser: argparse.ArgumentParser) -> None:
 def _schema(options: argparse.Namespace) -> int:
     from importlib.resources import files
 
-    print(files(f"gibbsmin.{options.form}").joinpath("schema.json").read_text(encoding="utf-8"), end="")
+    package, name = _SCHEMAS[options.form]
+    print(files(package).joinpath(name).read_text(encoding="utf-8"), end="")
     return CONFIRMED
 
 

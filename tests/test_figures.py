@@ -27,6 +27,7 @@ from gibbsmin.figures import (
     write_figures,
 )
 from gibbsmin.figures.axes import axes_of, is_logarithmic, spread
+from gibbsmin.figures.label_places import place_labels
 from gibbsmin.figures.labels import chemical, file_name, number, with_formulas
 from gibbsmin.figures.levels import choose_levels
 from gibbsmin.figures.lines import spread_apart
@@ -346,6 +347,52 @@ def test_a_map_falls_back_on_the_further_axis_where_pressure_is_single() -> None
     assert "20 bar" in all_text(figure)
 
 
+def test_where_pressure_makes_no_difference_the_map_is_over_the_further_axis() -> None:
+    field = field_of(made_up(ratios=[2.0, 3.0, 4.0, 5.0]))
+    level = field.isel(pressure=4).expand_dims(pressure=field.pressure, axis=2).copy()
+    figure = drawn_map(level)
+    (axes,) = panels(figure)[:1]
+    assert axes.get_ylabel() == "Steam to carbon"
+    assert axes.get_ylim() == pytest.approx((2.0, 5.0))
+    words = " ".join(all_text(figure).split())
+    assert "drawn at 10 bar: pressure changes it by less than 2 % of the" in words
+    holed = level.copy()
+    holed[0, 0, 0] = np.nan  # an unsolved point must stay in sight, so pressure keeps its axis
+    assert drawn_map(holed).axes[0].get_ylabel() == "Pressure (bar)"
+
+
+def test_numbers_on_contours_are_inside_the_panel_apart_and_on_their_line() -> None:
+    size = (2.0, 2.0)
+    along = np.linspace(0.0, 2.0, 201)
+    lines = [np.column_stack([along, np.full_like(along, y)]) for y in (0.01, 0.5, 0.6, 1.0, 1.5)]
+    places = place_labels(lines, size)
+    assert places[0] is None  # all of it lies at the frame
+    found = [(line, place) for line, place in zip(lines, places, strict=True) if place is not None]
+    assert len(found) == 4
+    for line, place in found:
+        assert (place > 0.2).all()
+        assert (place < 1.8).all()
+        assert (line == place).all(axis=1).any()
+    spots = np.array([place for _, place in found])
+    distances = np.hypot(*(spots[:, None] - spots[None, :]).transpose(2, 0, 1))
+    assert distances[~np.eye(4, dtype=bool)].min() >= 0.33
+
+
+def test_a_contour_without_room_gets_no_number() -> None:
+    line = np.column_stack([np.linspace(0.9, 1.1, 21), np.full(21, 1.0)])
+    assert [place is None for place in place_labels([line, line], (2.0, 2.0))] == [False, True]
+
+
+def test_every_number_on_a_map_lies_within_its_panel() -> None:
+    figure = drawn_map(field_of(made_up()))
+    written = [(axes, text) for axes in panels(figure)[:3] for text in axes.texts]
+    assert len(written) >= 3
+    for axes, text in written:
+        frame, box = axes.get_window_extent(), text.get_window_extent()
+        assert frame.x0 <= box.x0 <= box.x1 <= frame.x1
+        assert frame.y0 <= box.y0 <= box.y1 <= frame.y1
+
+
 # --- lines
 
 
@@ -410,6 +457,21 @@ def test_line_colours_stay_apart_on_white_and_in_lightness() -> None:
         return float(np.dot([0.2126, 0.7152, 0.0722], linear))
 
     assert min(1.05 / (luminance(colour) + 0.05) for colour in LINE_COLOURS) > 2.0
+
+
+def test_a_species_keeps_its_colour_where_another_is_left_out() -> None:
+    dataset = made_up(ratios=[3.0])
+    dataset["dry_mole_fraction"] = dataset["mole_fraction"]
+    drawn = {
+        each.name: each.figure for each in figures_of(dataset, key=["H2O", "CO", "H2"], dry=True, units=UNITS)
+    }
+    colours = {}
+    for name in ("composition", "composition_dry"):
+        figure = drawn[name]
+        assert figure is not None
+        colours[name] = {line.get_label(): line.get_color() for line in figure.axes[0].lines}
+    assert set(colours["composition"]) == {"H2O", "CO", "H2"}
+    assert colours["composition_dry"] == {name: colours["composition"][name] for name in ("CO", "H2")}
 
 
 def test_labels_are_spread_apart_within_the_panel() -> None:
@@ -540,7 +602,7 @@ def test_a_title_is_taken_literally(tmp_path: Path) -> None:
     assert len(written.files) == 4
     first = next(iter(figures_of(made_up(ratios=[2.0]), key=["H2"], units=UNITS, title=title))).figure
     assert first is not None
-    assert r"$\frac{1}{0}$ <script>" in all_text(first)
+    assert r"\$\frac{1}{0}\$ <script>" in all_text(first)
     assert "<script>" not in (tmp_path / "map_H2.svg").read_text(encoding="utf-8")
 
 

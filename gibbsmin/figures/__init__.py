@@ -98,7 +98,7 @@ def figures_of(
         fields = {each: dataset[variable].sel(species=each) for each in names}
         if variable.startswith("dry"):
             fields.pop("H2O", None)
-        yield _composition(fields, name, words, line_pressures, common)
+        yield _composition(fields, name, words, line_pressures, names, common)
     if sum(dataset.sizes[dim] > 1 for dim in grid) < 2:
         yield Drawn("maps", None, "a map needs two axes with several values")
     else:
@@ -111,20 +111,22 @@ def figures_of(
 
 
 def _composition(
-    fields: Mapping[str, xr.DataArray], name: str, words: str, line_pressures: Sequence[float], common: Any
+    fields: Mapping[str, xr.DataArray],
+    name: str,
+    words: str,
+    line_pressures: Sequence[float],
+    colour_order: Sequence[str],
+    common: Any,
 ) -> Drawn:
+    title = "Composition at equilibrium"
     first = next(iter(fields.values()))
     if first.size == 1:
-        return Drawn(
-            name,
-            draw_bars(fields, title="Composition at equilibrium", value_label=words, **common),
-            "the point is not solved",
-        )
+        figure = draw_bars(fields, title=title, value_label=words, **common)
+        return Drawn(name, figure, "the point is not solved")
     if line_pressures and first.sizes.get("temperature", 1) > 1:
-        fields = {
-            each: field.sel(pressure=list(line_pressures), method="nearest") for each, field in fields.items()
-        }
-    figure = draw_lines(fields, title="Composition at equilibrium", value_label=words, **common)
+        at = {"pressure": list(line_pressures)}
+        fields = {each: field.sel(at, method="nearest") for each, field in fields.items()}
+    figure = draw_lines(fields, title=title, value_label=words, colour_order=colour_order, **common)
     return Drawn(name, figure, "no point of the grid is solved")
 
 

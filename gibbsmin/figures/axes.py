@@ -154,9 +154,10 @@ class PanelPlan:
     def columns(self) -> int:
         return 1 + max(panel.column for panel in self.panels)
 
-    def title(self, panel: Panel) -> str:
+    def title(self, panel: Panel) -> list[str]:
+        """What tells a panel from the others: the value on each axis that changes from panel to panel."""
         varied = [axis for axis in (self.column_axis, self.row_axis) if axis is not None]
-        return ", ".join(axis.at(panel.held[axis.name]) for axis in varied)
+        return [axis.at(panel.held[axis.name]) for axis in varied]
 
     @property
     def fixed_words(self) -> str:

@@ -12,10 +12,11 @@ from numpy.typing import NDArray
 from gibbsmin.figures.labels import number
 
 DECADES_FROM = 1.7  # a field that spans more decades than this is coloured by its logarithm
-MOST_DECADES = 10  # below so many decades under the largest value, one colour stands for everything less
+MOST_DECADES = 6  # one colour stands for all that lies further below the largest value
 CONSTANT_WITHIN = 1e-4  # relative spread below which a map would show rounding, not chemistry
 _LINEAR_STEPS = 14
-_FEWEST_NUMBERED, _MOST_NUMBERED = 3, 8
+_MOST_NUMBERED, _MOST_NUMBERED_DECADES = 8, 13  # decades are read by their digits, so more of them fit
+_MOST_NUMBERED_LINES = 6
 
 
 @dataclass(frozen=True)
@@ -36,15 +37,27 @@ class Levels:
 
     @property
     def numbered(self) -> NDArray[np.float64]:
-        """The levels that carry a number: whole decades, or every second step so that they are round."""
-        if len(self.places) <= _MOST_NUMBERED:
+        """The levels that carry a number on the colour scale: all if they are few, else the round ones."""
+        if len(self.places) <= (_MOST_NUMBERED_DECADES if self.logarithmic else _MOST_NUMBERED):
             return self.places
         if self.logarithmic:
-            whole = self.places[np.abs(self.places - np.round(self.places)) < 1e-9]
-            return whole if len(whole) >= _FEWEST_NUMBERED else self.places
+            return self.places[self.round_places]
         step = 2 * float(self.places[1] - self.places[0])
         even = np.round(self.places / step)
         return self.places[np.abs(self.places / step - even) < 1e-6]
+
+    @property
+    def round_places(self) -> NDArray[np.bool_]:
+        """Which of the levels of a logarithmic scale are whole decades."""
+        return np.abs(self.places - np.round(self.places)) < 1e-9
+
+    def numbered_lines(self, crossed: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Those of the levels that cross a panel on which a number is written, the most telling first."""
+        chosen = crossed[np.isin(crossed, self.numbered)]
+        if self.logarithmic:
+            decade = np.isin(chosen, self.places[self.round_places])
+            chosen = np.concatenate([chosen[decade], chosen[~decade]])
+        return chosen[:_MOST_NUMBERED_LINES]
 
     def text(self, place: float) -> str:
         """A level as printed on the colour scale and on the lines."""
@@ -77,7 +90,7 @@ def _decades(low: float, high: float, *, has_zero: bool) -> Levels:
     bottom = max(math.log10(low), math.ceil(top) - MOST_DECADES)
     floor = 10**bottom if bottom > math.log10(low) or has_zero else None
     span = top - bottom
-    mantissas = (1, 2, 5) if span <= 3 else (1, 3) if span <= 7 else (1,)
+    mantissas = (1, 2, 5) if span <= 4 else (1, 3) if span <= 7 else (1,)
     every = [
         math.log10(float(f"{m}e{e}"))
         for e in range(math.floor(bottom), math.ceil(top) + 1)

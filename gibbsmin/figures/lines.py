@@ -52,12 +52,15 @@ def draw_lines(
     value_label: str,
     units: Mapping[str, DisplayUnit] = SI_UNITS,
     name_lines: bool = True,
+    colour_order: Sequence[str] = (),
 ) -> Figure | None:
     """Several `fields` (mole fractions of species, say) along the first axis with more than one value.
 
     All fields share the dimensions of the grid and hold NaN where a point is not solved. The keys are species
-    names, written at the ends of the lines if `name_lines`. Returns None where no axis has more than
-    one value, or where no point is solved.
+    names, written at the ends of the lines if `name_lines`. `colour_order` lists them, perhaps with others,
+    in the order in which colours are dealt, so that a species has one colour in several figures.
+
+    Returns None where no axis has more than one value, or where no point is solved.
     Raises ValueError for fields that are not on a grid.
     """
     first = next(iter(fields.values()))
@@ -76,16 +79,17 @@ def draw_lines(
         points=blank.size,
     )
     page = Page(plan, _PANELS if len(plan.panels) > 1 else _ONE_PANEL, words)
+    styles = {name: _style(index) for index, name in enumerate(colour_order or fields)}
     for panel in plan.panels:
         target = page.panels[panel.row, panel.column]
         set_scale(target, "x", along)
         _set_value_scale(target, scale)
         curves = {name: field.isel(panel.held).values.astype(float) for name, field in fields.items()}
         _hatch_gaps(target, along, np.isnan(next(iter(curves.values()))))
-        for index, (name, values) in enumerate(curves.items()):
-            target.plot(along.values, _loggable(values, scale), label=name, **_style(index))
+        for name, values in curves.items():
+            target.plot(along.values, _loggable(values, scale), label=name, **styles[name])
         if name_lines and (panel.row, panel.column + 1) not in page.panels:
-            _label_ends(target, page.geometry, curves, scale)
+            _label_ends(target, page.geometry, curves, styles, scale)
     page.label_axes(along.label, value_label)
     return page.figure
 
@@ -149,22 +153,26 @@ def _hatch_gaps(axes: Axes, along: Axis, blank: NDArray[np.bool_]) -> None:
 
 
 def _label_ends(
-    axes: Axes, geometry: Geometry, curves: Mapping[str, NDArray[np.float64]], scale: _Scale
+    axes: Axes,
+    geometry: Geometry,
+    curves: Mapping[str, NDArray[np.float64]],
+    styles: Mapping[str, Mapping[str, Any]],
+    scale: _Scale,
 ) -> None:
     """Write each species beside the end of its line, moved apart where they would overlap.
 
     A line that has left the panel at the bottom is named there with an arrow.
     """
-    wanted: list[tuple[float, int, str]] = []
-    for index, (name, values) in enumerate(curves.items()):
+    wanted: list[tuple[float, str]] = []
+    for name, values in curves.items():
         known = values[np.isfinite(values)]
         if known.size:
-            wanted.append((scale.fraction(float(known[-1])), index, name))
+            wanted.append((scale.fraction(float(known[-1])), name))
     wanted.sort()
     step = _LABEL_STEP / geometry.panel_height
-    places = spread_apart([min(max(place, 0.0), 1.0) for place, _, _ in wanted], step, 1.02)
-    for (true_place, index, name), place in zip(wanted, places, strict=True):
-        colour = _style(index)["color"]
+    places = spread_apart([min(max(place, 0.0), 1.0) for place, _ in wanted], step, 1.02)
+    for (true_place, name), place in zip(wanted, places, strict=True):
+        colour = styles[name]["color"]
         off = true_place < 0
         axes.annotate(
             chemical(name) + (" \N{DOWNWARDS ARROW}" if off else ""),
@@ -177,7 +185,14 @@ def _label_ends(
             fontsize=8,
             color=colour,
             annotation_clip=False,
-            arrowprops={"arrowstyle": "-", "color": colour, "linewidth": 0.6, "shrinkA": 1, "shrinkB": 0},
+            arrowprops={
+                "arrowstyle": "-",
+                "color": colour,
+                "linestyle": styles[name]["linestyle"],
+                "linewidth": 0.6,
+                "shrinkA": 1,
+                "shrinkB": 0,
+            },
         )
 
 

@@ -13,9 +13,11 @@ from matplotlib.collections import PolyCollection
 from matplotlib.colors import BoundaryNorm
 from matplotlib.contour import QuadContourSet
 from matplotlib.figure import Figure
+from matplotlib.transforms import Affine2D
 from numpy.typing import NDArray
 
 from gibbsmin.figures.axes import SI_UNITS, Axis, DisplayUnit, axes_of, plan_panels
+from gibbsmin.figures.label_places import place_labels
 from gibbsmin.figures.levels import Levels, choose_levels
 from gibbsmin.figures.look import HATCH, HATCH_COLOUR, INK, MAP_COLOURS
 from gibbsmin.figures.page import Geometry, Page, Words
@@ -25,8 +27,8 @@ from gibbsmin.figures.ticks import set_scale
 _ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.1, right=1.0)
 _PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.0)
 _FEW_POINTS = 150  # up to so many points a map marks each, so that its resolution can be seen
-_MOST_NUMBERED = 5  # contour lines with a number on them, in a panel
-_EDGE = 0.05  # share of a panel beside its frame where no number is written
+_NO_CHANGE = 0.02  # of the colour scale: what changes a field by less is no axis worth drawing
+_ENOUGH_FOR_AN_AXIS = 3
 _PALE = 0.5  # lightness above which a colour gets dark writing
 
 
@@ -49,31 +51,56 @@ def draw_map(
     Raises ValueError for a field that is not on a grid.
     """
     axes = axes_of(field, units)
-    spanned = [axis for axis in axes.values() if len(axis) > 1][:2]
     levels = choose_levels(np.asarray(field.values, dtype=float))
-    if len(spanned) < 2 or levels is None:
+    if levels is None or sum(len(axis) > 1 for axis in axes.values()) < 2:
         return None
-    across, up = spanned
-    plan = plan_panels(axis for axis in axes.values() if axis not in spanned)
+    across, up, dropped = _choose_axes(field, list(axes.values()), levels)
+    others = [axis for axis in axes.values() if axis not in (across, up, dropped)]
+    plan = plan_panels(others)
+    held = {} if dropped is None else {dropped.name: len(dropped) // 2}
     blank = ~np.isfinite(field.values)
     few = len(across) * len(up) <= _FEW_POINTS
+    notes = ["dots: computed points"] if few else []
+    if dropped is not None:
+        middle = dropped.at(held[dropped.name])
+        notes.append(
+            f"drawn at {middle}: {dropped.title} changes it by less than {100 * _NO_CHANGE:g} % of the scale"
+        )
     words = Words(
         title=title,
         subtitle=", ".join(filter(None, (subtitle, plan.fixed_words))),
-        notes=[*(["dots: computed points"] if few else []), *plan.notes],
+        notes=[*notes, *plan.notes],
         unsolved=int(blank.sum()),
         points=blank.size,
     )
     page = Page(plan, _PANELS if len(plan.panels) > 1 else _ONE_PANEL, words)
     areas = None
     for panel in plan.panels:
-        values = field.isel(panel.held).transpose(up.name, across.name).values.astype(float)
+        values = field.isel({**held, **panel.held}).transpose(up.name, across.name).values.astype(float)
         drawn = _draw_panel(page.panels[panel.row, panel.column], across, up, values, levels, few)
         areas = areas or drawn
     page.label_axes(across.label, up.label)
     if areas is not None:
         _draw_colour_scale(page, areas, levels, scale_label)
     return page.figure
+
+
+def _choose_axes(field: xr.DataArray, axes: list[Axis], levels: Levels) -> tuple[Axis, Axis, Axis | None]:
+    """The axis across, the axis up, and one that is left out because it makes no difference.
+
+    The first two with several values, temperature and pressure as a rule. Where pressure hardly changes the
+    field (the shift reaction has as many moles on both sides), a further axis takes its place.
+    """
+    across, up, *further = [axis for axis in axes if len(axis) > 1]
+    if not further or len(further[0]) < _ENOUGH_FOR_AN_AXIS:
+        return across, up, None
+    position = levels.position(np.asarray(field.values, dtype=float))
+    spread = position.max(axis=field.get_axis_num(up.name)) - position.min(axis=field.get_axis_num(up.name))
+    scale = float(levels.places[-1] - levels.places[0])
+    # A NaN compares false: with an unsolved point the map stays over the usual axes, and shows it.
+    if bool((spread < _NO_CHANGE * scale).all()):
+        return across, further[0], up
+    return across, up, None
 
 
 def _draw_panel(
@@ -124,16 +151,26 @@ def _norm(levels: Levels) -> BoundaryNorm:
 
 
 def _number_lines(axes: Axes, lines: QuadContourSet, levels: Levels, norm: BoundaryNorm) -> None:
-    numbered = [place for place in lines.levels if np.isclose(levels.numbered, place).any()]
-    while len(numbered) > _MOST_NUMBERED:
-        numbered = numbered[1::2]
+    numbered = levels.numbered_lines(np.asarray(lines.levels))
+    vertices = dict(zip(lines.levels, (path.vertices for path in lines.get_paths()), strict=True))
+    paths = [np.asarray(vertices[level]) for level in numbered]
+    size = np.asarray(axes.bbox.size) / axes.figure.dpi
+    inches = axes.transData + axes.transAxes.inverted() + Affine2D().scale(*size)
+    places = place_labels([inches.transform(path) for path in paths], size)
     colours = colormaps[MAP_COLOURS]
-    writing = ["black" if _lightness(colours(norm(place))) > _PALE else "white" for place in numbered]
-    texts = axes.clabel(lines, numbered, fontsize=6.5, colors=writing, fmt=levels.text, inline_spacing=2)
-    for text in list(texts):
-        place = axes.transAxes.inverted().transform(axes.transData.transform(text.get_position()))
-        if place.min() < _EDGE or place.max() > 1 - _EDGE:
-            text.remove()  # the frame would cut it
+    for level, place in zip(numbered, places, strict=True):
+        if place is None:
+            continue
+        writing = "black" if _lightness(colours(norm(level))) > _PALE else "white"
+        axes.clabel(
+            lines,
+            [level],
+            manual=[inches.inverted().transform(place)],
+            fontsize=6.5,
+            colors=writing,
+            fmt=levels.text,
+            inline_spacing=2,
+        )
 
 
 def _lightness(colour: tuple[float, float, float, float]) -> float:

@@ -16,6 +16,7 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Patch
 
 from gibbsmin.figures.axes import PanelPlan
+from gibbsmin.figures.labels import with_formulas
 from gibbsmin.figures.look import FAINT, HATCH, HATCH_COLOUR
 
 _CHARACTER = 0.066  # inches, mean width of a character of 8-point type
@@ -37,7 +38,7 @@ class Geometry:
 
 @dataclass(frozen=True)
 class Words:
-    """What is written around the panels: `title` in matplotlib markup, `subtitle` and `notes` literally."""
+    """What is written around the panels: `title` in matplotlib markup, the others as plain words."""
 
     title: str
     subtitle: str = ""
@@ -61,7 +62,7 @@ class Page:
         subtitle = _wrap(words.subtitle, room)
         notes = _wrap("; ".join(words.notes), self.width - 0.4)
         self._panel_titles = {
-            (panel.row, panel.column): _wrap(plan.title(panel), g.panel_width) for panel in plan.panels
+            (panel.row, panel.column): _wrap_parts(plan.title(panel), g.panel_width) for panel in plan.panels
         }
         lines = max(len(each) for each in self._panel_titles.values())
         self._gap_down = _GAP_DOWN + lines * _LINE
@@ -84,8 +85,7 @@ class Page:
         bottom = self.height - self._top - (row + 1) * g.panel_height - row * self._gap_down
         axes = self.add_box(left, bottom, g.panel_width, g.panel_height)
         axes.spines[["top", "right"]].set_visible(False)
-        title = "\n".join(self._panel_titles[row, column])
-        axes.set_title(title, pad=4, parse_math=False)
+        axes.set_title("\n".join(map(with_formulas, self._panel_titles[row, column])), pad=4)
         self.panels[row, column] = axes
 
     def add_box(self, left: float, bottom: float, width: float, height: float) -> Axes:
@@ -104,11 +104,11 @@ class Page:
         """Tick labels and titles on the outer panels only, so that small multiples stay light."""
         for (row, column), axes in self.panels.items():
             if column == 0:
-                axes.set_ylabel(y_label, parse_math=False)
+                axes.set_ylabel(with_formulas(y_label))
             else:
                 axes.tick_params(labelleft=False)
             if (row + 1, column) not in self.panels:
-                axes.set_xlabel(x_label, parse_math=False)
+                axes.set_xlabel(with_formulas(x_label))
             else:
                 axes.tick_params(labelbottom=False)
 
@@ -119,7 +119,7 @@ class Page:
             self.figure.text(left, 1 - down / self.height, line, fontsize=10, fontweight="bold")
             down += 0.19
         for line in subtitle:
-            self.figure.text(left, 1 - down / self.height, line, color=FAINT, parse_math=False)
+            self.figure.text(left, 1 - down / self.height, with_formulas(line), color=FAINT)
             down += _LINE
 
     def _write_foot(self, notes: list[str], words: Words) -> None:
@@ -129,11 +129,10 @@ class Page:
             self.figure.text(
                 1 - 0.12 / self.width,
                 up / self.height,
-                line,
+                with_formulas(line),
                 ha="right",
                 fontsize=7,
                 color=FAINT,
-                parse_math=False,
             )
             up += _LINE
         if words.unsolved:
@@ -159,5 +158,13 @@ class Page:
 
 
 def _wrap(text: str, width: float) -> list[str]:
-    """Lines of at most `width` inches of 8-point type."""
-    return textwrap.wrap(text, max(10, int(width / _CHARACTER)))
+    """Lines of at most `width` inches of 8-point type; an equals sign stays with what it stands between."""
+    glued = text.replace(" = ", "\N{NO-BREAK SPACE}=\N{NO-BREAK SPACE}")
+    lines = textwrap.wrap(glued, max(10, int(width / _CHARACTER)))
+    return [line.replace("\N{NO-BREAK SPACE}", " ") for line in lines]
+
+
+def _wrap_parts(parts: list[str], width: float) -> list[str]:
+    """Parts on one line where they fit, otherwise each on its own, wrapped further if need be."""
+    lines = _wrap(", ".join(parts), width)
+    return lines if len(lines) <= 1 else [line for part in parts for line in _wrap(part, width)]
