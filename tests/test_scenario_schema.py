@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import copy
+import json
 from collections.abc import Iterator
 from typing import Any
 
@@ -100,7 +101,7 @@ def test_structure_check_agrees_with_the_schema_and_nothing_else_escapes() -> No
     """Two routes to one verdict, an independent validator and ours; and only ScenarioError comes out."""
     seen = {True: 0, False: 0}
     for variant in variants():
-        text = yaml.safe_dump(variant, allow_unicode=True, sort_keys=False)
+        text = json.dumps(variant, indent=1)  # JSON is YAML, and several times as quick to write
         document = parse(text)
         _, faults = check_structure(document)
         valid = VALIDATOR.is_valid(document.data)
