@@ -386,7 +386,8 @@ class _Reader:
         if entry is None:
             return None
         own_state = entry.get("state")
-        allowed = ("g",) if state == "g" else ("cr", "l")
+        # Without a state of the species that makes sense, its forms are not judged by it.
+        allowed = {"g": ("g",), "condensed": ("cr", "l")}.get(str(state), ("g", "cr", "l"))
         if "state" in entry and own_state not in allowed:
             self.fault((*path, "state"), f"expected {' or '.join(allowed)}, found {_found(own_state)}")
         label = self.text((*path, "label"), entry["label"]) if "label" in entry else ""
