@@ -9,7 +9,6 @@ from typing import Any
 
 import jsonschema
 import pytest
-import yaml
 
 from gibbsmin.errors import ScenarioError
 from gibbsmin.scenario import parse_scenario
@@ -60,7 +59,7 @@ def paths(value: Any, path: tuple[Any, ...] = ()) -> Iterator[tuple[Any, ...]]:
 
 def variants() -> Iterator[Any]:
     """The full scenario with every value in turn replaced by junk, taken out, or given a strange key."""
-    whole = yaml.safe_load(FULL)
+    whole = parse(FULL).data
     for path in paths(whole):
         for junk in [*JUNK, "take out", "add"]:
             changed = copy.deepcopy(whole)
