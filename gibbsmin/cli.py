@@ -15,6 +15,7 @@ import sys
 import traceback
 from collections.abc import Callable, Sequence
 from pathlib import Path
+from textwrap import fill
 from typing import TYPE_CHECKING
 
 from gibbsmin.errors import FolderExistsError, GibbsminError
@@ -38,6 +39,7 @@ exit codes:
 Equilibrium is a limit, not a rate. Nothing here sizes a relief device or shows that a gas is safe.
 """
 
+_WIDTH = 100  # columns of what a run prints
 _SCENARIO = "a scenario file, or the name of a shipped example where no file of that name exists"
 
 
@@ -223,8 +225,9 @@ class _Figures:
         if self._written is None:
             return []
         names = list(dict.fromkeys(path.stem for path in self._written.files))
-        lines = [f"  figures/ ({len(names)}, each as PNG and SVG): {', '.join(names)}"] if names else []
-        return lines + [f"  not drawn: {name}: {why}" for name, why in self._written.left_out.items()]
+        lines = [f"figures/ ({len(names)}, each as PNG and SVG): {', '.join(names)}"] if names else []
+        lines += [f"not drawn: {name}: {why}" for name, why in self._written.left_out.items()]
+        return [fill(line, _WIDTH, initial_indent="  ", subsequent_indent="    ") for line in lines]
 
 
 def _files(folder: Path) -> list[str]:
