@@ -28,7 +28,7 @@ Verdict = Literal["", "ours", "theirs", "undecided"]
 
 THRESHOLD = 1e-6  # mole fraction; below it Cantera's stopping rule does not settle a species
 LEAST_TEMPERATURE_WITH_IONS = 2000.0  # K; below it Cantera's electron fractions were found wrong by decades
-SAME_ENERGY = 1e-12  # relative; nearer, the Gibbs energies of two compositions differ by rounding alone
+SAME_ENERGY = 1e-4  # relative; what errors of the balances that still pass as small can do to a Gibbs energy
 SAME_DATA = 1e-10  # largest accepted difference of the standard potentials, in units of RT and relative
 
 
@@ -88,6 +88,39 @@ def stationarity(
         difference = np.where(np.isinf(due), 1.0, np.abs(fraction - due) / np.where(larger > 0, larger, 1.0))
     counted = reachable & (larger > threshold)
     return float(difference[counted].max(initial=0.0))
+
+
+def imbalance(
+    formula_matrix: FloatArray, fed: FloatArray, fraction: FloatArray, threshold: float = THRESHOLD
+) -> float:
+    """How badly a composition keeps the balances of what was fed [1].
+
+    An error of 1e-10 in an element total looks small and yet moves a species of 1e-6 by 1e-4, where that
+    species is the small difference of large totals (oxygen at exact stoichiometry). So beside the elements
+    the balances of components
+    count: each total is written in the most abundant independent species, and the error taken relative to
+    that row. Rows smaller than `threshold` do not count.
+
+    Args:
+        formula_matrix: (E, S). fed: atoms fed in any unit, (E,). fraction: (S,).
+    """
+    fed = fed * (_atoms_counted(formula_matrix, fed, fraction) / np.abs(fed).sum())
+    components = abundant_components(formula_matrix, fraction)
+    rows = abundant_components(formula_matrix[:, components].T, np.ones(len(formula_matrix)))
+    square = formula_matrix[np.ix_(rows, components)]
+    C = in_components(formula_matrix, components)
+    worst = 0.0
+    for matrix, total in ((formula_matrix, fed), (C, np.linalg.solve(square, fed[rows]))):
+        size = np.abs(matrix) @ fraction
+        counted = np.maximum(size, np.abs(total)) > threshold
+        error = np.abs(matrix @ fraction - total)[counted] / np.maximum(size, np.abs(total))[counted]
+        worst = max(worst, float(error.max(initial=0.0)))
+    return worst
+
+
+def _atoms_counted(formula_matrix: FloatArray, fed: FloatArray, fraction: FloatArray) -> float:
+    """Moles of atoms of the elements fed, per mol of gas; charge, of which nothing is fed, stays out."""
+    return float((np.abs(formula_matrix) @ fraction)[fed != 0].sum())
 
 
 class Comparison:
@@ -196,7 +229,7 @@ class Comparison:
             return "ours", f"{found}; ours meets the equilibrium conditions, Cantera's does not{third}"
         if other_residual <= self._tolerance < residual:
             return "theirs", f"{found}; Cantera's meets the equilibrium conditions, ours does not{third}"
-        energy, other_energy = self._energy(potentials, ours), self._energy(potentials, other)
+        energy, other_energy = (self._energy(index, potentials, answer) for answer in (ours, other))
         found += f"; G/RT per mol of atoms: ours less Cantera's {energy - other_energy:.1e}"
         # Both conserve the elements and are stationary by their own species: the lower energy is right.
         if max(residual, other_residual) <= self._tolerance and not math.isclose(
@@ -221,21 +254,15 @@ class Comparison:
         return "; Cantera's solver vcs agrees with neither"
 
     def _residual(self, index: tuple[int, ...], potentials: FloatArray, fraction: FloatArray) -> float:
-        """Stationarity and element balance of one answer; the larger counts."""
+        """Stationarity and balance of one answer; the larger counts."""
         fed = self._fed_atoms(index)
-        found = self._A @ fraction
-        # Totals per mol of all atoms; the absolute values give charge, which may sum to zero, a size.
-        size = np.abs(self._A) @ fraction
-        scale = size[fed != 0].sum() / np.abs(fed).sum() if np.abs(fed).sum() else 1.0
-        with np.errstate(divide="ignore", invalid="ignore"):
-            balance = np.abs(found - fed * scale) / np.maximum(size, np.abs(fed) * scale)
-        return max(stationarity(self._A, potentials, fraction), float(np.nan_to_num(balance).max()))
+        return max(stationarity(self._A, potentials, fraction), imbalance(self._A, fed, fraction))
 
-    def _energy(self, potentials: FloatArray, fraction: FloatArray) -> float:
-        """G/RT per mol of atoms, which compares answers of different gas amounts."""
+    def _energy(self, index: tuple[int, ...], potentials: FloatArray, fraction: FloatArray) -> float:
+        """G/RT per mol of atoms fed, which compares answers of different gas amounts."""
         present = fraction > 0
         energy = fraction[present] @ (potentials[present] + np.log(fraction[present]))
-        return float(energy / (np.abs(self._A) @ fraction).sum())
+        return float(energy / _atoms_counted(self._A, self._fed_atoms(index), fraction))
 
     def _fed_atoms(self, index: tuple[int, ...]) -> FloatArray:
         atoms: FloatArray = self._feed_at(index) @ self._feed_atoms

@@ -11,7 +11,7 @@ import xarray as xr
 import gibbsmin
 from gibbsmin import crosscheck
 from gibbsmin.cantera_gas import CanteraGas, NoAnswerError, _silenced
-from gibbsmin.comparison import stationarity
+from gibbsmin.comparison import imbalance, stationarity
 from gibbsmin.crosscheck import choose_points, cross_check
 from gibbsmin.species import ThermoTable
 
@@ -110,6 +110,24 @@ def test_a_wrong_answer_of_the_other_program_is_judged_too(
     for point in result.points:
         assert point.verdict == "ours"
         assert "vcs agrees with ours" in point.reason
+
+
+def test_a_genuine_difference_at_exact_stoichiometry_is_judged_by_the_balance_of_components() -> None:
+    # Ethene with three oxygen at 1000 K and 100 Pa: Cantera 3.2.0 returns the 1.1e-6 of O2 wrong by 2e-4 (its
+    # stopping rule looks at element totals), while its own solver vcs agrees with ours.
+    library = gibbsmin.standard_library()
+    gases = library.gases(["C", "H", "O"], largest_carbon_number=2)
+    gas = gibbsmin.equilibrium({"C2H4": 1, "O2": 3}, 1000.0, 100.0, species=gases)
+    result = cross_check(gas, ThermoTable(gases))
+    (point,) = result.points
+    assert point.status == "differs"
+    assert not result.all_confirmed
+    assert point.species in ("O2", "H2", "CO")
+    assert 1e-5 < point.relative < 1e-3
+    assert point.residual < 1e-9
+    assert point.other_residual > 1e-5
+    assert point.verdict == "ours"
+    assert "vcs agrees with ours" in point.reason
 
 
 def test_points_without_an_answer_are_listed_with_the_reason(
@@ -222,6 +240,19 @@ def test_stationarity_sees_a_species_that_ought_to_be_there() -> None:
     assert stationarity(A, potentials, right) < 1e-15
     assert stationarity(A, potentials, np.array([1.0, 0.0])) == 1.0
     np.testing.assert_allclose(stationarity(A, potentials, right * [1, 1.001]), 1e-3, rtol=2e-3)
+
+
+def test_imbalance_is_measured_against_the_small_row_it_spoils() -> None:
+    A = np.array([[2.0, 2.0, 0.0], [1.0, 0.0, 2.0]])  # H2O, H2, O2
+    fed = np.array([2.0, 1.0])
+    exact = np.array([1.0, 2e-5, 1e-5])
+    assert imbalance(A, fed, exact / exact.sum()) < 1e-10
+    # a thousandth of the oxygen missing is 1e-8 of all oxygen, and still a thousandth
+    short = np.array([1.0, 2e-5, 0.999e-5])
+    np.testing.assert_allclose(imbalance(A, fed, short / short.sum()), 5e-4, rtol=0.01)
+    # rows below the threshold do not count
+    traces = np.array([1.0, 2e-9, 0.5e-9])
+    assert imbalance(A, fed, traces / traces.sum()) < 1e-8
 
 
 def test_results_carry_the_outcome_as_cf_flags(reformed: xr.Dataset) -> None:

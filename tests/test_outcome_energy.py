@@ -119,14 +119,14 @@ def test_heat_capacities_have_units_and_leave_unsolved_points_blank() -> None:
 
 
 def test_heat_capacities_of_many_points_do_not_depend_on_their_number() -> None:
-    T = np.linspace(600.0, 1500.0, 70)
-    p = np.geomspace(1e4, 1e7, 70)  # 4,900 points: more than are taken at once
+    T = np.linspace(600.0, 1500.0, 50)
+    p = np.geomspace(1e4, 1e7, 50)  # 2,500 points: more than are taken at once
     names = ["CH4", "H2O", "CO", "CO2", "H2"]
     whole = gibbsmin.equilibrium({"CH4": 1, "H2O": 2}, T, p, species=names)
-    part = whole.isel(temperature=[69], pressure=[69])
+    part = whole.isel(temperature=[49], pressure=[49])
     functions = table(names)
     np.testing.assert_allclose(
-        energy.heat_capacities(whole, functions)["heat_capacity_equilibrium"].values[69, 69],
+        energy.heat_capacities(whole, functions)["heat_capacity_equilibrium"].values[49, 49],
         energy.heat_capacities(part, functions)["heat_capacity_equilibrium"].values[0, 0],
         rtol=1e-11,
     )

@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
+from threadpoolctl import threadpool_limits
 
 from gibbsmin.outcome.response import composition_response
 
@@ -24,7 +25,7 @@ if TYPE_CHECKING:
 FloatArray = NDArray[np.float64]
 
 SECONDS_PER_HOUR = 3600.0
-_POINTS_AT_ONCE = 4096  # bounds the memory of the heat capacity to a few MB however large the map
+_POINTS_AT_ONCE = 1024  # their arrays stay in cache, and memory stays bounded however large the map
 
 
 @dataclass(frozen=True)
@@ -129,12 +130,13 @@ def heat_capacities(dataset: xr.Dataset, table: ThermoTable) -> xr.Dataset:
     h_RT = table.enthalpy_RT(T.values.ravel())
     gas_constants = np.array([each.gas_constant for each in table.species])
     shift = np.empty(len(n))
-    for start in range(0, len(n), _POINTS_AT_ONCE):
-        part = slice(start, start + _POINTS_AT_ONCE)
-        response, total = composition_response(table.formula_matrix, n[part], -h_RT[flat_T[part]])
-        xi = np.where(n[part] > 0, response - total[:, None], 0.0)
-        with np.errstate(invalid="ignore"):
-            shift[part] = ((n[part] * gas_constants) * xi**2).sum(axis=1) / n[part].sum(axis=1)
+    # Products of matrices this small take several times longer on several BLAS threads than on one.
+    with threadpool_limits(1, user_api="blas"), np.errstate(invalid="ignore"):
+        for start in range(0, len(n), _POINTS_AT_ONCE):
+            part = slice(start, start + _POINTS_AT_ONCE)
+            response, total = composition_response(table.formula_matrix, n[part], -h_RT[flat_T[part]])
+            xi = np.where(n[part] > 0, response - total[:, None], 0.0)
+            shift[part] = (n[part] * xi**2) @ gas_constants / n[part].sum(axis=1)
     reacting = frozen + xr.DataArray(shift.reshape(points), dims=amount.dims[:-1])
     basis = "per mol of equilibrium gas at constant pressure"
     return xr.Dataset(
