@@ -94,7 +94,7 @@ def test_a_radical_is_told_by_its_electrons_unless_the_record_says() -> None:
         ("    source: estimated\n", "", "14:5", "the key 'source' is missing"),
         ("source: estimated", "source: ''", "15:13", "expected text, found ''"),
         ("model: NASA-7", "model: NASA-8", "16:12", "expected NASA-9 or NASA-7, found 'NASA-8'"),
-        ("model: NASA-7", "model: NASA-9", "19:22", "expected 7 numbers, found a list of 5"),
+        ("[6.5, 1e-3, 0, 0, 0]", "[6.5]", "19:22", "expected 5 numbers, found a list of 1"),
         (
             "range: [250, 1000]",
             "range: [1000, 250]",

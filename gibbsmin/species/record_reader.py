@@ -84,7 +84,8 @@ def read_species(document: Document, path: YamlPath = ()) -> tuple[list[Species]
     if section is None:
         return [], reader.faults
     header = reader.header(path, section)
-    return reader.records((*path, "species"), section.get("species"), header), reader.faults
+    species = reader.records((*path, "species"), section.get("species"), header)
+    return species, sorted(reader.faults, key=lambda fault: (fault.line or 0, fault.column or 0))
 
 
 def read_header(document: Document) -> tuple[SourceHeader | None, list[Fault]]:
