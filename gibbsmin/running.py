@@ -30,6 +30,7 @@ def run(
     *,
     threads: int | None = None,
     progress: Callable[[int], None] | None = None,
+    check_progress: Callable[[int], None] | None = None,
 ) -> Outcome:
     """Solve every point of a scenario, derive the wanted results, and cross-check.
 
@@ -37,6 +38,7 @@ def run(
         scenario: as `gibbsmin.load_scenario` returns it.
         threads: number of threads; default the cores this process may use.
         progress: called with the number of points newly solved, as they are solved.
+        check_progress: the same for the points of the cross-check.
 
     Returns:
         The outcome: labelled results, cross-check, and what is needed to save them. Points that could not be
@@ -58,6 +60,7 @@ def run(
         extent=wanted.extent,
         sample_size=wanted.sample_size,
         tolerance=wanted.tolerance,
+        progress=check_progress,
     )
     dataset = check.add_to(dataset)
     dataset.attrs["title"] = scenario.title

@@ -14,7 +14,7 @@ import xarray as xr
 
 import gibbsmin
 from gibbsmin.errors import FolderExistsError, MissingPackageError
-from gibbsmin.outcome import Outcome, saving
+from gibbsmin.outcome import Outcome, composition, saving
 from gibbsmin.scenario import parse_scenario
 
 SCENARIO = """\
@@ -49,6 +49,10 @@ def test_a_saved_outcome_opens_with_one_line_and_is_the_same(outcome: Outcome, t
     folder = outcome.save(tmp_path / "out")
     with xr.open_dataset(folder / "results.nc") as opened:
         xr.testing.assert_identical(opened.load(), outcome.dataset)
+        # and the functions for derived results work on what was read back
+        np.testing.assert_array_equal(
+            composition.conversion(opened, "CO").values, outcome.dataset["conversion of CO"].values
+        )
 
 
 def test_the_same_outcome_gives_the_same_bytes(outcome: Outcome, tmp_path: Path) -> None:

@@ -167,8 +167,10 @@ def test_extent_and_tolerance_of_the_crosscheck_come_from_the_scenario() -> None
 
 def test_progress_counts_every_point() -> None:
     done: list[int] = []
-    gibbsmin.run(parse_scenario(REFORMER), progress=done.append)
+    checked: list[int] = []
+    gibbsmin.run(parse_scenario(REFORMER), progress=done.append, check_progress=checked.append)
     assert sum(done) == 12
+    assert sum(checked) == 12
 
 
 def test_the_summary_says_what_was_found(outcome: Outcome) -> None:

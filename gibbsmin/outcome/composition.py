@@ -24,13 +24,14 @@ def dry_mole_fractions(dataset: xr.Dataset, water: str = WATER) -> xr.DataArray:
 
     The denominator is summed over the other species, so it keeps its digits in nearly pure steam.
     """
-    fraction = dataset["mole_fraction"]
-    names = fraction["species"].values
-    if water not in names:
-        return _labelled(fraction.copy(), "dry_mole_fraction", "1", "mole fraction in the dry gas")
-    kept = fraction.where(fraction["species"] != water, 0.0).where(fraction.notnull())
-    dry = _quotient(kept, kept.sum("species"))
-    return _labelled(dry, "dry_mole_fraction", "1", "mole fraction in the dry gas")
+    fraction = dataset["mole_fraction"].copy()
+    if water in fraction["species"].values:
+        axis = fraction.get_axis_num("species")
+        fraction.loc[{"species": water}] *= 0.0  # not = 0: an unsolved point stays NaN
+        others = fraction.values.sum(axis=axis, keepdims=True)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            fraction.values /= others
+    return _labelled(fraction, "dry_mole_fraction", "1", "mole fraction in the dry gas")
 
 
 def conversion(dataset: xr.Dataset, species: str) -> xr.DataArray:

@@ -118,7 +118,7 @@ def heat_capacities(dataset: xr.Dataset, table: ThermoTable) -> xr.Dataset:
     Returns:
         `heat_capacity_frozen` and `heat_capacity_equilibrium`.
     """
-    amount = dataset["amount"]
+    amount = dataset["amount"].transpose(..., "species")
     points = amount.shape[:-1]
     n = amount.values.reshape(-1, amount.shape[-1])
     T = dataset["temperature"]
