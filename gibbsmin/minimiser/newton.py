@@ -220,8 +220,10 @@ def _directions(batch: Batch, sums: Sums, target: Floats, log_all: Floats) -> tu
         relative = C * np.exp(
             np.minimum(log_all[point][None, :] - batch.log_y[point][:, None], EXPONENT_LIMIT)
         )
-        log_scale = np.minimum(-batch.log_total[point] - batch.log_y[point], EXPONENT_LIMIT)
-        right = np.stack([batch.amounts[point] * np.exp(log_scale), relative.sum(axis=1)], axis=1)
+        with np.errstate(divide="ignore"):
+            log_target = np.log(np.abs(batch.amounts[point])) - batch.log_total[point] - batch.log_y[point]
+        relative_target = np.sign(batch.amounts[point]) * np.exp(np.minimum(log_target, EXPONENT_LIMIT))
+        right = np.stack([relative_target, relative.sum(axis=1)], axis=1)
         first[point], second[point] = np.linalg.solve(relative @ C.T, right).T
     return first, second
 
