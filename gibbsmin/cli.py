@@ -176,8 +176,13 @@ def _run(options: argparse.Namespace) -> int:
     tell(f"{file}: {scenario.points} points, {len(scenario.species)} species")
     from gibbsmin.running import run
 
-    with progress_bar(scenario.points, "solving", "points") as advance:
-        outcome = run(scenario, threads=options.threads, progress=advance)
+    check = scenario.cross_check
+    to_check = scenario.points if check.extent == "all" else min(check.sample_size, scenario.points)
+    with (
+        progress_bar(scenario.points, "solving", "points") as solved,
+        progress_bar(to_check, "checking", "points", at_once=False) as checked,
+    ):
+        outcome = run(scenario, threads=options.threads, progress=solved, check_progress=checked)
     tell(f"saving in {folder}")
     figures = _Figures(outcome, wanted=not options.no_figures)
     outcome.save(folder, overwrite=options.overwrite, further_files=figures.write)

@@ -6,7 +6,7 @@ import io
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from typing import TextIO
+from typing import NoReturn, TextIO
 
 
 def say(*lines: str) -> None:
@@ -26,24 +26,31 @@ def accept_any_text(*streams: TextIO) -> None:
 
 
 @contextmanager
-def progress_bar(total: int, what: str, unit: str) -> Iterator[Callable[[int], None]]:
+def progress_bar(
+    total: int, what: str, unit: str, *, at_once: bool = True
+) -> Iterator[Callable[[int], None]]:
     """A bar on standard error with rate and time left; silent where that is no terminal.
 
-    Gives a function that is told how many more `unit`s are done; it may be called from any thread.
+    Gives a function that is told how many more `unit`s are done; it may be called from any thread. The bar is
+    shown `at_once`, or else when the first of them is.
     """
     if not sys.stderr.isatty():
         yield lambda done: None
         return
     from tqdm import tqdm
 
-    bar = tqdm(
-        total=total, desc=what, unit=f" {unit}", unit_scale=total >= 10_000, leave=False, file=sys.stderr
-    )
+    def show() -> tqdm[NoReturn]:
+        return tqdm(total=total, desc=what, unit=f" {unit}", leave=False, file=sys.stderr)
+
+    bars = [show()] if at_once else []
+
+    def advance(done: int) -> None:
+        if not bars:
+            bars.append(show())
+        bars[0].update(done)
+
     try:
-        yield lambda done: _advance(bar, done)
+        yield advance
     finally:
-        bar.close()
-
-
-def _advance(bar: object, done: int) -> None:
-    bar.update(done)  # type: ignore[attr-defined]
+        for bar in bars:
+            bar.close()
