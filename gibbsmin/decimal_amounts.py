@@ -52,14 +52,16 @@ def element_amounts(feed: FloatArray, composition: FloatArray) -> tuple[FloatArr
 
 def element_amounts_of_fractions(
     feed: NDArray[Any], composition: FloatArray
-) -> tuple[FloatArray, FloatArray]:
-    """As `element_amounts`, for feeds given as `fractions.Fraction` (F, J).
+) -> tuple[NDArray[Any], FloatArray]:
+    """As `element_amounts`, for feeds given as `fractions.Fraction` (F, J), and exact for all of them.
 
-    Where no factor makes whole numbers below 2^53, the exact element amounts are rounded once.
+    Where a feed has no whole numbers below 2^53 (masses divided by molar masses), the element amounts come as
+    an object array of Fractions, which the minimiser takes as they are.
     """
     atoms = [[Fraction(float(value)) for value in row] for row in composition]
-    amounts = np.zeros((len(feed), composition.shape[1]))
+    amounts = np.empty((len(feed), composition.shape[1]), dtype=object)
     factors = np.ones(len(feed))
+    whole = True
     for i, row in enumerate(feed):
         exact = [
             sum(
@@ -72,12 +74,12 @@ def element_amounts_of_fractions(
         # as small as they get: 3600 : 7200 becomes 1 : 2
         common = math.gcd(*(int(value * denominator) for value in exact)) or 1
         factor = Fraction(denominator, common)
-        whole = [value * factor for value in exact]
-        if max(map(abs, whole), default=Fraction(0)) < LARGEST_WHOLE_NUMBER:
-            amounts[i], factors[i] = [float(value) for value in whole], float(factor)
+        scaled = [value * factor for value in exact]
+        if max(map(abs, scaled), default=Fraction(0)) < LARGEST_WHOLE_NUMBER:
+            amounts[i], factors[i] = scaled, float(factor)
         else:
-            amounts[i] = [float(value) for value in exact]
-    return amounts, factors
+            amounts[i], whole = exact, False
+    return (amounts.astype(np.float64) if whole else amounts), factors
 
 
 def _size(feed: FloatArray, composition: FloatArray) -> FloatArray:

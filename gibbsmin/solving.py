@@ -43,8 +43,8 @@ class Conditions:
         feed_species: the J species of the feed.
         feed: amounts [`amount_unit`], dimensions (*feed dimensions, "feed_species").
         feed_composition: atoms per molecule of the feed's species [1], (J, E).
-        element_amounts: (F, E) in the order of `table.elements`, times `factor`; F counts the feed
-            dimensions' points in C order.
+        element_amounts: (F, E), doubles or Fractions, in the order of `table.elements`, times `factor`; F
+            counts the feed dimensions' points in C order.
         factor: (F,), see `gibbsmin.decimal_amounts`.
         temperature: K. pressure: Pa.
         coordinates: further coordinates for the data set.
@@ -55,7 +55,7 @@ class Conditions:
     feed_species: tuple[Species, ...]
     feed: Labelled
     feed_composition: FloatArray
-    element_amounts: FloatArray
+    element_amounts: NDArray[Any]
     factor: FloatArray
     temperature: Labelled
     pressure: Labelled

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+from fractions import Fraction
+
 import numpy as np
 import pytest
 
@@ -153,6 +156,36 @@ grid:
     assert (
         float(dataset["mole_fraction"].sel(species="O2")[0]) < 1e-19
     )  # doubles taken as they are leave 1e-17
+
+
+def test_a_stoichiometric_feed_given_by_mass_stays_exact() -> None:
+    # Molar masses put seven-digit numbers into every denominator: no common factor makes them whole doubles.
+    text = """\
+title: Stoichiometric by mass
+feed:
+  fuel: {amounts: {CH4: 16.1 kg/h, C2H6: 3.3 kg/h, C3H8: 1.7 kg/h}}
+  water: {amounts: {H2O: 0.37 kg/h}}
+  oxygen: {amounts: {O2: 1 kg/h}}
+species:
+  gases: [CH4, C2H6, C3H8, O2, CO2, H2O, CO, H2]
+grid:
+  temperature: 400 K
+  pressure: 1 bar
+  further axes:
+    oxygen to what the fuel needs:
+      ratio: {of: {moles of: O2}, to: {moles of: [CH4]}, by changing: oxygen}
+      values: [1]
+"""
+    scenario = parse_scenario(text)
+    fed = {name: amounts.item() for name, amounts in scenario.exact_feed_amounts().items()}
+    needed = 2 * fed["CH4"] + Fraction(7, 2) * fed["C2H6"] + 5 * fed["C3H8"]
+    ratio = needed / fed["CH4"]
+    exact = replace(scenario.further_axes[0], values=(float(ratio),), exact_values=(ratio,))
+    outcome = gibbsmin.run(replace(scenario, further_axes=(exact,)))
+    oxygen = float(outcome.dataset["mole_fraction"].sel(species="O2").squeeze())
+    assert outcome.all_solved
+    assert outcome.all_confirmed
+    assert 0 < oxygen < 1e-19  # rounded element amounts leave 1e-17 of O2, or of H2
 
 
 def test_extent_and_tolerance_of_the_crosscheck_come_from_the_scenario() -> None:
