@@ -75,7 +75,7 @@ def optimality_gap(
     excess = highest + np.log(np.exp(level - highest[:, None]).sum(axis=1))
     reach = b @ _shift_weight(np.ascontiguousarray(A))
     # a negative sum is rounding: no composition lies below the minimum
-    return np.maximum(above_dual + imbalance + np.maximum(excess, 0.0) * reach, 0.0)
+    return np.asarray(np.maximum(above_dual + imbalance + np.maximum(excess, 0.0) * reach, 0.0))
 
 
 def _shift_weight(A: Floats) -> Floats:

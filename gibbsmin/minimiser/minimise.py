@@ -7,28 +7,19 @@ together as long as they share their components.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import Any
-
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import ArrayLike
 
 from gibbsmin.errors import ProblemError
-from gibbsmin.minimiser.certificate import optimality_gap
-from gibbsmin.minimiser.components import Amounts, Floats, FormulaSystem, Indices, exact, formula_system
-from gibbsmin.minimiser.newton import STEP_LIMIT, Batch, minimise_batches
+from gibbsmin.minimiser.components import Amounts, Floats, Indices, exact
+from gibbsmin.minimiser.newton import Batch, minimise_batches
+from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, Answers, Posed, alike
 from gibbsmin.minimiser.result import Minimum, Status
 from gibbsmin.minimiser.start import estimates
 from gibbsmin.minimiser.vertex import UnboundedError, nearest_balanced
 
 CHUNK = 1024
 """Points solved together: enough to amortise the calls, few enough for their arrays to stay in cache."""
-
-BALANCE_TOLERANCE = 1e-12
-"""Element amounts may miss what the species can hold, or what a dependent row asks, by this part: rounding of the feed."""
-
-GAP_TOLERANCE = 1e-10
-"""A point is solved if its gap is at most this part of the sum of |element amounts|."""
 
 
 def minimise(formula_matrix: ArrayLike, element_amounts: ArrayLike, potentials: ArrayLike) -> Minimum:
@@ -63,52 +54,16 @@ def minimise(formula_matrix: ArrayLike, element_amounts: ArrayLike, potentials: 
     """
     A, b, c = _checked(formula_matrix, element_amounts, potentials)
     points = len(c)
-    result = _Fields.blank(points, *A.shape)
+    answers = Answers.blank(points, *A.shape)
     try:
         for first in range(0, points, CHUNK):
             chunk = np.arange(first, min(first + CHUNK, points))
-            _solve_chunk(A, b, c, chunk, result)
+            _solve_chunk(A, b, c, chunk, answers)
     except UnboundedError:
         raise ProblemError(
             "some combination of species can be made from nothing: check the signs of the formula matrix"
         ) from None
-    return result.minimum()
-
-
-@dataclass
-class _Fields:
-    """Result arrays while they are being filled."""
-
-    amounts: Floats
-    log_x: Floats
-    pi: Floats
-    steps: Indices
-    status: NDArray[np.int8]
-    gap: Floats
-    residual: Floats
-
-    @classmethod
-    def blank(cls, points: int, elements: int, species: int) -> _Fields:
-        return cls(
-            np.full((points, species), np.nan),
-            np.full((points, species), np.nan),
-            np.full((points, elements), np.nan),
-            np.zeros(points, dtype=np.intp),
-            np.full(points, Status.INFEASIBLE, dtype=np.int8),
-            np.full(points, np.nan),
-            np.full(points, np.nan),
-        )
-
-    def minimum(self) -> Minimum:
-        return Minimum(
-            self.amounts,
-            self.log_x,
-            self.pi,
-            self.steps.astype(np.int64),
-            self.status,
-            self.gap,
-            self.residual,
-        )
+    return answers.minimum()
 
 
 def _checked(
@@ -139,73 +94,39 @@ def _checked(
     return A, np.broadcast_to(b, (points, b.shape[1])), np.broadcast_to(c, (points, c.shape[1]))
 
 
-def _solve_chunk(A: Floats, b: Amounts, c: Floats, chunk: Indices, result: _Fields) -> None:
-    """Sort the points of a chunk by what makes them special; each sort is then solved as a whole."""
+def _solve_chunk(A: Floats, b: Amounts, c: Floats, chunk: Indices, answers: Answers) -> None:
+    """Sort the points of a chunk by the elements they lack; each sort is then solved as a whole."""
     floats = b[chunk].astype(np.float64)
     finite = np.isfinite(floats).all(axis=1) & np.isfinite(c[chunk]).all(axis=1)
-    result.status[chunk[~finite]] = Status.NOT_FINITE
+    answers.status[chunk[~finite]] = Status.NOT_FINITE
     empty = finite & ~floats.any(axis=1)
-    result.status[chunk[empty]] = Status.EMPTY
+    answers.status[chunk[empty]] = Status.EMPTY
     chunk, floats = chunk[finite & ~empty], floats[finite & ~empty]
     absent = (floats == 0.0) & (A >= 0.0).all(axis=1)
-    system = formula_system(A)
-    for pattern, points in _alike(absent, chunk):
+    for pattern, points in alike(absent, chunk):
         kept = np.flatnonzero(~(A[pattern] > 0.0).any(axis=0))
         if kept.size:
-            _solve_alike(A, system, kept, b, c, points, result)
+            _solve_alike(A, kept, b, c, points, answers)
 
 
-def _alike(patterns: NDArray[Any], points: Indices) -> list[tuple[NDArray[Any], Indices]]:
-    if not len(points):
-        return []
-    if (patterns == patterns[0]).all():
-        return [(patterns[0], points)]
-    unique, which = np.unique(patterns, axis=0, return_inverse=True)
-    return [(pattern, points[which.ravel() == k]) for k, pattern in enumerate(unique)]
+def _solve_alike(A: Floats, kept: Indices, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
+    """Solve points with the same species that may be present; those whose balance excludes more are posed anew."""
+    for posed, members in Posed.of(A, kept, b[points]):
+        if members.size:
+            _solve_posed(posed, b, c, points[members], answers)
 
 
-def _solve_alike(
-    A: Floats, whole: FormulaSystem, kept: Indices, b: Amounts, c: Floats, points: Indices, result: _Fields
-) -> None:
-    """Solve points with the same species that may be present.
-
-    Where element rows depend on each other, those of the scarcest elements are used: the balance of a plentiful
-    element says nothing about a scarce one below the rounding of its amount.
-    """
-    columns = tuple(kept.tolist())
-    system = whole if len(kept) == whole.n_species else whole.restricted(columns)
-    if not system.dependent_rows:
-        _solve_system(A, whole, system, kept, b, c, points, result)
-        return
-    order = np.argsort(np.abs(b[points].astype(np.float64)), axis=1, kind="stable")
-    for row_order, members in _alike(order, points):
-        system = whole.restricted(columns, tuple(row_order.tolist()))
-        _solve_system(A, whole, system, kept, b, c, members[_consistent(system, b[members])], result)
-
-
-def _solve_system(
-    A: Floats,
-    whole: FormulaSystem,
-    system: FormulaSystem,
-    kept: Indices,
-    b: Amounts,
-    c: Floats,
-    points: Indices,
-    result: _Fields,
-) -> None:
-    """Estimate, iterate, fill in; points whose balance excludes more species are posed anew without these."""
-    if not len(points):
-        return
-    independent = b[np.ix_(points, system.rows)]
-    costs = c[np.ix_(points, kept)]
-    starts, impossible = estimates(system, independent, costs)
-    if impossible.size:
-        _retry_nearest(A, whole, system, kept, b, c, points[impossible], result)
+def _solve_posed(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
+    independent = b[np.ix_(points, posed.system.rows)]
+    costs = c[np.ix_(points, posed.kept)]
+    starts, impossible = estimates(posed.system, independent, costs)
+    for point in points[impossible]:
+        _retry_nearest(posed, b, c, point, answers)
     batches = []
     for start in starts:
         excluding = start.excluded.any(axis=1)
-        for pattern, members in _alike(start.excluded[excluding], np.flatnonzero(excluding)):
-            _solve_alike(A, whole, kept[~pattern], b, c, points[start.points[members]], result)
+        for pattern, members in alike(start.excluded[excluding], np.flatnonzero(excluding)):
+            _solve_alike(posed.A, posed.kept[~pattern.astype(bool)], b, c, points[start.points[members]], answers)
         full = np.flatnonzero(~excluding)
         if full.size:
             at = start.points[full]
@@ -214,84 +135,17 @@ def _solve_system(
                 Batch.begin(start.components, at, m, start.log_y[full], start.total[full], costs[at])
             )
     for batch in minimise_batches(batches, independent, costs):
-        _fill(
-            A, system, kept, batch, b[points[batch.points]], costs[batch.points], points[batch.points], result
-        )
+        posed.finish(batch, b[points], costs, points, answers)
 
 
-def _consistent(system: FormulaSystem, b: Amounts) -> NDArray[np.bool_]:
-    """(n,) whether the dependent element rows agree with the independent ones."""
-    agreed = np.ones(len(b), dtype=bool)
-    if not system.dependent_rows:
-        return agreed
-    floats = b.astype(np.float64)
-    for row, weights in system.dependent_rows:
-        terms = floats[:, system.rows] * np.array([float(weight) for weight in weights])
-        size = np.abs(terms).sum(axis=1) + np.abs(floats[:, row])
-        agreed &= np.abs(terms.sum(axis=1) - floats[:, row]) <= BALANCE_TOLERANCE * size
-    return agreed
-
-
-def _retry_nearest(
-    A: Floats,
-    whole: FormulaSystem,
-    system: FormulaSystem,
-    kept: Indices,
-    b: Amounts,
-    c: Floats,
-    points: Indices,
-    result: _Fields,
-) -> None:
-    """Points just outside what the species can hold, by rounding of their element amounts."""
-    for point in points:
-        balanced = nearest_balanced(system, b[point, system.rows], BALANCE_TOLERANCE)
-        if balanced is None:
-            continue
-        corrected = np.array([[exact(value) for value in b[point]]], dtype=object)
-        corrected[0, system.rows] = balanced
-        alone = _Fields.blank(1, *A.shape)
-        _solve_alike(A, whole, kept, corrected, c[point : point + 1], np.array([0]), alone)
-        for name in vars(result):
-            getattr(result, name)[point] = getattr(alone, name)[0]
-
-
-def _fill(
-    A: Floats,
-    system: FormulaSystem,
-    kept: Indices,
-    batch: Batch,
-    b: Amounts,
-    costs: Floats,
-    points: Indices,
-    result: _Fields,
-) -> None:
-    """Amounts, potentials and the proof of finished points."""
-    log_x = batch.log_mole_fractions()
-    amounts = np.exp(log_x + batch.log_total[:, None])
-    floats = b.astype(np.float64)
-    inside = A[:, kept]
-    pi = np.full((len(points), len(A)), np.nan)
-    pi[:, inside.any(axis=1)] = 0.0
-    components = batch.components
-    known = batch.log_y + costs[:, components.columns]
-    pi[:, system.rows] = np.linalg.solve(inside[np.ix_(system.rows, components.columns)].T, known.T).T
-    gap = optimality_gap(inside, floats, costs, amounts, np.nan_to_num(pi), log_mole_fractions=log_x)
-    turnover = np.maximum(amounts @ np.abs(inside).T, np.abs(floats))
-    missed = np.abs(amounts @ inside.T - floats)
-    residual = np.divide(missed, turnover, where=turnover > 0.0, out=np.zeros_like(missed)).max(axis=1)
-    proved = (gap <= GAP_TOLERANCE * np.abs(floats).sum(axis=1)) & (residual <= BALANCE_TOLERANCE)
-    stopped = batch.steps >= STEP_LIMIT
-    result.status[points] = np.where(
-        stopped, Status.STEP_LIMIT, np.where(proved, Status.SOLVED, Status.NOT_PROVED)
-    )
-    result.steps[points] = batch.steps
-    result.gap[points] = gap
-    result.residual[points] = residual
-    solved = points[proved & ~stopped]
-    for target, fill in ((result.amounts, 0.0), (result.log_x, -np.inf)):
-        target[solved] = fill
-    inside_solved = np.ix_(solved, kept)
-    keep = proved & ~stopped
-    result.amounts[inside_solved] = amounts[keep]
-    result.log_x[inside_solved] = log_x[keep]
-    result.pi[solved] = pi[keep]
+def _retry_nearest(posed: Posed, b: Amounts, c: Floats, point: np.intp, answers: Answers) -> None:
+    """A point whose element amounts lie just outside what the species can hold, by rounding."""
+    balanced = nearest_balanced(posed.system, b[point, posed.system.rows], BALANCE_TOLERANCE)
+    if balanced is None:
+        return
+    corrected = np.array([[exact(value) for value in b[point]]], dtype=object)
+    corrected[0, posed.system.rows] = balanced
+    alone = Answers.blank(1, *posed.A.shape)
+    _solve_alike(posed.A, posed.kept, corrected, c[point : point + 1], np.array([0]), alone)
+    for name, values in vars(answers).items():
+        values[point] = getattr(alone, name)[0]

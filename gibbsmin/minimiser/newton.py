@@ -111,8 +111,16 @@ class Batch:
         )
 
     def take(self, index: Indices) -> Batch:
-        arrays = (self.amounts, self.log_y, self.log_total, self.offsets, self.steps, self.bracket)
-        return Batch(self.components, self.points[index], *(array[index] for array in arrays))
+        return Batch(
+            self.components,
+            self.points[index],
+            self.amounts[index],
+            self.log_y[index],
+            self.log_total[index],
+            self.offsets[index],
+            self.steps[index],
+            self.bracket[index],
+        )
 
     @classmethod
     def joined(cls, batches: list[Batch]) -> Batch:
@@ -232,7 +240,7 @@ def _ratio_of_totals(batch: Batch, sums: Sums, to_target: Floats, to_balance: Fl
     """(n,) factor by which N changes in this step."""
     by_target = np.einsum("ni,ni->n", sums.balance, to_target)
     by_balance = np.einsum("ni,ni->n", sums.balance, to_balance)
-    ratio = (by_target - np.exp(-sums.shift) + sums.total) / by_balance
+    ratio: Floats = (by_target - np.exp(-sums.shift) + sums.total) / by_balance
     ratio = np.clip(ratio, 1.0 / TOTAL_CHANGE, TOTAL_CHANGE)
     nested = batch.steps >= JOINT_STEPS
     if nested.any():
@@ -286,7 +294,7 @@ def _long_steps(
     return length, np.abs(change).max(axis=1) * length
 
 
-def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Floats]:
+def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Indices]:
     """Positions of points whose components should change, and for each (position of component, species)."""
     r = len(batch.components.columns)
     diagonal = sums.packed[:, [i * (i + 3) // 2 for i in range(r)]]

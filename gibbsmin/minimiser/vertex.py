@@ -117,7 +117,7 @@ def _leaving(visit: _Visit, amounts: Floats, b: Amounts, entering: int) -> Indic
     tied = ratios <= least * (1.0 + NEAR_TIE)
     crowded = tied.sum(axis=1) > 1
     if not crowded.any():
-        return candidates[np.argmax(tied, axis=1)]
+        return np.asarray(candidates[np.argmax(tied, axis=1)])
     for point in np.flatnonzero(crowded & (least[:, 0] > 0.0)):
         near = np.flatnonzero(tied[point])
         exact = components.exact_ratios(b[point], candidates[near], entering)
@@ -126,7 +126,7 @@ def _leaving(visit: _Visit, amounts: Floats, b: Amounts, entering: int) -> Indic
     keys = components.C[np.ix_(candidates, visit.first.columns)] / column[candidates][:, None]
     rank = np.empty(len(candidates), dtype=np.intp)
     rank[np.lexsort(np.round(keys, 9).T[::-1])] = np.arange(len(candidates))
-    return candidates[np.argmin(np.where(tied, rank, len(candidates)), axis=1)]
+    return np.asarray(candidates[np.argmin(np.where(tied, rank, len(candidates)), axis=1)])
 
 
 def _merged(queue: list[_Visit]) -> list[_Visit]:
