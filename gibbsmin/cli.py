@@ -49,12 +49,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
     given = list(sys.argv[1:] if arguments is None else arguments)
     try:
         options = build_parser(next((word for word in given if word in _COMMANDS), None)).parse_args(given)
-    except SystemExit as exit_:  # argparse has printed help or its complaint
-        return exit_.code if isinstance(exit_.code, int) else WRONG_REQUEST
-    try:
         code: int = options.command(options)
         sys.stdout.flush()
         return code
+    except SystemExit as exit_:  # argparse has printed help or its complaint
+        return exit_.code if isinstance(exit_.code, int) else WRONG_REQUEST
     except KeyboardInterrupt:
         say("stopped")
         return STOPPED
@@ -63,7 +62,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return PIPE_CLOSED
     except (GibbsminError, OSError, MemoryError) as error:
-        if options.debug:
+        if "--debug" in given:
             traceback.print_exc()
         say(*_in_words(error))
         return WRONG_REQUEST

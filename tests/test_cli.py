@@ -21,6 +21,8 @@ from gibbsmin.cli import main
 from gibbsmin.examples import examples
 from gibbsmin.outcome import Outcome
 
+ROOT = Path(__file__).parents[1]  # so that a checkout that is not installed is found by other processes
+
 SMALL = """\
 title: Shift of a made-up gas
 feed:
@@ -212,6 +214,30 @@ def test_ctrl_c_ends_without_a_traceback_and_leaves_nothing(
     out, err = capsys.readouterr()
     assert (out, err) == ("", "stopped\n")
     assert [path.name for path in small.parent.iterdir()] == ["small.yaml"]
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="Windows sends no interrupt to one process alone")
+def test_an_interrupt_while_libraries_load_ends_as_cleanly(small: Path) -> None:
+    code = (
+        "import os, signal, sys, importlib.abc\n"
+        "class Finder(importlib.abc.MetaPathFinder):\n"
+        "    def find_spec(self, name, path, target=None):\n"
+        "        if name == 'gibbsmin.running': os.kill(os.getpid(), signal.SIGINT)\n"
+        "sys.meta_path.insert(0, Finder())\n"
+        "from gibbsmin.cli import main\n"
+        "sys.exit(main(['run', *sys.argv[1:]]))"
+    )
+    command = [sys.executable, "-c", code, str(small), "--out", str(small.parent / "results")]
+    done = subprocess.run(command, check=False, capture_output=True, cwd=ROOT)
+    assert (done.returncode, done.stdout, done.stderr.decode().split()) == (130, b"", ["stopped"])
+    assert [path.name for path in small.parent.iterdir()] == ["small.yaml"]
+
+
+def test_a_run_without_key_species_draws_the_most_abundant(small: Path) -> None:
+    small.write_text(SMALL.replace("  key species: [H2, CO]\n", ""), encoding="utf-8")
+    assert main(["run", "small.yaml"]) == 0
+    drawn = {path.stem for path in Path("small-results/figures").iterdir()}
+    assert {"map_CO2", "map_H2", "map_H2O", "map_N2"} <= drawn
 
 
 def test_a_defect_is_called_one(
@@ -426,11 +452,16 @@ def test_help_loads_no_numerical_library() -> None:
         "import sys; from gibbsmin.cli import main; main(['--help']);"
         "sys.exit(any(name in sys.modules for name in ('numpy', 'xarray', 'pint', 'matplotlib', 'cantera')))"
     )
-    assert subprocess.run([sys.executable, "-c", code], check=False, capture_output=True).returncode == 0
+    assert (
+        subprocess.run([sys.executable, "-c", code], check=False, capture_output=True, cwd=ROOT).returncode
+        == 0
+    )
 
 
 def test_the_package_is_a_command() -> None:
-    done = subprocess.run([sys.executable, "-m", "gibbsmin", "--version"], check=False, capture_output=True)
+    done = subprocess.run(
+        [sys.executable, "-m", "gibbsmin", "--version"], check=False, capture_output=True, cwd=ROOT
+    )
     assert done.returncode == 0
     assert done.stdout.decode().strip() == f"gibbsmin {gibbsmin.__version__}"
 
@@ -448,7 +479,9 @@ def test_a_terminal_without_utf_8_gets_question_marks_not_a_failure(
 
 def test_a_reader_that_stops_reading_is_no_error() -> None:
     code = "import sys; from gibbsmin.cli import main; sys.exit(main(['scenarios', 'steam_reforming']))"
-    process = subprocess.Popen([sys.executable, "-c", code], stdout=subprocess.PIPE, stderr=subprocess.PIPE)
+    process = subprocess.Popen(
+        [sys.executable, "-c", code], stdout=subprocess.PIPE, stderr=subprocess.PIPE, cwd=ROOT
+    )
     assert process.stdout is not None
     assert process.stderr is not None
     process.stdout.close()

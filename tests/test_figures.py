@@ -608,4 +608,5 @@ def test_a_title_is_taken_literally(tmp_path: Path) -> None:
 
 def test_drawing_leaves_the_global_state_of_matplotlib_alone() -> None:
     code = "import sys, gibbsmin.figures; sys.exit('matplotlib.pyplot' in sys.modules)"
-    assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
+    root = Path(__file__).parents[1]  # found there even if not installed
+    assert subprocess.run([sys.executable, "-c", code], check=False, cwd=root).returncode == 0

@@ -27,6 +27,8 @@ def write_outcome_figures(
 
 def figure_options(outcome: Outcome) -> dict[str, Any]:
     """The options of `gibbsmin.figures.figures_of` that belong to an outcome."""
+    from gibbsmin.figures import key_species
+
     scenario, dataset = outcome.scenario, outcome.dataset
     wanted = scenario.results
     asked: set[str] = set()
@@ -40,7 +42,7 @@ def figure_options(outcome: Outcome) -> dict[str, Any]:
     ]
     known = set(map(str, dataset["species"].values))
     return {
-        "key": [name for name in wanted.key_species if name in known],
+        "key": key_species(dataset, [name for name in wanted.key_species if name in known]),
         "quantities": quantities,
         "dry": wanted.dry_basis,
         "units": display_units(scenario),
