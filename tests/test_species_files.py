@@ -19,9 +19,9 @@ from gibbsmin.shipped_files import species_data_folder
 from gibbsmin.species import IndexEntry, Species, standard_library
 from gibbsmin.species.build_index import index_text
 from gibbsmin.species.elements import hill_order, molar_mass
-from gibbsmin.species.library import INDEX_FILE
 from gibbsmin.species.radicals import REACTIVE, STABLE, has_odd_electron, is_radical
 from gibbsmin.species.record import plain_words
+from gibbsmin.species.record_store import INDEX_FILE
 from gibbsmin.strict_yaml import parse_file
 
 FOLDER = species_data_folder()

@@ -15,9 +15,10 @@ from typing import Any
 
 from gibbsmin.errors import Fault, SpeciesDataError
 from gibbsmin.shipped_files import species_data_folder
-from gibbsmin.species.library import INDEX_FILE, IndexEntry
+from gibbsmin.species.library import IndexEntry
 from gibbsmin.species.record import Species, plain_words
 from gibbsmin.species.record_reader import read_species
+from gibbsmin.species.record_store import INDEX_FILE
 from gibbsmin.strict_yaml import parse
 
 __all__ = ["index_text", "main"]
@@ -110,7 +111,7 @@ def main() -> int:
     except SpeciesDataError as error:
         print(error, file=sys.stderr)
         return 1
-    (folder / INDEX_FILE).write_text(text, encoding="utf-8")
+    (folder / INDEX_FILE).write_text(text, encoding="utf-8", newline="\n")
     return 0
 
 

@@ -15,7 +15,7 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterable, Iterator, Mapping
 from functools import lru_cache
 from os import PathLike
 from pathlib import Path
@@ -32,18 +32,16 @@ from gibbsmin.shipped_files import species_data_folder
 from gibbsmin.species.elements import ATOMIC_NUMBERS, hill_formula
 from gibbsmin.species.formula import STATE_SYMBOLS, parse_formula
 from gibbsmin.species.record import Species, plain_words
-from gibbsmin.species.record_reader import SourceHeader, read_file, read_header, read_records, read_species
-from gibbsmin.strict_yaml import Document, parse
+from gibbsmin.species.record_reader import read_file, read_species
+from gibbsmin.species.record_store import INDEX_FILE, REBUILD, Place, RecordStore
+from gibbsmin.strict_yaml import Document
 
-__all__ = ["INDEX_FILE", "IndexEntry", "SpeciesLibrary", "standard_library"]
-
-INDEX_FILE = "index.json"
+__all__ = ["IndexEntry", "SpeciesLibrary", "standard_library"]
 
 SUGGESTIONS = 4
 """Names offered when a look-up fails."""
 
 _IN_PARENTHESES = re.compile(r"(?P<base>.+?)\s*\((?P<inside>[^()]+)\)\Z")
-_REBUILD = "run `python -m gibbsmin.species.build_index`"
 
 
 class IndexEntry(NamedTuple):
@@ -81,7 +79,7 @@ class SpeciesLibrary:
     """A set of species that can be looked up. Made by `standard_library`, extended by the `with_` methods."""
 
     def __init__(
-        self, entries: Iterable[IndexEntry], records: _Records, added: Mapping[str, Species]
+        self, entries: Iterable[IndexEntry], records: RecordStore, added: Mapping[str, Species]
     ) -> None:
         self._entries = {entry.name: entry for entry in entries}
         self._records = records
@@ -350,59 +348,6 @@ class SpeciesLibrary:
         return self._by_composition
 
 
-class _Records:
-    """Reads single records out of the species files, by the places that the index states."""
-
-    def __init__(
-        self, folder: Path, files: Sequence[tuple[str, int, int]], places: Mapping[str, _Place]
-    ) -> None:
-        self.folder = folder
-        self.files = files  # path, size in bytes, size of the header in bytes
-        self.places = places
-        self.loaded: dict[str, Species] = {}
-        self.opened: dict[int, tuple[bytes, SourceHeader]] = {}
-
-    def load(self, name: str) -> Species:
-        species = self.loaded.get(name)
-        if species is None:
-            place = self.places[name]
-            content, header = self._file(place.file)
-            file = self.files[place.file][0]
-            text = content[place.offset : place.offset + place.length].decode("utf-8")
-            document = parse(text, file, first_line=place.line)
-            found, faults = read_records(document, header)
-            if document.faults or faults:
-                raise SpeciesDataError((*document.faults, *faults))
-            if len(found) != 1 or found[0].name != name:
-                raise SpeciesDataError(
-                    [Fault(f"{INDEX_FILE} does not fit this file; {_REBUILD}", file, place.line)]
-                )
-            species = self.loaded.setdefault(name, found[0])
-        return species
-
-    def _file(self, number: int) -> tuple[bytes, SourceHeader]:
-        if number not in self.opened:
-            path, size, header_size = self.files[number]
-            content = (self.folder / path).read_bytes()
-            if len(content) != size:
-                raise SpeciesDataError([Fault(f"{INDEX_FILE} does not fit this file; {_REBUILD}", path)])
-            document = parse(content[:header_size].decode("utf-8"), path)
-            header, faults = read_header(document)
-            if header is None or document.faults or faults:
-                raise SpeciesDataError(
-                    (*document.faults, *faults) or [Fault("the key 'source' is missing", path)]
-                )
-            self.opened[number] = content, header
-        return self.opened[number]
-
-
-class _Place(NamedTuple):
-    file: int
-    offset: int
-    length: int
-    line: int
-
-
 @lru_cache(maxsize=1)
 def standard_library() -> SpeciesLibrary:
     """The species that travel with the package. Reads the index only; records follow when asked for.
@@ -417,20 +362,20 @@ def _read_library(folder: Path) -> SpeciesLibrary:
         index = json.loads((folder / INDEX_FILE).read_text(encoding="utf-8"))
     except FileNotFoundError:
         raise SpeciesDataError(
-            [Fault(f"the index of the species is missing; {_REBUILD}", INDEX_FILE)]
+            [Fault(f"the index of the species is missing; {REBUILD}", INDEX_FILE)]
         ) from None
     except ValueError:
         raise SpeciesDataError(
-            [Fault(f"the index of the species is not readable; {_REBUILD}", INDEX_FILE)]
+            [Fault(f"the index of the species is not readable; {REBUILD}", INDEX_FILE)]
         ) from None
     entries: list[IndexEntry] = []
-    places: dict[str, _Place] = {}
+    places: dict[str, Place] = {}
     for row in index["species"]:
         entry = IndexEntry(*row[:10])
         entries.append(entry)
-        places[entry.name] = _Place(*row[10:])
+        places[entry.name] = Place(*row[10:])
     files = [(path, size, header) for path, size, header in index["files"]]
-    return SpeciesLibrary(entries, _Records(folder, files, places), {})
+    return SpeciesLibrary(entries, RecordStore(folder, files, places), {})
 
 
 def _element_set(elements: Iterable[str]) -> set[str]:

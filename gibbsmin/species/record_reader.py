@@ -7,13 +7,13 @@ formula that disagrees with the composition, a molar mass that does not follow f
 
 from __future__ import annotations
 
-import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from os import PathLike
 from typing import Any
 
 from gibbsmin.errors import Fault, FormulaError, SpeciesDataError
+from gibbsmin.species.checking import Checker, found_text
 from gibbsmin.species.elements import ATOMIC_NUMBERS, molar_mass
 from gibbsmin.species.formula import parse_formula
 from gibbsmin.species.radicals import is_radical
@@ -29,7 +29,7 @@ from gibbsmin.species.record import (
 )
 from gibbsmin.strict_yaml import Document, YamlPath, parse_file
 
-__all__ = ["MOLAR_MASS_TOLERANCE", "SourceHeader", "document_of", "read_file", "read_header", "read_species"]
+__all__ = ["MOLAR_MASS_TOLERANCE", "SourceHeader", "read_file", "read_header", "read_species"]
 
 MOLAR_MASS_TOLERANCE = 5e-4
 """Relative; standard atomic weights were revised by up to this since the editions that sources used."""
@@ -55,11 +55,6 @@ class SourceHeader:
     citation: str
     gas_constant: float
     reference_pressure: float
-
-
-def document_of(data: Any, file: str = "") -> Document:
-    """Plain data as a `Document` without positions, so that one reader serves files and dictionaries."""
-    return Document(data, file)
 
 
 def read_file(path: str | PathLike[str], *, shown_as: str | None = None) -> list[Species]:
@@ -101,60 +96,8 @@ def read_records(document: Document, header: SourceHeader) -> tuple[list[Species
     return reader.records((), document.data, header), reader.faults
 
 
-class _Reader:
-    """Walks plain data and collects faults; a method that meets one returns None or leaves the part out."""
-
-    def __init__(self, document: Document) -> None:
-        self.document = document
-        self.faults: list[Fault] = []
-
-    def fault(self, path: YamlPath, message: str, *, of_key: bool = False) -> None:
-        self.faults.append(self.document.fault(path, message, of_key=of_key))
-
-    # --- pieces -----------------------------------------------------------------------------------------
-
-    def mapping(
-        self, path: YamlPath, *, required: Iterable[str] = (), optional: Iterable[str] = ()
-    ) -> dict[str, Any] | None:
-        value = self._at(path)
-        if not isinstance(value, dict):
-            self.fault(path, f"expected a mapping with the keys {', '.join(required)}; found {_found(value)}")
-            return None
-        required, allowed = tuple(required), (*required, *optional)
-        for key in value:
-            if key not in allowed:
-                hint = _nearest(str(key), allowed)
-                self.fault(
-                    (*path, key), f"unknown key {key!r}{hint}; allowed: {', '.join(allowed)}", of_key=True
-                )
-        for key in required:
-            if key not in value:
-                self.fault(path, f"the key {key!r} is missing")
-        return value
-
-    def number(self, path: YamlPath, value: Any, *, positive: bool = False) -> float | None:
-        if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
-            self.fault(path, f"expected a number, found {_found(value)}")
-            return None
-        if positive and value <= 0:
-            self.fault(path, f"expected a number above 0, found {value}")
-            return None
-        return float(value)
-
-    def text(self, path: YamlPath, value: Any) -> str | None:
-        if not isinstance(value, str) or not value.strip():
-            self.fault(path, f"expected text, found {_found(value)}")
-            return None
-        return value
-
-    def _at(self, path: YamlPath) -> Any:
-        value = self.document.data
-        for step in path:
-            try:
-                value = value[step]
-            except (KeyError, IndexError, TypeError):
-                return None
-        return value
+class _Reader(Checker):
+    """Reads the parts of a species file into objects; what has a fault is left out."""
 
     # --- header -----------------------------------------------------------------------------------------
 
@@ -187,8 +130,8 @@ class _Reader:
 
     def records(self, path: YamlPath, value: Any, header: SourceHeader | None) -> list[Species]:
         if not isinstance(value, list):
-            if value is not None or self._at(path) is not None:
-                self.fault(path, f"expected a list of species, found {_found(value)}")
+            if value is not None or self.at(path) is not None:
+                self.fault(path, f"expected a list of species, found {found_text(value)}")
             return []
         found: list[Species] = []
         names: dict[str, int] = {}
@@ -229,17 +172,17 @@ class _Reader:
         composition = self.composition((*path, "composition"), record.get("composition"))
         charge = record.get("charge", 0)
         if isinstance(charge, bool) or not isinstance(charge, int):
-            self.fault((*path, "charge"), f"expected a whole number, found {_found(charge)}")
+            self.fault((*path, "charge"), f"expected a whole number, found {found_text(charge)}")
             charge = 0
         state = record.get("state")
         if "state" in record and state not in ("g", "condensed"):
-            self.fault((*path, "state"), f"expected g or condensed, found {_found(state)}")
+            self.fault((*path, "state"), f"expected g or condensed, found {found_text(state)}")
         formula = self.text((*path, "formula"), record["formula"]) if "formula" in record else None
         if formula is not None and composition is not None:
             self.check_formula((*path, "formula"), formula, composition, charge)
         radical = record.get("radical")
         if radical is not None and not isinstance(radical, bool):
-            self.fault((*path, "radical"), f"expected true or false, found {_found(radical)}")
+            self.fault((*path, "radical"), f"expected true or false, found {found_text(radical)}")
         aliases = self.aliases((*path, "aliases"), record.get("aliases", []))
         cas = self.cas((*path, "cas"), record.get("cas"))
         mass = None
@@ -284,10 +227,10 @@ class _Reader:
         )
 
     def composition(self, path: YamlPath, value: Any) -> dict[str, float] | None:
-        if value is None and self._at(path) is None:
+        if value is None and self.at(path) is None:
             return None  # the missing key is a fault already
         if not isinstance(value, dict):
-            self.fault(path, f"expected element symbols with counts, found {_found(value)}")
+            self.fault(path, f"expected element symbols with counts, found {found_text(value)}")
             return None
         composition: dict[str, float] = {}
         sound = True
@@ -330,7 +273,7 @@ class _Reader:
 
     def aliases(self, path: YamlPath, value: Any) -> list[str]:
         if not isinstance(value, list):
-            self.fault(path, f"expected a list of names, found {_found(value)}")
+            self.fault(path, f"expected a list of names, found {found_text(value)}")
             return []
         found: list[str] = []
         for number, entry in enumerate(value):
@@ -346,13 +289,13 @@ class _Reader:
         if value is None:
             return None
         if not isinstance(value, str) or not _is_cas(value):
-            self.fault(path, f"{_found(value)} is no CAS number (its check digit must fit)")
+            self.fault(path, f"{found_text(value)} is no CAS number (its check digit must fit)")
             return None
         return value
 
     def forms(self, path: YamlPath, value: Any, state: Any) -> tuple[Form, ...]:
         if not isinstance(value, list) or not value:
-            self.fault(path, f"expected a list of forms, found {_found(value)}")
+            self.fault(path, f"expected a list of forms, found {found_text(value)}")
             return ()
         if state == "g" and len(value) > 1:
             self.fault(path, f"a gas has one form, found {len(value)}")
@@ -390,12 +333,14 @@ class _Reader:
         # Without a state of the species that makes sense, its forms are not judged by it.
         allowed = {"g": ("g",), "condensed": ("cr", "l")}.get(str(state), ("g", "cr", "l"))
         if "state" in entry and own_state not in allowed:
-            self.fault((*path, "state"), f"expected {' or '.join(allowed)}, found {_found(own_state)}")
+            self.fault((*path, "state"), f"expected {' or '.join(allowed)}, found {found_text(own_state)}")
         label = self.text((*path, "label"), entry["label"]) if "label" in entry else ""
         source = self.text((*path, "source"), entry["source"]) if "source" in entry else None
         model = entry.get("model", "NASA-9")
         if model not in COEFFICIENT_COUNTS:
-            self.fault((*path, "model"), f"expected {' or '.join(COEFFICIENT_COUNTS)}, found {_found(model)}")
+            self.fault(
+                (*path, "model"), f"expected {' or '.join(COEFFICIENT_COUNTS)}, found {found_text(model)}"
+            )
             return None
         intervals = self.intervals((*path, "intervals"), entry.get("intervals"), model)
         if len(self.faults) > faults_before or not intervals:
@@ -406,8 +351,8 @@ class _Reader:
 
     def intervals(self, path: YamlPath, value: Any, model: str) -> tuple[Interval, ...]:
         if not isinstance(value, list) or not value:
-            if self._at(path) is not None:
-                self.fault(path, f"expected a list of intervals, found {_found(value)}")
+            if self.at(path) is not None:
+                self.fault(path, f"expected a list of intervals, found {found_text(value)}")
             return ()
         found = [
             each
@@ -449,7 +394,7 @@ class _Reader:
 
     def row(self, path: YamlPath, value: Any, count: int) -> tuple[float, ...]:
         if not isinstance(value, list) or len(value) != count:
-            self.fault(path, f"expected {count} numbers, found {_found(value)}")
+            self.fault(path, f"expected {count} numbers, found {found_text(value)}")
             return ()
         numbers = [self.number((*path, place), entry) for place, entry in enumerate(value)]
         return tuple(number for number in numbers if number is not None)
@@ -488,23 +433,6 @@ class _Reader:
             else None
         )
         return Critical(temperature, pressure, factor, source or "")
-
-
-def _found(value: Any) -> str:
-    if isinstance(value, str):
-        return repr(value if len(value) <= 40 else value[:37] + "...")
-    if isinstance(value, dict):
-        return "a mapping"
-    if isinstance(value, list):
-        return f"a list of {len(value)}"
-    return "nothing" if value is None else repr(value)
-
-
-def _nearest(word: str, allowed: Iterable[str]) -> str:
-    import difflib  # only faulty files need it
-
-    near = difflib.get_close_matches(word, list(allowed), n=1)
-    return f"; did you mean {near[0]!r}?" if near else ""
 
 
 def _counts(composition: Mapping[str, float]) -> str:
