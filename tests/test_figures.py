@@ -16,6 +16,7 @@ import pytest
 import xarray as xr
 from matplotlib.colors import to_rgb
 from matplotlib.figure import Figure
+from matplotlib.patches import Rectangle
 
 from gibbsmin.figures import (
     DisplayUnit,
@@ -422,7 +423,7 @@ def test_lines_show_the_values_themselves() -> None:
     dataset = made_up(ratios=[3.0], pressures=[10e5])
     (axes,) = panels(drawn_lines(dataset))
     line = axes.lines[1]
-    np.testing.assert_allclose(line.get_xdata(), dataset.temperature.values - 273.15)
+    np.testing.assert_allclose(np.asarray(line.get_xdata(), dtype=float), dataset.temperature.values - 273.15)
     np.testing.assert_array_equal(line.get_ydata(), field_of(dataset, "CH4").values.ravel())
 
 
@@ -499,7 +500,7 @@ def test_a_single_point_becomes_bars_with_their_numbers() -> None:
     figure = draw_bars(fields_of(dataset), title="one", value_label="Mole fraction", units=UNITS)
     assert figure is not None
     (axes,) = figure.axes
-    assert [bar.get_width() for bar in axes.patches] == pytest.approx(
+    assert [bar.get_bbox().width for bar in axes.patches if isinstance(bar, Rectangle)] == pytest.approx(
         list(dataset.mole_fraction.values.ravel())
     )
     assert [text.get_text() for text in axes.get_yticklabels()] == [chemical(name) for name in SPECIES]
