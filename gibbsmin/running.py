@@ -11,9 +11,10 @@ import xarray as xr
 
 from gibbsmin.crosscheck import SEED, THRESHOLD, cross_check
 from gibbsmin.decimal_amounts import element_amounts_of_fractions
-from gibbsmin.errors import MissingPackageError
+from gibbsmin.errors import ConditionsError, MissingPackageError
 from gibbsmin.labelled import Labelled
 from gibbsmin.outcome import Outcome
+from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.outcome.energy import FeedPart, feed_enthalpy
 from gibbsmin.outcome.wanted import add_derived
 from gibbsmin.solving import Conditions, composition_matrix, solve, thermo_table
@@ -46,6 +47,7 @@ def run(
 
     Raises:
         TemperatureRangeError: the grid leaves a species' data and the scenario does not allow that.
+        ConditionsError: an axis is called like one of the results.
         MissingPackageError: the scenario asks for a Parquet table and pyarrow is not installed.
     """
     if "parquet" in scenario.output.tables and find_spec("pyarrow") is None:
@@ -81,6 +83,8 @@ def scenario_conditions(scenario: Scenario) -> Conditions:
     composition = composition_matrix(feed_species, table.elements)
     scaled, factor = element_amounts_of_fractions(amounts.reshape(-1, len(feed_species)), composition)
     dims = tuple(axis.name for axis in scenario.further_axes)
+    if taken := RESULT_NAMES.intersection(dims):
+        raise ConditionsError(f"axis {min(taken)!r}", "this name belongs to the results; choose another")
     return Conditions(
         table=table,
         feed_species=feed_species,

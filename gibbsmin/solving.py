@@ -20,7 +20,7 @@ from gibbsmin.decimal_amounts import element_amounts
 from gibbsmin.errors import ConditionsError
 from gibbsmin.grid import solve_grid, solve_points
 from gibbsmin.labelled import Labelled, count, joint_sizes, read_number
-from gibbsmin.outcome.assembling import RESERVED_DIMENSIONS, assemble
+from gibbsmin.outcome.assembling import RESULT_NAMES, assemble
 from gibbsmin.species import ThermoTable, standard_library
 
 if TYPE_CHECKING:
@@ -148,7 +148,7 @@ def read_conditions(
     p = _positive(read_number(pressure, "pressure", "pressure"), "pressure", "Pa")
     found, amounts = _read_feed(feed, library)
     sizes = joint_sizes([*amounts, T, p])
-    if reserved := RESERVED_DIMENSIONS.intersection(sizes):
+    if reserved := RESULT_NAMES.intersection(sizes):
         raise ConditionsError(
             f"dimension {min(reserved)!r}", "this name belongs to the results; choose another"
         )
@@ -167,7 +167,7 @@ def read_conditions(
         name: variable
         for part in (*amounts, T, p)
         for name, variable in part.coordinates.items()
-        if name not in ("temperature", "pressure") and name not in RESERVED_DIMENSIONS
+        if name not in ("temperature", "pressure") and name not in RESULT_NAMES
     }
     labelled_feed = Labelled((*feed_sizes, "feed_species"), values)
     return Conditions(table, tuple(found), labelled_feed, composition, scaled, factor, T, p, coordinates)

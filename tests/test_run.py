@@ -9,7 +9,9 @@ import numpy as np
 import pytest
 
 import gibbsmin
+from gibbsmin.errors import ConditionsError
 from gibbsmin.outcome import Outcome, composition
+from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.outcome.wanted import variable_name
 from gibbsmin.scenario import parse_scenario
 
@@ -264,3 +266,16 @@ def test_the_example_scenario_files_run() -> None:
     assert paths
     scenario = gibbsmin.load_scenario(paths[0])
     assert gibbsmin.run(scenario).points == scenario.points
+
+
+def test_an_axis_cannot_take_the_name_of_a_result() -> None:
+    scenario = parse_scenario(REFORMER)
+    axis = replace(scenario.further_axes[0], name="density")
+    with pytest.raises(ConditionsError, match="'density': this name belongs to the results"):
+        gibbsmin.run(replace(scenario, further_axes=(axis,)))
+
+
+def test_the_list_of_result_names_is_complete(outcome: Outcome) -> None:
+    wanted = {name for name, array in outcome.dataset.data_vars.items() if "description" in array.attrs}
+    axes = {"temperature", "pressure", "steam_to_carbon"}
+    assert set(map(str, outcome.dataset.variables)) - wanted - axes == RESULT_NAMES - {"extrapolated"}

@@ -16,7 +16,15 @@ if TYPE_CHECKING:
 
 FloatArray = NDArray[np.float64]
 
-RESERVED_DIMENSIONS = frozenset({"species", "element", "feed_species"})
+RESULT_NAMES = frozenset(
+    """
+    species element feed_species molar_mass feed_molar_mass atoms feed_atoms
+    mole_fraction amount gas_amount element_potential status gap balance_residual iterations feed_amount
+    extrapolated dry_mole_fraction mean_molar_mass density enthalpy heat_capacity_frozen
+    heat_capacity_equilibrium heat_duty heat_duty_per_feed crosscheck_status crosscheck_difference
+    """.split()  # noqa: SIM905  easier to read than thirty quoted words
+)
+"""Names that the results use, which a caller's dimension cannot have as well."""
 RATE_UNIT = {"mol": "mol", "mol/h": "mol h-1"}  # as UDUNITS and hence CF write it
 
 

@@ -54,7 +54,7 @@ def variable_name(name: str, dataset: xr.Dataset) -> str:
     A slash becomes "to" ("H2/CO": "H2 to CO"), and a name that a variable or dimension already has gets the
     ending "(wanted)".
     """
-    own = " ".join(name.replace("/", " to ").split())
+    own = " ".join(name.replace("/", " to ").split()) or "result"
     taken = {*map(str, dataset.variables), *map(str, dataset.dims)}
     while own in taken:
         own += " (wanted)"
