@@ -13,7 +13,7 @@ from __future__ import annotations
 import time
 from collections import Counter
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import lru_cache
 from typing import Any
@@ -156,6 +156,33 @@ def problem(seed: int, index: int, *, most_species: int = MOST_SPECIES) -> Probl
         )
 
 
+def mixed_batch(seed: int, index: int, count: int, *, most_species: int = 80) -> Problem | None:
+    """The list of problem (seed, index) with `count` feeds of all exact kinds, each at its own
+    temperature and pressure: element_amounts (count, E), potentials (count, S).  None where the list has
+    a row that is no element.
+    """
+    case, gases = problem(seed, index, most_species=most_species), pool()
+    if "all atoms" in case.elements:
+        return None
+    rng = np.random.default_rng((seed, index, count))
+    rows = rng.choice(np.flatnonzero(gases.valid[:, case.members].all(axis=1)), count)
+    log_pressure = rng.uniform(np.log(LOWEST_PRESSURE), np.log(HIGHEST_PRESSURE), count)
+    charged = "charge" in case.elements
+    A = case.formula_matrix[: len(case.elements) - charged].astype(int)
+    neutral = np.flatnonzero(gases.charge[case.members] == 0)
+    b = np.zeros((count, len(case.elements)))
+    for point in range(count):
+        feed = _feed(rng, MIXED_KINDS[int(rng.integers(len(MIXED_KINDS)))], A, neutral)
+        b[point, : len(A)] = np.ldexp((A[:, feed[0]] @ feed[1]).astype(float), -FIXED_POINT_BITS)
+    return replace(
+        case,
+        element_amounts=b,
+        potentials=gases.potentials[np.ix_(rows, case.members)] + log_pressure[:, None],
+        kind="mixed batch",
+    )
+
+
+MIXED_KINDS = ("random", "dense", "stoichiometric", "single", "trace", "boundary")
 _KIND_NAMES = np.array(list(KINDS))
 _KIND_SUMS = np.cumsum(list(KINDS.values()))
 _KIND_SUMS[-1] = 1.0
@@ -182,10 +209,9 @@ def _draw(rng: np.random.Generator, kind: str, most_species: int) -> Any:
     if len(candidates) < 2:
         return None
     most = min(most_species, len(candidates))
-    if rng.random() < 0.5:  # half of the lists long, half spread evenly over the decades
-        size = int(rng.integers(2, most + 1))
-    else:
-        size = int(np.exp(rng.uniform(np.log(2), np.log(most + 1))))
+    # half of the lists drawn evenly over their lengths, half evenly over the decades
+    long = rng.random() < 0.5
+    size = int(rng.integers(2, most + 1) if long else np.exp(rng.uniform(np.log(2), np.log(most + 1))))
     if kind == "redundant" and rng.random() < 0.6:
         size = min(size, int(rng.integers(2, count + 1)))
     members = rng.permutation(candidates)[:size]
@@ -397,5 +423,5 @@ def judge(case: Problem, answer: Any) -> tuple[list[str], float, float]:
     if not gap <= LARGEST_GAP:
         reasons.append(f"gap {gap:.1e}")
     if gap < 0:
-        reasons.append("negative gap")
+        reasons.append(f"negative gap {gap:.0e}")
     return reasons, gap, residual
