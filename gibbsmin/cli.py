@@ -81,6 +81,8 @@ def _in_words(error: BaseException) -> list[str]:
     if isinstance(error, OSError):
         place = f"{error.filename}: " if error.filename else ""
         return [f"gibbsmin: {place}{error.strerror or error}"]
+    if isinstance(error, FolderExistsError) and not error.reason:
+        return [f"gibbsmin: {error} (--overwrite)"]
     faults = getattr(error, "faults", None)
     return [f"gibbsmin: {line}" for line in (map(str, faults) if faults else str(error).splitlines())]
 
