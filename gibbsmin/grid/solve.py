@@ -1,27 +1,36 @@
-"""Solve the points of a map in chunks, spread over threads."""
+"""Solve whole maps or lists of points, in tasks spread over threads.
+
+NumPy and the linear algebra beneath it release the interpreter lock, so threads share the arrays and still run side
+by side; the linear algebra itself is kept to one thread each.
+"""
 
 from __future__ import annotations
 
 import os
-from collections.abc import Callable
+from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import contextmanager
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
+from gibbsmin.grid.map import node_map, solve_tile, tiles
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 
 CHUNK = 1024
-"""Points a task: their arrays stay in cache, and a thread has enough to do."""
+"""Scattered points a task: their arrays stay in cache, and a thread has enough to do."""
 
 Progress = Callable[[int], None]
+Indices = NDArray[np.intp]
+Amounts = NDArray[Any]
 
 
 def solve_grid(
     formula_matrix: Floats,
-    element_amounts: NDArray,  # type: ignore[type-arg]
+    element_amounts: Amounts,
     gibbs_RT: Floats,
     temperature: Floats,
     log_pressure: Floats,
@@ -46,21 +55,59 @@ def solve_grid(
     GridSolution with leading shape (F, nT, nP).
     """
     shape = (len(element_amounts), len(temperature), len(log_pressure))
+    T, T_order = np.unique(temperature, return_index=True)
+    p, p_order = np.unique(log_pressure, return_index=True)
+    if (len(T), len(p)) != shape[1:]:
+        return _as_points(
+            formula_matrix, element_amounts, gibbs_RT, log_pressure, shape, threads=threads, progress=progress
+        )
+    g = gibbs_RT[T_order]
+    out = GridSolution.blank(shape, *formula_matrix.shape)
+    with _workers(threads) as pool:
+        for feed, b in enumerate(element_amounts):
+            mine = out.part(feed)
+            nodes = node_map(formula_matrix, b, g, T, p)
+            if nodes is None:
+                points = _as_points(
+                    formula_matrix, b[None], g, p, (1, *shape[1:]), threads=threads, progress=progress
+                )
+                mine.fill(..., points.part(0))
+                continue
+            floats = b.astype(np.float64)
+            work = (
+                lambda tile=tile: solve_tile(nodes, tile, floats, g, p, mine)  # noqa: B023
+                for tile in tiles(nodes, len(T), len(p))
+            )
+            _run(pool, work, progress)
+    if (np.diff(T_order) > 0).all() and (np.diff(p_order) > 0).all():
+        return out
+    return out.part((slice(None), *np.ix_(np.argsort(T_order), np.argsort(p_order))))
+
+
+def _as_points(
+    formula_matrix: Floats,
+    element_amounts: Amounts,
+    gibbs_RT: Floats,
+    log_pressure: Floats,
+    shape: tuple[int, ...],
+    *,
+    threads: int | None,
+    progress: Progress | None,
+) -> GridSolution:
     feed, T, p = (index.ravel() for index in np.indices(shape))
-    flat = solve_points(
+    return solve_points(
         formula_matrix, element_amounts, gibbs_RT, log_pressure, feed, T, p, threads=threads, progress=progress
-    )
-    return flat.reshaped(shape)
+    ).reshaped(shape)
 
 
 def solve_points(
     formula_matrix: Floats,
-    element_amounts: NDArray,  # type: ignore[type-arg]
+    element_amounts: Amounts,
     gibbs_RT: Floats,
     log_pressure: Floats,
-    feed_index: NDArray[np.intp],
-    temperature_index: NDArray[np.intp],
-    pressure_index: NDArray[np.intp],
+    feed_index: Indices,
+    temperature_index: Indices,
+    pressure_index: Indices,
     *,
     threads: int | None = None,
     progress: Progress | None = None,
@@ -70,25 +117,38 @@ def solve_points(
     Other parameters as in :func:`solve_grid`. Returns a GridSolution with leading shape (N,).
     """
     points = len(feed_index)
-    solution = GridSolution.blank((points,), *formula_matrix.shape)
+    out = GridSolution.blank((points,), *formula_matrix.shape)
 
     def solve(first: int) -> int:
         at = slice(first, min(first + CHUNK, points))
         potentials = gibbs_RT[temperature_index[at]] + log_pressure[pressure_index[at], None]
-        solution.fill(at, minimise(formula_matrix, element_amounts[feed_index[at]], potentials))
-        return at.stop - at.start
+        out.fill(at, minimise(formula_matrix, element_amounts[feed_index[at]], potentials))
+        return int(at.stop - at.start)
 
-    starts = range(0, points, CHUNK)
-    workers = min(threads or available_cores(), max(len(starts), 1))
+    with _workers(threads) as pool:
+        _run(pool, (lambda first=first: solve(first) for first in range(0, points, CHUNK)), progress)
+    return out
+
+
+@contextmanager
+def _workers(threads: int | None) -> Iterator[ThreadPoolExecutor | None]:
+    """A pool of threads, or None for one thread, while the linear algebra keeps to one thread."""
+    count = threads or available_cores()
     with threadpool_limits(1, user_api="blas"):
-        if workers == 1:
-            for first in starts:
-                _report(progress, solve(first))
+        if count == 1:
+            yield None
         else:
-            with ThreadPoolExecutor(workers) as pool:
-                for done in pool.map(solve, starts):
-                    _report(progress, done)
-    return solution
+            with ThreadPoolExecutor(count) as pool:
+                yield pool
+
+
+def _run(
+    pool: ThreadPoolExecutor | None, work: Iterable[Callable[[], int]], progress: Progress | None
+) -> None:
+    done = (task() for task in work) if pool is None else pool.map(lambda task: task(), work)
+    for count in done:
+        if progress is not None:
+            progress(count)
 
 
 def available_cores() -> int:
@@ -96,8 +156,3 @@ def available_cores() -> int:
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
-
-
-def _report(progress: Progress | None, done: int) -> None:
-    if progress is not None:
-        progress(done)

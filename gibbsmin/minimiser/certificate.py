@@ -73,18 +73,18 @@ def optimality_gap(
     imbalance = ((n @ A.T - b) * pi).sum(axis=1)
     highest = level.max(axis=1)
     excess = highest + np.log(np.exp(level - highest[:, None]).sum(axis=1))
-    reach = b @ _shift_weight(np.ascontiguousarray(A))
+    reach = b @ shift_weight(A)
     # a negative sum is rounding: no composition lies below the minimum
     return np.asarray(np.maximum(above_dual + imbalance + np.maximum(excess, 0.0) * reach, 0.0))
 
 
-def _shift_weight(A: Floats) -> Floats:
-    return _shift_weight_of_bytes(A.tobytes(), A.shape)
+def shift_weight(A: Floats) -> Floats:
+    """A vector w (E,) with w.a_j >= 1 for every species j of A (E, S). Raises ProblemError if there is none."""
+    return _shift_weight_of_bytes(np.ascontiguousarray(A).tobytes(), A.shape)
 
 
 @lru_cache(maxsize=256)
 def _shift_weight_of_bytes(data: bytes, shape: tuple[int, int]) -> Floats:
-    """A vector w (E,) with w.a_j >= 1 for every species j."""
     A = np.frombuffer(data, dtype=np.float64).reshape(shape)
     signed = (A < 0.0).any(axis=1)
     # atoms pull up, charge pulls down; the atoms of an ion outweigh its charge

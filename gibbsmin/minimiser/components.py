@@ -17,7 +17,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 from functools import cached_property, lru_cache
-from math import gcd, lcm
+from math import gcd, lcm, log
 from typing import Any
 
 import numpy as np
@@ -39,6 +39,11 @@ EXACT_IN_DOUBLE = 2.0**52
 
 EXACT_IN_INT64 = 2.0**62
 """Bound on products formed in 64-bit integers."""
+
+EXCHANGE = 10.0
+"""A species j replaces component i if C_ij^2 x_j exceeds this multiple of x_i."""
+
+LOG_EXCHANGE = log(EXCHANGE)
 
 CANCELLATION = 1e-2
 """A sum smaller than this part of its terms is recomputed exactly."""
@@ -165,6 +170,19 @@ class Components:
     def _exact_weights(self) -> bool:
         return bool(np.abs(self._float_adjugate).max(initial=0.0) < EXACT_IN_DOUBLE)
 
+    def adapted(self, log_x: Floats) -> Components:
+        """Components as abundant as a composition ln x (S,) allows, by exchanges from the present ones.
+
+        Each exchange enlarges the product of the abundances, so there is an end to them.
+        """
+        components = self
+        while True:
+            gain = components.log_squares + (log_x[None, :] - log_x[components.columns][:, None])
+            position, species = np.unravel_index(np.argmax(gain), gain.shape)
+            if gain[position, species] <= LOG_EXCHANGE:
+                return components
+            components = components.exchange(int(position), int(species))
+
     def exchange(self, leaving: int, entering: int) -> Components:
         """The choice of components in which position `leaving` gives way to species `entering`."""
         columns = list(self.key)
@@ -213,12 +231,16 @@ class FormulaSystem:
             self._restricted[columns, row_order] = found
         return found
 
+    def independent_columns(self, order: Indices) -> list[int]:
+        """The first independent species in the given order: r of them."""
+        return _independent_rows(self.integers.T, order.tolist())
+
     @cached_property
     def dependent_rows(self) -> list[tuple[int, list[Fraction]]]:
         """Each redundant element row with its weights in the independent ones."""
         out = []
         known = set(self.rows.tolist())
-        basis = _first_independent_columns(self.integers)
+        basis = _independent_rows(self.integers.T)
         square = self.integers[:, basis]
         adjugate, determinant = _adjugate(square)
         for row in range(self.all_integers.shape[0]):
@@ -275,11 +297,9 @@ def _independent_rows(integers: Integers, order: Sequence[int] | None = None) ->
             inverse = pow(int(vector[column]), -1, RANK_PRIME)
             pivots.append((column, vector * inverse % RANK_PRIME))
             kept.append(row)
+            if len(kept) == work.shape[1]:
+                break
     return sorted(kept)
-
-
-def _first_independent_columns(integers: Integers) -> list[int]:
-    return _independent_rows(integers.T)
 
 
 def _adjugate(square: Integers) -> tuple[Integers, int]:

@@ -37,16 +37,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.minimiser.cholesky import solve_packed
-from gibbsmin.minimiser.components import Amounts, Components, Floats, Indices
+from gibbsmin.minimiser.components import LOG_EXCHANGE, Amounts, Components, Floats, Indices
 
 STEP_TOLERANCE = 1e-8
 """A step below this (largest change of any ln y) is the last: convergence is quadratic, the error left is its square."""
 
 NESTED_TOLERANCE = 1e-6
 """Inner accuracy in ln y before the nested form moves N."""
-
-EXCHANGE = 10.0
-"""Curvature of another species above this multiple of the component's own makes it the component."""
 
 EXCHANGE_ALARM = 100.0
 """Looking for such a species costs a pass over all of them; a diagonal above this multiple is the sign to look."""
@@ -303,7 +300,7 @@ def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Indi
     if not index.size:
         return index, np.zeros((0, 2), dtype=np.intp)
     log_squares = batch.components.log_squares
-    best = np.full(len(index), np.log(EXCHANGE))
+    best = np.full(len(index), LOG_EXCHANGE)
     choice = np.full((len(index), 2), -1, dtype=np.intp)
     for i in range(r):
         gain = log_all[index] + log_squares[i] - batch.log_y[index, i][:, None]
