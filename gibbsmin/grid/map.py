@@ -4,26 +4,37 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import cached_property
+from itertools import pairwise
 
 import numpy as np
 
-from gibbsmin.grid.nodes import SPACING_LN_P, SPACING_LN_T, Axis, Floats, Indices, choose_nodes
-from gibbsmin.grid.polish import Feed, polish
+from gibbsmin.grid.nodes import SPACING_LN_P, SPACING_LN_T, Axis, Floats, choose_nodes
+from gibbsmin.grid.polish import FIRST_REACH, STEPS, Feed, polish, prove
 from gibbsmin.grid.solution import GridSolution
-from gibbsmin.minimiser import Minimum, minimise
+from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Amounts, Components
 from gibbsmin.minimiser.nearby import abundant_components, minimise_near, pose_like
 from gibbsmin.minimiser.posing import Posed
 
-CHUNK = 800
-"""Points polished together: three arrays of chunk by species stay in a core's second-level cache."""
+CHUNK = 1600
+"""Points polished together: their arrays stay in a core's second-level cache, and the calls are few."""
 
 PRESSURES = 64
 """Pressures of a chunk at the most, so that its points resemble each other."""
 
+WORTHWHILE = 3.0
+"""Nodes are worth their own cost if there are this many points to each."""
+
+FIRST_LEVEL = 16
+"""Nodes of the coarsest level in each direction, at the most."""
+
+NODE_REACH = 3e-2
+"""Steps up to this leave errors of 1e-5 in a node, which are as good as those of interpolation."""
+
 
 @dataclass(frozen=True)
-class NodeMap:
+class Nodes:
     """Solved nodes of one feed: ln mole fractions (kT, kP, s) of the kept species, ln total amount (kT, kP)."""
 
     posed: Posed
@@ -32,6 +43,18 @@ class NodeMap:
     pressures: Axis
     log_x: Floats
     log_total: Floats
+
+    def feed(self, components: Components) -> Feed:
+        """The feed in these components, prepared once."""
+        found = self._feeds.get(components.key)
+        if found is None:
+            m = components.amounts(self.b[None, self.posed.system.rows])[0]
+            found = self._feeds[components.key] = Feed(self.posed, components, self.b.astype(np.float64), m)
+        return found
+
+    @cached_property
+    def _feeds(self) -> dict[tuple[int, ...], Feed]:
+        return {}
 
 
 @dataclass(frozen=True)
@@ -43,131 +66,125 @@ class Tile:
     components: Components
 
 
-def node_map(A: Floats, b: Amounts, gibbs_RT: Floats, temperature: Floats, log_pressure: Floats) -> NodeMap | None:
-    """Solve the nodes of a map in two levels; None where a map of this size or kind does not gain by it.
+def solve_nodes(
+    A: Floats, b: Amounts, gibbs_RT: Floats, temperature: Floats, log_pressure: Floats
+) -> Nodes | None:
+    """Solve the nodes of a map, level by level; None where a map of this size or kind does not gain by it.
 
     Parameters: b (E,) mol; gibbs_RT (nT, S); temperature (nT,) K and log_pressure (nP,), both ascending.
     """
-    temperatures = choose_nodes(np.log(temperature), SPACING_LN_T)
-    pressures = choose_nodes(log_pressure, SPACING_LN_P)
-    points = len(temperature) * len(log_pressure)
-    if len(temperatures.nodes) * len(pressures.nodes) > points / WORTHWHILE:
+    T_axis = choose_nodes(np.log(temperature), SPACING_LN_T)
+    p_axis = choose_nodes(log_pressure, SPACING_LN_P)
+    if T_axis.size * p_axis.size * WORTHWHILE > len(temperature) * len(log_pressure):
         return None
-    g = gibbs_RT[temperatures.nodes]
-    lnp = log_pressure[pressures.nodes]
-    coarse_T, coarse_p = temperatures.coarser(), pressures.coarser()
-    potentials = g[coarse_T.nodes][:, None, :] + lnp[coarse_p.nodes][:, None]
-    first = minimise(A, b, potentials.reshape(-1, A.shape[1]))
-    if not first.solved.all():
+    levels = [(T_axis, p_axis)]
+    while levels[-1][0].size > FIRST_LEVEL or levels[-1][1].size > FIRST_LEVEL:
+        levels.append((levels[-1][0].coarser(), levels[-1][1].coarser()))
+    nodes: Nodes | None = None
+    for T_level, p_level in reversed(levels):
+        g = gibbs_RT[np.searchsorted(np.log(temperature), T_level.node_positions)]
+        nodes = _first_nodes(A, b, g, T_level, p_level) if nodes is None else _refined(nodes, g, T_level, p_level)
+        if nodes is None:
+            return None
+    return nodes
+
+
+def _first_nodes(A: Floats, b: Amounts, g: Floats, T_axis: Axis, p_axis: Axis) -> Nodes | None:
+    """Nodes of the coarsest level, solved from nothing."""
+    potentials = g[:, None, :] + p_axis.node_positions[:, None]
+    found = minimise(A, b, potentials.reshape(-1, A.shape[1]))
+    if not found.solved.all():
         return None
-    shape = (len(coarse_T.nodes), len(coarse_p.nodes))
-    posed = pose_like(A, b, first.log_mole_fractions[0])
-    log_x = first.log_mole_fractions[:, posed.kept].reshape(*shape, -1)
-    log_total = np.log(first.amounts.sum(axis=1)).reshape(shape)
-    coarse = NodeMap(posed, b, coarse_T, coarse_p, log_x, log_total)
-    if not (coarse_T.is_thinned or coarse_p.is_thinned):
-        return NodeMap(posed, b, temperatures, pressures, log_x, log_total)
-    return _refined(coarse, g[:, posed.kept], lnp, temperatures, pressures)
+    shape = (T_axis.size, p_axis.size)
+    posed = pose_like(A, b, found.log_mole_fractions[0])
+    log_x = found.log_mole_fractions[:, posed.kept].reshape(*shape, -1)
+    return Nodes(posed, b, T_axis, p_axis, log_x, np.log(found.amounts.sum(axis=1)).reshape(shape))
 
 
-WORTHWHILE = 3.0
-"""Nodes are worth their own cost if there are this many points to each."""
-
-
-def _refined(coarse: NodeMap, g: Floats, lnp: Floats, temperatures: Axis, pressures: Axis) -> NodeMap | None:
-    shape = (len(g), len(lnp))
-    log_x = np.empty((*shape, len(coarse.posed.kept)))
+def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nodes | None:
+    """Nodes of the next level, polished from estimates of the coarser one."""
+    shape = (T_axis.size, p_axis.size)
+    g = gibbs_RT[:, coarse.posed.kept]
+    log_x = np.empty((*shape, g.shape[1]))
     log_total = np.empty(shape)
     for tile in tiles(coarse, *shape):
         log_y, total = estimate(coarse, tile)
-        c = g[tile.temperatures][:, None, :] + lnp[tile.pressures][:, None]
-        found = minimise_near(
-            coarse.posed, coarse.b, c.reshape(len(total), -1), tile.components, log_y, total
-        )
-        if not found.solved.all():
-            return None
+        rows, lnp = g[tile.temperatures], p_axis.node_positions[tile.pressures]
+        done = polish(coarse.feed(tile.components), rows, lnp, log_y, total, first_reach=NODE_REACH)
+        size = (len(rows), len(lnp))
         at = (tile.temperatures, tile.pressures)
-        log_x[at] = found.log_mole_fractions[:, coarse.posed.kept].reshape(log_x[at].shape)
-        log_total[at] = np.log(found.amounts.sum(axis=1)).reshape(log_total[at].shape)
-    return NodeMap(coarse.posed, coarse.b, temperatures, pressures, log_x, log_total)
+        log_x[at] = done.log_x.T.reshape(*size, -1)
+        log_total[at] = done.log_total.reshape(size)
+        left = np.flatnonzero(~done.usable)
+        if left.size:
+            row, column = np.divmod(left, len(lnp))
+            found = minimise_near(
+                coarse.posed, coarse.b, rows[row] + lnp[column, None], tile.components, log_y.T[left], total[left]
+            )
+            if not found.solved.all():
+                return None
+            place = (row + tile.temperatures.start, column + tile.pressures.start)
+            log_x[place] = found.log_mole_fractions[:, coarse.posed.kept]
+            log_total[place] = np.log(found.amounts.sum(axis=1))
+    return Nodes(coarse.posed, coarse.b, T_axis, p_axis, log_x, log_total)
 
 
-def tiles(nodes: NodeMap, n_T: int, n_p: int) -> Iterator[Tile]:
+def tiles(nodes: Nodes, n_T: int, n_p: int) -> Iterator[Tile]:
     """Cut a map into tiles of similar points; each gets components that suit the node nearest to its middle."""
     parts = -(-n_p // PRESSURES)
-    p_edges = np.linspace(0, n_p, parts + 1).astype(int)
+    edges = [n_p * part // parts for part in range(parts + 1)]
     height = max(1, CHUNK * parts // n_p)
-    for p_first, p_last in zip(p_edges[:-1], p_edges[1:], strict=True):
-        near_p = _nearest(nodes.pressures, (p_first + p_last - 1) // 2)
+    for p_first, p_last in pairwise(edges):
+        near_p = nodes.pressures.nearest_node((p_first + p_last - 1) // 2)
         components: Components | None = None
         for T_first in range(0, n_T, height):
             T_last = min(T_first + height, n_T)
-            near_T = _nearest(nodes.temperatures, (T_first + T_last - 1) // 2)
+            near_T = nodes.temperatures.nearest_node((T_first + T_last - 1) // 2)
             components = abundant_components(nodes.posed, nodes.log_x[near_T, near_p], components)
-            yield Tile(slice(T_first, T_last), slice(int(p_first), int(p_last)), components)
+            yield Tile(slice(T_first, T_last), slice(p_first, p_last), components)
 
 
-def _nearest(axis: Axis, index: int) -> int:
-    return int(np.argmin(np.abs(axis.positions[axis.nodes] - axis.positions[index])))
+def estimate(nodes: Nodes, tile: Tile) -> tuple[Floats, Floats]:
+    """Interpolated ln y of the tile's components (r, n) and ln total amount (n,)."""
+    to_T = nodes.temperatures.weights[tile.temperatures]
+    to_p = nodes.pressures.weights[tile.pressures]
+    used_T, used_p = np.flatnonzero(to_T.any(axis=0)), np.flatnonzero(to_p.any(axis=0))
+    near = np.ix_(used_T, used_p)
+    values = [nodes.log_x[(*near, column)] for column in tile.components.columns]
+    values.append(nodes.log_total[near])
+    out = to_T[:, used_T] @ np.stack(values) @ to_p[:, used_p].T
+    flat = out.reshape(len(values), -1)
+    return flat[:-1], flat[-1]
 
 
-def estimate(nodes: NodeMap, tile: Tile) -> tuple[Floats, Floats]:
-    """Interpolated ln y of the tile's components (n, r) and ln total amount (n,)."""
-    to_T = nodes.temperatures.weights(nodes.temperatures.positions[tile.temperatures])
-    to_p = nodes.pressures.weights(nodes.pressures.positions[tile.pressures])
-    values = np.concatenate([nodes.log_x[:, :, tile.components.columns], nodes.log_total[:, :, None]], axis=2)
-    used_T, used_p = to_T.any(axis=0), to_p.any(axis=0)
-    values = values[used_T][:, used_p]
-    rows = np.tensordot(to_T[:, used_T], values, axes=(1, 0))
-    out = np.matmul(to_p[:, used_p], rows).reshape(-1, values.shape[2])
-    return out[:, :-1], out[:, -1]
-
-
-def solve_tile(
-    nodes: NodeMap, tile: Tile, b: Floats, gibbs_RT: Floats, log_pressure: Floats, out: GridSolution
-) -> int:
+def solve_tile(nodes: Nodes, tile: Tile, gibbs_RT: Floats, log_pressure: Floats, out: GridSolution) -> int:
     """Solve the points of a tile into `out`, whose leading shape is (nT, nP); returns their number.
 
-    gibbs_RT (nT, S) and log_pressure (nP,) of the whole map; b (E,) mol.
+    gibbs_RT (nT, S) and log_pressure (nP,) of the whole map.
     """
-    posed, components = nodes.posed, tile.components
+    posed = nodes.posed
     g = gibbs_RT[tile.temperatures][:, posed.kept]
     lnp = log_pressure[tile.pressures]
     log_y, log_total = estimate(nodes, tile)
-    independent = nodes.b[None, posed.system.rows]
-    feed = Feed(posed, components, b, components.amounts(independent)[0])
-    polished = polish(feed, g, lnp, log_y, log_total)
-    at = (tile.temperatures, tile.pressures)
+    polished = polish(nodes.feed(tile.components), g, lnp, log_y, log_total, first_reach=FIRST_REACH)
+    proved = prove(polished, g, lnp)
     shape = (len(g), len(lnp))
-    every_species = len(posed.kept) == out.amounts.shape[-1]
-    if every_species:
-        out.amounts[at] = polished.amounts.reshape(*shape, -1)
-    else:
-        out.amounts[at] = 0.0
-        out.amounts[(*at, posed.kept)] = polished.amounts.reshape(*shape, -1)
-    out.element_potentials[at] = polished.element_potentials.reshape(*shape, -1)
-    out.gap[at] = polished.gap.reshape(shape)
-    out.balance_residual[at] = polished.balance_residual.reshape(shape)
-    out.iterations[at] = 2
-    out.status[at] = 0
-    left = np.flatnonzero(~polished.good)
+    at = (tile.temperatures, tile.pressures)
+    by_species = np.moveaxis(out.amounts, -1, 0)
+    by_species[(posed.excluded, *at)] = 0.0
+    total_amount = proved.total_amount.reshape(shape)
+    for y, species in zip(polished.y, posed.kept, strict=True):
+        np.multiply(y.reshape(shape), total_amount, out=by_species[(species, *at)])
+    np.moveaxis(out.element_potentials, -1, 0)[(slice(None), *at)] = proved.element_potentials.reshape(-1, *shape)
+    out.gap[at] = proved.gap.reshape(shape)
+    out.balance_residual[at] = proved.balance_residual.reshape(shape)
+    out.iterations[at] = STEPS
+    out.status[at] = Status.SOLVED
+    left = np.flatnonzero(~proved.good)
     if left.size:
-        _solve_left(nodes, tile, g, lnp, log_y, log_total, left, out)
-    return len(log_y)
-
-
-def _solve_left(
-    nodes: NodeMap,
-    tile: Tile,
-    g: Floats,
-    lnp: Floats,
-    log_y: Floats,
-    log_total: Floats,
-    left: Indices,
-    out: GridSolution,
-) -> None:
-    """Points that polishing did not settle go through the full iteration, from their estimates."""
-    row, column = np.divmod(left, len(lnp))
-    c = g[row] + lnp[column, None]
-    found: Minimum = minimise_near(nodes.posed, nodes.b, c, tile.components, log_y[left], log_total[left])
-    out.fill((row + tile.temperatures.start, column + tile.pressures.start), found)
+        row, column = np.divmod(left, len(lnp))
+        found = minimise_near(
+            posed, nodes.b, g[row] + lnp[column, None], tile.components, log_y.T[left], log_total[left]
+        )
+        out.fill((row + tile.temperatures.start, column + tile.pressures.start), found)
+    return len(log_total)

@@ -7,6 +7,7 @@ at every other point. Interpolation is by local polynomials (Lagrange) of ORDER 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,8 +22,8 @@ SPACING_LN_T = 0.016
 SPACING_LN_P = 0.24
 """Node distances that leave errors of 1e-8 (median) to 2e-5 (largest) in ln y on a map of steam reforming."""
 
-COARSER = 4
-"""The first nodes, solved from nothing, are this many times fewer in each direction."""
+COARSER = 2
+"""From one level of nodes to the next coarser, their number falls by this factor in each direction."""
 
 
 @dataclass(frozen=True)
@@ -33,18 +34,28 @@ class Axis:
     nodes: Indices
 
     @property
-    def is_thinned(self) -> bool:
-        return len(self.nodes) < len(self.positions)
+    def size(self) -> int:
+        """Number of nodes."""
+        return len(self.nodes)
 
-    def weights(self, targets: Floats | None = None) -> Floats:
-        """(targets, k) interpolation weights of the nodes at the targets, by default at all points of the axis."""
-        return lagrange_weights(self.positions[self.nodes], self.positions if targets is None else targets)
+    @property
+    def node_positions(self) -> Floats:
+        """(k,)"""
+        return self.positions[self.nodes]
+
+    @cached_property
+    def weights(self) -> Floats:
+        """(n, k) interpolation weights of the nodes at all points of the axis."""
+        return lagrange_weights(self.node_positions, self.positions)
+
+    def nearest_node(self, index: int) -> int:
+        """Number of the node nearest to a point of the axis."""
+        return int(np.argmin(np.abs(self.node_positions - self.positions[index])))
 
     def coarser(self) -> Axis:
         """The nodes as an axis of their own, with fewer nodes."""
-        own = self.positions[self.nodes]
-        kept = max(min(ORDER, len(own)), -(-len(own) // COARSER))
-        return Axis(own, np.unique(np.rint(np.linspace(0, len(own) - 1, kept)).astype(np.intp)))
+        kept = max(min(ORDER, self.size), -(-self.size // COARSER))
+        return Axis(self.node_positions, np.unique(np.rint(np.linspace(0, self.size - 1, kept)).astype(np.intp)))
 
 
 def choose_nodes(positions: Floats, spacing: float) -> Axis:

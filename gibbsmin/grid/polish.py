@@ -13,6 +13,7 @@ All arrays of a chunk fit in the cache of a core; each line below is one pass ov
 
 from __future__ import annotations
 
+import threading
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -20,14 +21,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.minimiser.certificate import shift_weight
-from gibbsmin.minimiser.cholesky import Factors
+from gibbsmin.minimiser.cholesky import Factors, diagonal
 from gibbsmin.minimiser.components import Components
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE, Posed
 
 Floats = NDArray[np.float64]
 
 FIRST_REACH = 1e-2
-"""Largest change of any ln y in the first step; what the second leaves then is below 1e-6 times SECOND_REACH."""
+"""Largest change of any ln y by the first step that lets the two steps come near LAST_ERROR."""
+
+STEPS = 2
+"""Newton steps that polishing takes."""
 
 LAST_ERROR = 1e-13
 """Largest product of the changes of both steps: the order of the error that is left in ln y."""
@@ -52,15 +56,29 @@ class Feed:
     m: Floats
 
     @cached_property
-    def sums(self) -> Floats:
-        """(s, 1 + r + k): columns 1, C_i, and |a_ej| of the k element rows that hold charges."""
-        signed = np.abs(self.posed.A[np.ix_(self.signed_rows, self.posed.kept)])
-        r = len(self.m)
-        return np.ascontiguousarray(np.hstack([self.components.sums[:, : 1 + r], signed.T]))
-
-    @cached_property
     def signed_rows(self) -> NDArray[np.bool_]:
         return np.asarray((self.posed.A[:, self.posed.kept] < 0.0).any(axis=1))
+
+    @cached_property
+    def to_exponents(self) -> Floats:
+        """(s, r + 1): takes (ln y_i + ln p, ln p) of the components to ln y_j + Delta_j of all species."""
+        return np.ascontiguousarray(np.vstack([self.components.C, -np.ones(self.components.C.shape[1])]).T)
+
+    @cached_property
+    def to_change(self) -> Floats:
+        """(s, r) C^T."""
+        return np.ascontiguousarray(self.components.C.T)
+
+    @cached_property
+    def to_all_sums(self) -> Floats:
+        """(1 + r + r (r + 1) / 2, s): rows 1, C_i, C_i C_k (i >= k)."""
+        return np.ascontiguousarray(self.components.sums.T)
+
+    @cached_property
+    def to_balances(self) -> Floats:
+        """(1 + r + k, s): rows 1, C_i, and |a_ej| of the k element rows that hold charges."""
+        signed = np.abs(self.posed.A[np.ix_(self.signed_rows, self.posed.kept)])
+        return np.vstack([self.to_all_sums[: 1 + len(self.m)], signed])
 
     @cached_property
     def shift_reach(self) -> float:
@@ -72,108 +90,135 @@ class Feed:
         """(E, r) formula matrix of the components."""
         return self.posed.A[:, self.posed.kept[self.components.columns]]
 
+    @cached_property
+    def to_potentials(self) -> Floats:
+        """(r, r): takes a_i.pi of the components to pi of the independent element rows."""
+        return np.asarray(np.linalg.inv(self.component_formulas[self.posed.system.rows].T))
+
 
 @dataclass
 class Polished:
-    """Points (n,) of a chunk after polishing; `good` marks those that are solved and proved."""
+    """Points (n,) after two steps; arrays hold the points last.
 
-    amounts: Floats  # (n, s) mol
-    element_potentials: Floats  # (n, E)
-    gap: Floats
-    balance_residual: Floats
-    good: NDArray[np.bool_]
+    y and log_x live in the thread's work space: they last until its next call of polish.
+    """
+
+    feed: Feed
+    y: Floats  # (s, n) mole fractions
+    log_x: Floats  # (s, n)
+    log_y: Floats  # (r, n) of the components
+    log_total: Floats  # (n,)
+    first_reach: Floats  # (n,) largest change of any ln y
+    second_reach: Floats
+    usable: NDArray[np.bool_]  # (n,) whether the steps could be taken
+
+
+_work_space = threading.local()
+
+
+def _scratch(species: int, points: int) -> list[Floats]:
+    """Three arrays (species, points) that a thread keeps: fresh memory would cost more than the arithmetic."""
+    kept: list[Floats] = getattr(_work_space, "arrays", [])
+    if not kept or kept[0].shape != (species, points):
+        kept = _work_space.arrays = [np.empty((species, points)) for _ in range(3)]
+    return kept
 
 
 def polish(
-    feed: Feed, gibbs_RT: Floats, log_pressure: Floats, log_y: Floats, log_total: Floats
+    feed: Feed, gibbs_RT: Floats, log_pressure: Floats, log_y: Floats, log_total: Floats, *, first_reach: float
 ) -> Polished:
-    """Polish a chunk of nT temperatures by nP pressures, n = nT nP points, pressure running fastest.
+    """Take two Newton steps at nT temperatures by nP pressures, n = nT nP points, pressure running fastest.
 
     Parameters
     ----------
     gibbs_RT : (nT, s) standard g / RT of the kept species.
     log_pressure : (nP,) ln(p / p0).
-    log_y, log_total : (n, r), (n,) estimates of ln y of the components and of ln(N / mol).
+    log_y, log_total : (r, n), (n,) estimates of ln y of the components and of ln(N / mol).
+    first_reach : largest change of any ln y that the first step may bring.
     """
-    components, m = feed.components, feed.m
-    C, r = components.C, len(m)
-    n_T, n_p = len(gibbs_RT), len(log_pressure)
-    lnp = np.tile(log_pressure, n_T)
-    offsets = components.offsets(gibbs_RT)
-    # ln y_j = sum_i C_ij (ln y_i + ln p) - Delta_j - ln p
-    exponents = (log_y + lnp[:, None]) @ C
-    by_temperature = exponents.reshape(n_T, n_p, -1)
-    by_temperature -= offsets[:, None, :]
-    by_temperature -= log_pressure[:, None]
-    with np.errstate(all="ignore"):  # what goes wrong in a point shows in `good`
-        y = np.exp(exponents)
-        table = y @ components.sums
-        total, balance = table[:, 0], table[:, 1 : 1 + r]
-        factors = Factors.of_packed(table[:, 1 + r :], r)
-        condition = (factors.diagonal / np.exp(log_y)).max(axis=1)
-        to_target = factors.solve(m * np.exp(-log_total)[:, None])
-        to_balance = factors.solve(balance)
-        by_balance = (balance * to_balance).sum(axis=1)
-        ratio = ((balance * to_target).sum(axis=1) - 1.0 + total) / by_balance
-        first = to_target / ratio[:, None] - to_balance
-        first_reach = np.abs(first) @ components.largest
-        good = (first_reach < FIRST_REACH) & (condition < ILL_CONDITIONED) & (np.abs(ratio - 1.0) < FIRST_REACH)
-        first[~good], ratio[~good] = 0.0, 1.0
-        log_total = log_total + np.log(ratio)
-        log_y = log_y + first
-        exponents += first @ C
+    m = feed.m[:, None]
+    r = len(m)
+    lnp = np.tile(log_pressure, len(gibbs_RT))
+    offsets = np.ascontiguousarray(feed.components.offsets(gibbs_RT).T)
+    exponents, y, growth = _scratch(len(feed.to_exponents), len(lnp))
+    np.matmul(feed.to_exponents, np.concatenate([log_y + lnp, lnp[None, :]]), out=exponents)
+    by_temperature = exponents.reshape(len(exponents), len(gibbs_RT), len(log_pressure))
+    by_temperature -= offsets[:, :, None]
+    with np.errstate(all="ignore"):  # what goes wrong in a point shows in `usable`
         np.exp(exponents, out=y)
-        table = y @ feed.sums
-        missing = m * np.exp(-log_total)[:, None] - table[:, 1 : 1 + r]
-        to_missing = factors.solve(missing)
-        change = ((balance * to_missing).sum(axis=1) - 1.0 + table[:, 0]) / by_balance
-        second = to_missing - to_balance * change[:, None]
-        second_reach = np.abs(second) @ components.largest
-        good &= first_reach * (second_reach + np.abs(change)) < LAST_ERROR
-        second[~good], change[~good], second_reach[~good] = 0.0, 0.0, 0.0
-        log_total += np.log1p(change)
-        log_y += second
-        growth = second @ C
+        table = feed.to_all_sums @ y
+        total, balance, packed = table[0], table[1 : 1 + r], table[1 + r :]
+        condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
+        factors = Factors.of_packed(packed)
+        to_target = factors.solve(m * np.exp(-log_total))
+        to_balance = factors.solve(balance)
+        by_balance = (balance * to_balance).sum(axis=0)
+        ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / by_balance
+        first = to_target / ratio - to_balance
+        reach = feed.components.largest @ np.abs(first)
+        usable = (reach < first_reach) & (condition < ILL_CONDITIONED) & (np.abs(ratio - 1.0) < first_reach)
+        if not usable.all():
+            first[:, ~usable], ratio[~usable] = 0.0, 1.0
+        log_total = log_total + np.log(ratio)
+        exponents += np.matmul(feed.to_change, first, out=growth)
+        np.exp(exponents, out=y)
+        table = feed.to_balances[: 1 + r] @ y
+        to_missing = factors.solve(m * np.exp(-log_total) - table[1:])
+        change = ((balance * to_missing).sum(axis=0) - 1.0 + table[0]) / by_balance
+        second = to_missing - to_balance * change
+        second_reach = feed.components.largest @ np.abs(second) + np.abs(change)
+        usable &= second_reach < first_reach
+        if not usable.all():
+            second[:, ~usable], change[~usable] = 0.0, 0.0
+        np.matmul(feed.to_change, second, out=growth)
+        exponents += growth
         growth += 1.0
         y *= growth
-        table = y @ feed.sums
-        total_amount = np.exp(log_total)
-        y *= total_amount[:, None]
-        terms = np.abs(log_y + lnp[:, None]) @ components.largest + np.abs(lnp)
-        terms += np.repeat(np.abs(offsets).max(axis=1), n_p)
-        uncertainty = second_reach**2 + ROUNDING * terms
-        potentials = log_y + np.repeat(gibbs_RT[:, components.columns], n_p, axis=0) + lnp[:, None]
-        return _proved(feed, y, table, total_amount, potentials, uncertainty, good)
+    log_total += np.log1p(change)
+    return Polished(feed, y, exponents, log_y + first + second, log_total, reach, second_reach, usable)
 
 
-def _proved(
-    feed: Feed,
-    amounts: Floats,
-    table: Floats,
-    total_amount: Floats,
-    potentials: Floats,
-    uncertainty: Floats,
-    good: NDArray[np.bool_],
-) -> Polished:
-    """Certificate of a chunk (see minimiser/certificate.py), from sums that are at hand.
+@dataclass
+class Proved:
+    """Evidence of points (n,); `good` marks those that are solved and proved."""
 
-    ln(n_j / N) and the level a_j.pi - c_j that pi assigns differ by no more than `uncertainty` (n,). `table` holds
-    the sums of y over species, `potentials` (n, r) a_i.pi of the components.
+    total_amount: Floats  # (n,) mol
+    element_potentials: Floats  # (E, n)
+    gap: Floats
+    balance_residual: Floats
+    good: NDArray[np.bool_]
+
+
+def prove(polished: Polished, gibbs_RT: Floats, log_pressure: Floats) -> Proved:
+    """Certificate of polished points (see minimiser/certificate.py), from few sums.
+
+    ln y_j and the level a_j.pi - c_j that the potentials assign differ by no more than the error of the second step,
+    which took exp(d) as 1 + d, and the rounding of the exponents.
     """
-    r = potentials.shape[1]
-    rows = feed.posed.system.rows
-    total = table[:, 0]
-    held = total_amount[:, None] * (table[:, 1 : 1 + r] @ feed.component_formulas.T)
-    missed = held - feed.b
-    turnover = np.tile(np.maximum(np.abs(feed.b), TINY), (len(total), 1))
-    turnover[:, feed.signed_rows] = np.maximum(total_amount[:, None] * table[:, 1 + r :], TINY)
-    residual = (np.abs(missed) / turnover).max(axis=1)
-    pi = np.full((len(total), len(feed.b)), np.nan)
-    pi[:, feed.posed.A[:, feed.posed.kept].any(axis=1)] = 0.0
-    pi[:, rows] = potentials @ np.linalg.inv(feed.component_formulas[rows])
+    feed = polished.feed
+    components, posed = feed.components, feed.posed
+    r = len(feed.m)
+    lnp = np.tile(log_pressure, len(gibbs_RT))
+    total_amount = np.exp(polished.log_total)
+    table = feed.to_balances @ polished.y
+    total = table[0]
+    terms = components.largest @ np.abs(polished.log_y + lnp) + np.abs(lnp)
+    terms += np.repeat(np.abs(gibbs_RT).max(axis=1) * (1.0 + np.abs(components.C).sum(axis=0).max()), len(log_pressure))
+    uncertainty = polished.second_reach**2 + ROUNDING * terms
+    b = feed.b[:, None]
+    missed = total_amount * (feed.component_formulas @ table[1 : 1 + r]) - b
+    turnover = np.repeat(np.maximum(np.abs(b), TINY), len(total), axis=1)
+    turnover[feed.signed_rows] = np.maximum(total_amount * table[1 + r :], TINY)
+    residual = (np.abs(missed) / turnover).max(axis=0)
+    potentials = polished.log_y + np.repeat(gibbs_RT[:, components.columns].T, len(log_pressure), axis=1) + lnp
+    pi = np.full((len(b), len(total)), np.nan)
+    pi[posed.A[:, posed.kept].any(axis=1)] = 0.0
+    pi[posed.system.rows] = feed.to_potentials @ potentials
     log_sum = np.log(total)
     above_dual = total_amount * total * (uncertainty - log_sum)
     excess = np.maximum(log_sum + uncertainty, 0.0)
-    gap = above_dual + np.abs(missed[:, rows] * pi[:, rows]).sum(axis=1) + excess * feed.shift_reach
+    imbalance = np.abs(missed[posed.system.rows] * pi[posed.system.rows]).sum(axis=0)
+    gap = np.maximum(above_dual + imbalance + excess * feed.shift_reach, 0.0)
+    good = polished.usable & (polished.first_reach * polished.second_reach < LAST_ERROR)
     good &= (residual <= BALANCE_TOLERANCE) & (gap <= GAP_TOLERANCE * np.abs(feed.b).sum())
-    return Polished(amounts, pi, np.maximum(gap, 0.0), residual, good)
+    return Proved(total_amount, pi, gap, residual, good)

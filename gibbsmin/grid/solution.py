@@ -30,10 +30,13 @@ class GridSolution:
 
     @classmethod
     def blank(cls, shape: tuple[int, ...], elements: int, species: int) -> GridSolution:
-        """Arrays to be filled; until then every point counts as not solved."""
+        """Arrays to be filled; until then every point counts as not solved.
+
+        Memory holds the amounts species by species, as tasks write and maps read them.
+        """
         return cls(
-            np.empty((*shape, species)),
-            np.empty((*shape, elements)),
+            np.moveaxis(np.empty((species, *shape)), 0, -1),
+            np.moveaxis(np.empty((elements, *shape)), 0, -1),
             np.zeros(shape, dtype=np.int32),
             np.full(shape, Status.STEP_LIMIT, dtype=np.int8),
             np.empty(shape),

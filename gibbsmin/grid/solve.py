@@ -16,12 +16,12 @@ import numpy as np
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
-from gibbsmin.grid.map import node_map, solve_tile, tiles
+from gibbsmin.grid.map import solve_nodes, solve_tile, tiles
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 
-CHUNK = 1024
-"""Scattered points a task: their arrays stay in cache, and a thread has enough to do."""
+SMALLEST_TASK, LARGEST_TASK = 1024, 16384
+"""Scattered points a task: many, so that enough of them share their components, but enough tasks for all threads."""
 
 Progress = Callable[[int], None]
 Indices = NDArray[np.intp]
@@ -66,16 +66,15 @@ def solve_grid(
     with _workers(threads) as pool:
         for feed, b in enumerate(element_amounts):
             mine = out.part(feed)
-            nodes = node_map(formula_matrix, b, g, T, p)
+            nodes = solve_nodes(formula_matrix, b, g, T, p)
             if nodes is None:
                 points = _as_points(
                     formula_matrix, b[None], g, p, (1, *shape[1:]), threads=threads, progress=progress
                 )
                 mine.fill(..., points.part(0))
                 continue
-            floats = b.astype(np.float64)
             work = (
-                lambda tile=tile: solve_tile(nodes, tile, floats, g, p, mine)  # noqa: B023
+                lambda tile=tile: solve_tile(nodes, tile, g, p, mine)  # noqa: B023
                 for tile in tiles(nodes, len(T), len(p))
             )
             _run(pool, work, progress)
@@ -119,14 +118,16 @@ def solve_points(
     points = len(feed_index)
     out = GridSolution.blank((points,), *formula_matrix.shape)
 
+    size = int(np.clip(points // (threads or available_cores()), SMALLEST_TASK, LARGEST_TASK))
+
     def solve(first: int) -> int:
-        at = slice(first, min(first + CHUNK, points))
+        at = slice(first, min(first + size, points))
         potentials = gibbs_RT[temperature_index[at]] + log_pressure[pressure_index[at], None]
         out.fill(at, minimise(formula_matrix, element_amounts[feed_index[at]], potentials))
         return int(at.stop - at.start)
 
     with _workers(threads) as pool:
-        _run(pool, (lambda first=first: solve(first) for first in range(0, points, CHUNK)), progress)
+        _run(pool, (lambda first=first: solve(first) for first in range(0, points, size)), progress)
     return out
 
 

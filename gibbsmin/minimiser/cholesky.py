@@ -1,7 +1,8 @@
 """Small symmetric positive definite systems, many at a time.
 
 The matrices are at most about ten wide, so the factorisation is written out over the batch axis: each operation acts
-on one entry of all matrices at once. For a handful of systems the library routine is quicker.
+on one entry of all n matrices at once. Arrays hold the batch axis last. For a handful of systems the library routine
+is quicker.
 """
 
 from __future__ import annotations
@@ -20,73 +21,71 @@ FEW = 12
 class Factors:
     """Cholesky factors of n systems scaled by their diagonals; root[i][k] holds entry (i, k) of all of them."""
 
-    diagonal: Floats  # (n, r)
     scales: list[Floats]
     root: list[list[Floats]]
     reciprocals: list[Floats]
 
     @classmethod
-    def of_packed(cls, packed: Floats, r: int) -> Factors:
-        """Factorise lower triangles given row by row, (n, r (r + 1) / 2)."""
-        diagonal = _diagonal(packed, r)
-        scales = [1.0 / np.sqrt(diagonal[:, i]) for i in range(r)]
+    def of_packed(cls, packed: Floats) -> Factors:
+        """Factorise lower triangles given row by row, (r (r + 1) / 2, n)."""
+        scales = [1.0 / np.sqrt(entry) for entry in diagonal(packed)]
         root: list[list[Floats]] = []
         reciprocals: list[Floats] = []
-        for i in range(r):
+        for i, scale in enumerate(scales):
             row: list[Floats] = []
+            square = np.ones(packed.shape[1])
             for k in range(i):
-                value = packed[:, i * (i + 1) // 2 + k] * scales[i]
+                value = packed[i * (i + 1) // 2 + k] * scale
                 value *= scales[k]
                 for m in range(k):
                     value -= row[m] * root[k][m]
                 value *= reciprocals[k]
+                square -= value * value
                 row.append(value)
-            square = np.ones(len(packed))
-            for entry in row:
-                square -= entry * entry
-            last = np.sqrt(square, out=square)
-            reciprocals.append(1.0 / last)
-            root.append([*row, last])
-        return cls(diagonal, scales, root, reciprocals)
+            reciprocals.append(1.0 / np.sqrt(square, out=square))
+            root.append(row)
+        return cls(scales, root, reciprocals)
 
     def solve(self, right: Floats) -> Floats:
-        """H^-1 right for right-hand sides (n, r)."""
-        r = len(self.root)
-        x: list[Floats] = []
+        """H^-1 right for right-hand sides (r, n)."""
+        r = len(self.scales)
+        x = np.empty_like(right)
         for i in range(r):
-            value = right[:, i] * self.scales[i]
+            np.multiply(right[i], self.scales[i], out=x[i])
             for k in range(i):
-                value -= self.root[i][k] * x[k]
-            value *= self.reciprocals[i]
-            x.append(value)
-        out = np.empty_like(right)
+                x[i] -= self.root[i][k] * x[k]
+            x[i] *= self.reciprocals[i]
         for i in reversed(range(r)):
             for k in range(i + 1, r):
                 x[i] -= self.root[k][i] * x[k]
             x[i] *= self.reciprocals[i]
-            np.multiply(x[i], self.scales[i], out=out[:, i])
-        return out
+        for i in range(r):
+            x[i] *= self.scales[i]
+        return x
 
 
 def solve_packed(packed: Floats, first: Floats, second: Floats) -> tuple[Floats, Floats]:
     """Solve H x = first and H x = second.
 
-    Parameters: packed (n, r (r + 1) / 2), lower triangles row by row; first, second (n, r).
+    Parameters: packed (r (r + 1) / 2, n), lower triangles row by row; first, second (r, n).
     """
-    n, r = first.shape
+    r, n = first.shape
     if n >= FEW:
-        factors = Factors.of_packed(packed, r)
+        factors = Factors.of_packed(packed)
         return factors.solve(first), factors.solve(second)
-    scale = 1.0 / np.sqrt(_diagonal(packed, r))
-    matrix = np.empty((n, r, r))
+    scale = 1.0 / np.sqrt(diagonal(packed))
+    matrix = np.empty((r, r, n))
     rows, columns = np.tril_indices(r)
-    matrix[:, rows, columns] = packed
-    matrix[:, columns, rows] = packed
-    matrix *= scale[:, :, None] * scale[:, None, :]
-    right = np.stack([first, second], axis=2) * scale[:, :, None]
-    solution = np.linalg.solve(matrix, right) * scale[:, :, None]
-    return solution[:, :, 0], solution[:, :, 1]
+    matrix[rows, columns] = packed
+    matrix[columns, rows] = packed
+    matrix *= scale[:, None] * scale
+    right = np.stack([first, second], axis=1) * scale[:, None]
+    solution = np.linalg.solve(matrix.transpose(2, 0, 1), right.transpose(2, 0, 1)).transpose(1, 2, 0)
+    solution = solution * scale[:, None]
+    return solution[:, 0], solution[:, 1]
 
 
-def _diagonal(packed: Floats, r: int) -> Floats:
-    return packed[:, [i * (i + 3) // 2 for i in range(r)]]
+def diagonal(packed: Floats) -> Floats:
+    """(r, n) diagonals of packed lower triangles (r (r + 1) / 2, n)."""
+    r = int((2 * len(packed)) ** 0.5)
+    return packed[[i * (i + 3) // 2 for i in range(r)]]

@@ -24,6 +24,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.errors import ProblemError
+from gibbsmin.minimiser.accurate_sums import dot
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
@@ -46,7 +47,10 @@ EXCHANGE = 10.0
 LOG_EXCHANGE = log(EXCHANGE)
 
 CANCELLATION = 1e-2
-"""A sum smaller than this part of its terms is recomputed exactly."""
+"""A sum smaller than this part of its terms is recomputed with more digits."""
+
+LOST = 1e-20
+"""Below this part even these are few: it is then summed exactly, and a zero found to be one."""
 
 
 def exact(value: Any) -> Fraction:
@@ -123,14 +127,21 @@ class Components:
         return out
 
     def _amounts_with_care(self, b: Amounts, m: Floats, doubtful: NDArray[np.bool_]) -> Floats:
+        points, positions = np.nonzero(doubtful)
+        if b.dtype != object and self._exact_weights:
+            weights = self._float_adjugate[positions]
+            terms = b[points]
+            accurate = dot(weights, terms)
+            m[points, positions] = accurate
+            lost = np.abs(accurate) < LOST * (np.abs(weights) * np.abs(terms)).sum(axis=1)
+            points, positions = points[lost], positions[lost]
         rows = self._adjugate.tolist()
-        for point, component in np.argwhere(doubtful):
-            terms = (
-                weight * exact(value)
-                for weight, value in zip(rows[component], b[point], strict=True)
-                if weight
+        for point, component in zip(points, positions, strict=True):
+            sum_of_terms = sum(
+                (weight * exact(value) for weight, value in zip(rows[component], b[point], strict=True) if weight),
+                Fraction(0),
             )
-            m[point, component] = float(sum(terms, Fraction(0)))
+            m[point, component] = float(sum_of_terms)
         return m
 
     def exact_amounts(self, element_amounts: Amounts) -> list[Fraction]:

@@ -60,6 +60,9 @@ LONGEST_EXTENSION = 10
 TOTAL_CHANGE = 10.0
 """Largest factor by which one step changes N."""
 
+BATCH = 1024
+"""Points iterated side by side: their arrays stay in a core's second-level cache."""
+
 JOINT_STEPS = 60
 STEP_LIMIT = 1000
 
@@ -168,6 +171,9 @@ def minimise_batches(batches: list[Batch], b: Amounts, c: Floats) -> list[Batch]
     queue = list(batches)
     while queue:
         batch = queue.pop()
+        if len(batch.points) > BATCH:
+            queue.append(batch.take(np.arange(BATCH, len(batch.points))))
+            batch = batch.take(np.arange(BATCH))
         while len(batch.points):
             log_all = batch.log_mole_fractions()
             sums = sums_over_species(batch.components, log_all.copy())
@@ -183,7 +189,7 @@ def minimise_batches(batches: list[Batch], b: Amounts, c: Floats) -> list[Batch]
                 finished.append(batch.take(np.flatnonzero(done)))
                 batch = batch.take(np.flatnonzero(~done))
         queue = _merged(queue)
-    return finished
+    return _merged(finished)
 
 
 def _step(batch: Batch, sums: Sums, log_all: Floats) -> NDArray[np.bool_]:
@@ -214,11 +220,11 @@ def _directions(batch: Batch, sums: Sums, target: Floats, log_all: Floats) -> tu
     """H^-1 (m / N) and H^-1 C y."""
     deep = (batch.log_y - sums.shift[:, None]).min(axis=1) < DEEP_TRACE
     if not deep.any():
-        return solve_packed(sums.packed, target, sums.balance)
+        return _solved(sums.packed, target, sums.balance)
     first, second = np.empty_like(target), np.empty_like(target)
     plain = ~deep
     if plain.any():
-        first[plain], second[plain] = solve_packed(sums.packed[plain], target[plain], sums.balance[plain])
+        first[plain], second[plain] = _solved(sums.packed[plain], target[plain], sums.balance[plain])
     C = batch.components.C
     for point in np.flatnonzero(deep):
         # rows relative to their own component: y itself may be too small for a double
@@ -231,6 +237,11 @@ def _directions(batch: Batch, sums: Sums, target: Floats, log_all: Floats) -> tu
         right = np.stack([relative_target, relative.sum(axis=1)], axis=1)
         first[point], second[point] = np.linalg.solve(relative @ C.T, right).T
     return first, second
+
+
+def _solved(packed: Floats, first: Floats, second: Floats) -> tuple[Floats, Floats]:
+    x, y = solve_packed(*(np.ascontiguousarray(array.T) for array in (packed, first, second)))
+    return x.T, y.T
 
 
 def _ratio_of_totals(batch: Batch, sums: Sums, to_target: Floats, to_balance: Floats) -> Floats:

@@ -66,6 +66,11 @@ class Posed:
     kept: Indices
     system: FormulaSystem
 
+    @property
+    def excluded(self) -> Indices:
+        """Species left out."""
+        return np.setdiff1d(np.arange(self.A.shape[1]), self.kept, assume_unique=True)
+
     @classmethod
     def of(cls, A: Floats, kept: Indices, b: Amounts) -> list[tuple[Posed, Indices]]:
         """Pose the points of element amounts b (n, E), with equal species kept; positions of points for each.

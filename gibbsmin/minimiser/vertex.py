@@ -14,6 +14,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 
@@ -118,11 +119,14 @@ def _leaving(visit: _Visit, amounts: Floats, b: Amounts, entering: int) -> Indic
     crowded = tied.sum(axis=1) > 1
     if not crowded.any():
         return np.asarray(candidates[np.argmax(tied, axis=1)])
+    decided: dict[tuple[Any, ...], list[bool]] = {}
     for point in np.flatnonzero(crowded & (least[:, 0] > 0.0)):
         near = np.flatnonzero(tied[point])
-        exact = components.exact_ratios(b[point], candidates[near], entering)
-        smallest = min(exact)
-        tied[point, near] = [ratio == smallest for ratio in exact]
+        case = (*b[point].tolist(), *near.tolist())
+        if case not in decided:
+            exact_ratios = components.exact_ratios(b[point], candidates[near], entering)
+            decided[case] = [ratio == min(exact_ratios) for ratio in exact_ratios]
+        tied[point, near] = decided[case]
     keys = components.C[np.ix_(candidates, visit.first.columns)] / column[candidates][:, None]
     rank = np.empty(len(candidates), dtype=np.intp)
     rank[np.lexsort(np.round(keys, 9).T[::-1])] = np.arange(len(candidates))
