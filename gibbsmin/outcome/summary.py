@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 _SPECIES_SHOWN = 6  # in lists of names, and of key species when the scenario names none
 _MOST_ROWS = 20  # key results shown; the files hold all
 _WIDTH = 100  # of the text, in columns
-_SHOWN = {"1": ("", 1.0), "J mol-1": ("kJ/mol", 1e-3), "J": ("kJ", 1e-3), "W": ("kW", 1e-3)}
+SHOWN_UNITS = {"1": ("", 1.0), "J mol-1": ("kJ/mol", 1e-3), "J": ("kJ", 1e-3), "W": ("kW", 1e-3)}
 _MOST_POINTS = 5  # differing or unanswered points spelled out; crosscheck.csv lists all
 CAUTION = (
     "Equilibrium is a limit, not a rate. It sizes no relief device, proves no atmosphere non-flammable, "
@@ -36,8 +36,8 @@ _STYLE = (
 
 def summary_text(outcome: Outcome) -> str:
     """Plain text for a terminal; only a wide table of results exceeds 100 columns."""
-    lines = [outcome.scenario.title, "", *_filled(_facts(outcome))]
-    heading, rows = _key_table(outcome)
+    lines = [outcome.scenario.title, "", *_filled(facts(outcome))]
+    heading, rows = key_table(outcome)
     widths = [max(len(row[i]) for row in (heading, *rows)) for i in range(len(heading))]
     lines.append("")
     for row in (heading, *rows):
@@ -46,13 +46,13 @@ def summary_text(outcome: Outcome) -> str:
             *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)),
         ]
         lines.append("  ".join(cells).rstrip())
-    lines += ["", *_filled(_evidence(outcome)), "", *_filled([CAUTION])]
+    lines += ["", *_filled(evidence_lines(outcome)), "", *_filled([CAUTION])]
     return "\n".join(lines)
 
 
 def summary_html(outcome: Outcome) -> str:
     """The same for a notebook; every text from outside is escaped."""
-    heading, rows = _key_table(outcome)
+    heading, rows = key_table(outcome)
     head = "".join(f"<th>{html.escape(cell)}</th>" for cell in heading)
     body = "".join(
         "<tr>" + "".join(f"<td>{html.escape(cell)}</td>" for cell in row) + "</tr>" for row in rows
@@ -61,37 +61,39 @@ def summary_html(outcome: Outcome) -> str:
     mark = "" if sound else ' class="warning"'
     return (
         f'{_STYLE}<div class="gibbsmin-outcome"><h3>{html.escape(outcome.scenario.title)}</h3>'
-        + _list(_facts(outcome))
+        + _list(facts(outcome))
         + f"<table><thead><tr>{head}</tr></thead><tbody>{body}</tbody></table>"
-        + f"<div{mark}>{_list(_evidence(outcome))}</div>"
+        + f"<div{mark}>{_list(evidence_lines(outcome))}</div>"
         + f"<p><small>{html.escape(CAUTION)}</small></p></div>"
     )
 
 
-def _facts(outcome: Outcome) -> list[str]:
+def facts(outcome: Outcome) -> list[str]:
+    """What was asked: the axes, the species, and remarks."""
     scenario, dataset = outcome.scenario, outcome.dataset
-    facts = []
+    told = []
     for axis in scenario.axes:
         low, high = min(axis.display_values), max(axis.display_values)
         unit = "" if axis.display_unit == "1" else f" {axis.display_unit}"
         span = f"{low:g}{unit}" if low == high else f"{low:g} to {high:g}{unit}, {len(axis)} points"
-        facts.append(f"{axis.title}: {span}")
+        told.append(f"{axis.title}: {span}")
     names = ", ".join(str(name) for name in dataset["species"].values[:_SPECIES_SHOWN])
     more = dataset.sizes["species"] - _SPECIES_SHOWN
-    facts.append(f"{dataset.sizes['species']} gases: {names}" + (f" and {more} more" if more > 0 else ""))
-    facts += list(scenario.remarks)
-    return facts
+    told.append(f"{dataset.sizes['species']} gases: {names}" + (f" and {more} more" if more > 0 else ""))
+    told += list(scenario.remarks)
+    return told
 
 
-def _key_table(outcome: Outcome) -> tuple[list[str], list[list[str]]]:
+def key_table(outcome: Outcome) -> tuple[list[str], list[list[str]]]:
     """Heading and rows: smallest and largest value over the grid, and where the largest is."""
     dataset = outcome.dataset
-    rows = [_row(name, array, outcome) for name, array in _key_results(outcome)]
+    rows = [_row(name, array, outcome) for name, array in key_results(outcome)]
     heading = ["result", "unit", "lowest", "highest", "highest at"]
     return heading, rows[:_MOST_ROWS] if dataset["status"].size else []
 
 
-def _key_results(outcome: Outcome) -> Iterator[tuple[str, xr.DataArray]]:
+def key_results(outcome: Outcome) -> Iterator[tuple[str, xr.DataArray]]:
+    """Name and values of what a reader looks for first: key species, wanted results, heat duty."""
     dataset, wanted = outcome.dataset, outcome.scenario.results
     for name in wanted.key_species or _most_abundant(dataset):
         yield f"{name}, mole fraction", dataset["mole_fraction"].sel(species=name)
@@ -115,18 +117,19 @@ def _row(name: str, array: xr.DataArray, outcome: Outcome) -> list[str]:
     values = array.values
     if not np.isfinite(values).any():
         return [name, units, "-", "-", "-"]
-    shown, factor = _SHOWN.get(units, (units, 1.0))
+    shown, factor = SHOWN_UNITS.get(units, (units, 1.0))
     place = np.unravel_index(int(np.nanargmax(values)), values.shape)
     return [
         name,
         shown,
         f"{np.nanmin(values) * factor:.4g}",
         f"{np.nanmax(values) * factor:.4g}",
-        _where([int(position) for position in place], outcome.scenario),
+        in_words([int(position) for position in place], outcome.scenario),
     ]
 
 
-def _evidence(outcome: Outcome) -> list[str]:
+def evidence_lines(outcome: Outcome) -> list[str]:
+    """How far the results can be trusted: proofs, unsolved points, cross-check."""
     dataset, check, scenario = outcome.dataset, outcome.crosscheck, outcome.scenario
     solved = outcome.points - outcome.unsolved
     lines = [f"solved {solved} of {outcome.points} points"]
@@ -143,7 +146,7 @@ def _evidence(outcome: Outcome) -> list[str]:
     text += f", {check.differing} differ, {check.unanswered} without an independent answer"
     if (worst := check.worst) is not None:
         text += f"; largest relative difference {worst.relative:.1e}"
-        text += f" ({worst.species}, {_where(worst.index, scenario)})"
+        text += f" ({worst.species}, {in_words(worst.index, scenario)})"
     lines.append(text)
     lines += _spelled_out("differs", check.having("differs"), scenario)
     lines += _spelled_out("no independent answer", check.having("no independent answer"), scenario)
@@ -165,13 +168,13 @@ def _spelled_out(what: str, points: Sequence[CheckedPoint], scenario: Scenario) 
     lines = []
     for point in points[:_MOST_POINTS]:
         difference = f" by {point.relative:.1e} ({point.species})" if np.isfinite(point.relative) else ""
-        lines.append(f"{what}{difference} at {_where(point.index, scenario)}: {point.reason}")
+        lines.append(f"{what}{difference} at {in_words(point.index, scenario)}: {point.reason}")
     if len(points) > _MOST_POINTS:
         lines.append(f"and {len(points) - _MOST_POINTS} more; crosscheck.csv lists all")
     return lines
 
 
-def _where(index: Sequence[int], scenario: Scenario) -> str:
+def in_words(index: Sequence[int], scenario: Scenario) -> str:
     """A point of the grid in the units of the scenario; axes of one value are left out."""
     places = []
     for axis, position in zip(scenario.axes, index, strict=True):
