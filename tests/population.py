@@ -11,6 +11,7 @@ rounding.
 from __future__ import annotations
 
 import time
+import warnings
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
@@ -331,16 +332,22 @@ def run_population(
     worst_gap (relative to sum b), worst_residual, most_iterations, by_kind {kind: (count, failures,
     seconds)}, failures [(seed, index, kind, reason)] (at most 200 of them), worst {what: (seed, index)}.
     """
+    pool()
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")  # a warning of the arithmetic counts as an exception
+        return _run(problems(count, seed, first=first, most_species=most_species), count, seed)
+
+
+def _run(cases: Iterator[Problem], count: int, seed: int) -> dict[str, Any]:
     from gibbsmin import minimise
 
-    pool()
     by_status: Counter[str] = Counter()
     kinds: dict[str, list[float]] = {kind: [0, 0, 0.0] for kind in KINDS}
     failures: list[tuple[int, int, str, str]] = []
     worst = {"gap": (-1.0, -1), "residual": (-1.0, -1), "iterations": (-1.0, -1), "seconds": (-1.0, -1)}
     exceptions = not_finite = 0
     seconds = 0.0
-    for case in problems(count, seed, first=first, most_species=most_species):
+    for case in cases:
         begin = time.perf_counter()
         try:
             answer = minimise(case.formula_matrix, case.element_amounts, case.potentials)

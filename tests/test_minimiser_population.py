@@ -35,6 +35,19 @@ def test_twenty_thousand_more_are_solved_and_proved() -> None:
     assert report["by_status"] == {"SOLVED": 20_000}
 
 
+@pytest.mark.parametrize(
+    ("seed", "index"),
+    [
+        (1, 40392),  # an overflow warning, the only flaw in the first 100,000 problems of seed 1
+        (77, 2330),  # 45 iterations, the most of 20,000
+        (1, 58828),  # 41 iterations, the most of 100,000
+    ],
+)
+def test_problems_that_were_hard_once(seed: int, index: int) -> None:
+    report = run_population(1, seed, first=index)
+    assert report["failures"] == []
+
+
 def test_batches_of_every_kind_of_feed_at_once() -> None:
     """25 lists of species, each with 24 feeds of all kinds at their own temperatures and pressures in one
     call: all solved and proved, one in eight compared with the reference."""
