@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import subprocess
 import sys
-import time
 
 import numpy as np
 import pytest
@@ -254,16 +253,6 @@ def test_all_refusals_share_one_base() -> None:
 
 
 # --- cost -------------------------------------------------------------------------------------------------
-
-
-def test_a_single_point_costs_less_than_five_milliseconds() -> None:
-    gibbsmin.equilibrium(FEED, 1000, 1e6, species=REFORMING)
-    spent = []
-    for step in range(15):
-        start = time.perf_counter()
-        gibbsmin.equilibrium(FEED, 1000.0 + step, 1e6, species=REFORMING)
-        spent.append(time.perf_counter() - start)
-    assert min(spent) < 5e-3  # the best of several: the machine may be busy with something else
 
 
 def test_importing_the_package_loads_no_numerical_library() -> None:

@@ -284,31 +284,18 @@ def test_errors_survive_pickling() -> None:
 
 
 COLD_START = """
-import time
-start = time.perf_counter()
 from gibbsmin.species import standard_library
-imported = time.perf_counter()
 library = standard_library()
 for query in "CH4 water hydrogen CO 124-38-9 oxygen N2 graphite ammonia SO2".split():
     library.find(query)
-found = time.perf_counter()
 import sys
-print(imported - start, found - imported, "numpy" in sys.modules)
+print("numpy" in sys.modules)
 """
 
 
-def test_ten_species_from_a_cold_start_cost_less_than_50_ms_and_no_numpy() -> None:
-    """Measured on a 2-core machine: 9 ms for the look-ups, 43 ms for the import. The best of several counts, so
-    that other work on the machine does not."""
-    lookups = []
-    for _ in range(5):
-        output = subprocess.run(
-            [sys.executable, "-c", COLD_START], capture_output=True, text=True, check=True
-        )
-        _, lookup, numpy_loaded = output.stdout.split()
-        assert numpy_loaded == "False"
-        lookups.append(float(lookup))
-    assert min(lookups) < 0.050
+def test_look_ups_from_a_cold_start_need_no_numpy() -> None:
+    output = subprocess.run([sys.executable, "-c", COLD_START], capture_output=True, text=True, check=True)
+    assert output.stdout.strip() == "False"
 
 
 def test_a_library_is_made_of_what_it_is_given() -> None:

@@ -131,9 +131,11 @@ class Components:
         if b.dtype != object and self._exact_weights:
             weights = self._float_adjugate[positions]
             terms = b[points]
-            accurate = dot(weights, terms)
+            with np.errstate(over="ignore", invalid="ignore"):  # amounts near the largest double
+                accurate = dot(weights, terms)
+                enough = np.abs(accurate) >= LOST * (np.abs(weights) * np.abs(terms)).sum(axis=1)
             m[points, positions] = accurate
-            lost = np.abs(accurate) < LOST * (np.abs(weights) * np.abs(terms)).sum(axis=1)
+            lost = ~(enough & np.isfinite(accurate))
             points, positions = points[lost], positions[lost]
         rows = self._adjugate.tolist()
         for point, component in zip(points, positions, strict=True):

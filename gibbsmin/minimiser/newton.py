@@ -306,7 +306,8 @@ def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Indi
     """Positions of points whose components should change, and for each (position of component, species)."""
     r = len(batch.components.columns)
     diagonal = sums.packed[:, [i * (i + 3) // 2 for i in range(r)]]
-    alarm = (diagonal > EXCHANGE_ALARM * np.exp(batch.log_y - sums.shift[:, None])).any(axis=1)
+    log_own = batch.log_y - sums.shift[:, None]
+    alarm = ((diagonal > EXCHANGE_ALARM * np.exp(log_own)) | (log_own < DEEP_TRACE)).any(axis=1)
     index = np.flatnonzero(alarm)
     if not index.size:
         return index, np.zeros((0, 2), dtype=np.intp)
