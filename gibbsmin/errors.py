@@ -8,6 +8,8 @@ GibbsminError
 +-- TemperatureRangeError    a temperature outside a species record's validity range
 +-- ScenarioError            a scenario file with faults (all of them attached)
 +-- ConditionsError          a feed, temperature or pressure that no gas can have
++-- ReactionError            a reaction that cannot be read, does not balance, or does not fit its use
++-- MeasurementError         measured values with faults (all of them attached)
 +-- FolderExistsError        an output folder that would be overwritten without being asked
 +-- MissingPackageError      an optional package that the request needs is not installed
 +-- ProblemError             arrays handed to the minimiser that do not fit together
@@ -94,6 +96,19 @@ class SpeciesDataError(_FaultyFileError):
 
 class ScenarioError(_FaultyFileError):
     """A scenario file has faults; all are listed."""
+
+
+class MeasurementError(_FaultyFileError):
+    """A table of measured values has faults; all are listed."""
+
+
+class ReactionError(GibbsminError):
+    """A reaction cannot be read, does not balance, or does not fit what it is used for."""
+
+    def __init__(self, reaction: str, reason: str) -> None:
+        self.reaction = reaction
+        self.reason = reason
+        super().__init__(f"reaction {reaction!r}: {reason}")
 
 
 class TemperatureRangeError(GibbsminError):
