@@ -39,7 +39,7 @@ def add_derived(
         results.update({str(name): array for name, array in part.data_vars.items()})
     complete = dataset.assign({name: array.variable for name, array in results.items()})
     order = dataset["status"].dims
-    for name, array in _named(dataset, wanted):
+    for name, array in named_results(dataset, wanted):
         own = variable_name(name, complete)
         # A result of amounts and of the feed has all dimensions, but not always in the order of the grid.
         variable = array.transpose(*order).variable
@@ -61,7 +61,8 @@ def variable_name(name: str, dataset: xr.Dataset) -> str:
     return own
 
 
-def _named(dataset: xr.Dataset, wanted: WantedResults) -> Iterator[tuple[str, xr.DataArray]]:
+def named_results(dataset: xr.Dataset, wanted: WantedResults) -> Iterator[tuple[str, xr.DataArray]]:
+    """The results that a scenario asks for by name, in the order of its sections."""
     for conversion in wanted.conversions:
         yield conversion.name, composition.conversion(dataset, conversion.species)
     for each in wanted.yields:

@@ -43,11 +43,25 @@ _FURTHER = ("grid", "further axes")
 
 def read_axis(reading: Reading, data: Any, kind: Any) -> Axis | None:
     """The temperature or pressure axis."""
+    # The cases of a study share their axes, and a long one in rational numbers takes longer than all the rest.
+    key = (repr(data), str(kind), reading.ambient)
+    if key in _axes_read:
+        return _axes_read[key]
+    remarks = len(reading.remarks)
     found = read_values(reading, data, ("grid", kind), kind)
     if found is None:
         return None
     assert found.unit is not None
-    return Axis(**_axis_fields(kind, found, Fraction(1), "K" if kind == "temperature" else "Pa"))
+    axis = Axis(**_axis_fields(kind, found, Fraction(1), "K" if kind == "temperature" else "Pa"))
+    if len(reading.remarks) == remarks:  # a remark is due to each scenario that gives cause for it
+        if len(_axes_read) >= _AXES_KEPT:
+            _axes_read.clear()
+        _axes_read[key] = axis
+    return axis
+
+
+_AXES_KEPT = 64
+_axes_read: dict[tuple[str, str, Fraction], Axis] = {}
 
 
 def streams_set_by_axes(reading: Reading, data: Mapping[str, Any]) -> dict[str, str]:

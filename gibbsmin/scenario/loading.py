@@ -17,7 +17,7 @@ from gibbsmin.scenario.reading import Reading
 from gibbsmin.scenario.species_choice import add_own_species, choose_species
 from gibbsmin.scenario.structure import check_structure
 from gibbsmin.scenario.wanted import read_cross_check, read_output, read_results
-from gibbsmin.strict_yaml import parse
+from gibbsmin.strict_yaml import Document, parse
 
 if TYPE_CHECKING:
     from gibbsmin.species import SpeciesLibrary
@@ -67,7 +67,18 @@ def parse_scenario(
 
     Raises ScenarioError with all faults.
     """
-    document = parse(text, file)
+    return build_scenario(parse(text, file), text, folder=folder, library=library)
+
+
+def build_scenario(
+    document: Document,
+    text: str,
+    *,
+    folder: str | PathLike[str] | None = None,
+    library: SpeciesLibrary | None = None,
+) -> Scenario:
+    """As `parse_scenario`, for a document read (or made) already; `text` is what the scenario keeps of it."""
+    file = document.file
     if document.data is None and not document.faults:
         raise ScenarioError([Fault("the file is empty", file)])
     data, faults = check_structure(document)

@@ -48,14 +48,14 @@ class Faulty:
 FAULTY = Faulty()
 
 
-def check_structure(document: Document) -> tuple[Any, list[Fault]]:
-    """Check a document against the schema.
+def check_structure(document: Document, rules: Schema | None = None) -> tuple[Any, list[Fault]]:
+    """Check a document against the schema of the scenario file, or against other `rules` without references.
 
     Returns the data without its faulty parts, so that the rest can be checked further (a faulty item of a
     list is replaced by `FAULTY`), and the faults.
     """
     faults: list[Fault] = []
-    cleaned = _Walk(document, faults).clean(document.data, schema(), ())
+    cleaned = _Walk(document, faults).clean(document.data, rules or schema(), ())
     return ({} if cleaned is FAULTY else cleaned), faults
 
 
