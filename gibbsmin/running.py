@@ -54,7 +54,7 @@ def run(
         raise MissingPackageError("pyarrow", "writing a Parquet table")
     conditions = scenario_conditions(scenario)
     dataset = solve(conditions, extrapolate=scenario.extrapolate, threads=threads, progress=progress)
-    dataset = add_derived(dataset, conditions.table, scenario.results, _fed_enthalpy(scenario))
+    dataset = add_derived(dataset, conditions.table, scenario.results, fed_enthalpy(scenario))
     wanted = scenario.cross_check
     check = cross_check(
         dataset,
@@ -104,7 +104,7 @@ def _coordinate(axis: Axis) -> xr.Variable:
     return xr.Variable((axis.name,), axis.array, {"units": units, "long_name": axis.title})
 
 
-def _fed_enthalpy(scenario: Scenario) -> xr.DataArray | None:
+def fed_enthalpy(scenario: Scenario) -> xr.DataArray | None:
     """Enthalpy of the feed, or None when a stream has no temperature (the scenario then says so)."""
     dims = tuple(axis.name for axis in scenario.further_axes)
     amounts = scenario.stream_amounts()
