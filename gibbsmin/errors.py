@@ -10,6 +10,9 @@ GibbsminError
 +-- ConditionsError          a feed, temperature or pressure that no gas can have
 +-- ReactionError            a reaction that cannot be read, does not balance, or does not fit its use
 +-- MeasurementError         measured values with faults (all of them attached)
++-- StudyError               a study file with faults (all of them attached)
++-- StudyRefusedError        a study that would not fit the disk, or whose folder is in use or holds something else
++-- StudyStoppedError        a study that could not go on (full disk, cluster lost); the same request resumes it
 +-- FolderExistsError        an output folder that would be overwritten without being asked
 +-- MissingPackageError      an optional package that the request needs is not installed
 +-- ProblemError             arrays handed to the minimiser that do not fit together
@@ -109,6 +112,38 @@ class ReactionError(GibbsminError):
         self.reaction = reaction
         self.reason = reason
         super().__init__(f"reaction {reaction!r}: {reason}")
+
+
+class StudyError(_FaultyFileError):
+    """A study file, or a case that it makes, has faults; all are listed."""
+
+
+class StudyRefusedError(GibbsminError):
+    """A study is not begun: it would not fit, or its folder is in use or holds something else.
+
+    `folder` is where it was to be kept.
+    """
+
+    def __init__(self, folder: str, reason: str) -> None:
+        self.folder = folder
+        self.reason = reason
+        super().__init__(f"{folder}: {reason}")
+
+
+class StudyStoppedError(GibbsminError):
+    """A study could not go on; what is finished is kept, and the same request goes on from there.
+
+    `finished` of its `chunks` are done.
+    """
+
+    def __init__(self, reason: str, finished: int, chunks: int) -> None:
+        self.reason = reason
+        self.finished = finished
+        self.chunks = chunks
+        super().__init__(
+            f"{reason}; {finished} of {chunks} chunks are finished and kept: once that is mended, "
+            "run the same command again and it goes on from there"
+        )
 
 
 class TemperatureRangeError(GibbsminError):
