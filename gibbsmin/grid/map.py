@@ -10,7 +10,7 @@ from itertools import pairwise
 import numpy as np
 
 from gibbsmin.grid.nodes import SPACING_LN_P, SPACING_LN_T, Axis, Floats, choose_nodes
-from gibbsmin.grid.polish import FIRST_REACH, STEPS, Feed, polish, prove
+from gibbsmin.grid.polish import SETTLED, Feed, Rectangle, polish, prove
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Amounts, Components
@@ -48,8 +48,9 @@ class Nodes:
         """The feed in these components, prepared once."""
         found = self._feeds.get(components.key)
         if found is None:
-            m = components.amounts(self.b[None, self.posed.system.rows])[0]
-            found = self._feeds[components.key] = Feed(self.posed, components, self.b.astype(np.float64), m)
+            m = components.amounts(self.b[None, self.posed.system.rows]).T
+            b = self.b.astype(np.float64)[:, None]
+            found = self._feeds[components.key] = Feed(self.posed, components, b, m)
         return found
 
     @cached_property
@@ -66,24 +67,33 @@ class Tile:
     components: Components
 
 
+def is_dense(temperature: Floats, log_pressure: Floats) -> bool:
+    """Whether a map has so many points that nodes pay; temperature (nT,) K and log_pressure (nP,) ascending."""
+    T_axis, p_axis = _axes(temperature, log_pressure)
+    return T_axis.size * p_axis.size * WORTHWHILE <= len(temperature) * len(log_pressure)
+
+
+def _axes(temperature: Floats, log_pressure: Floats) -> tuple[Axis, Axis]:
+    return choose_nodes(np.log(temperature), SPACING_LN_T), choose_nodes(log_pressure, SPACING_LN_P)
+
+
 def solve_nodes(
     A: Floats, b: Amounts, gibbs_RT: Floats, temperature: Floats, log_pressure: Floats
 ) -> Nodes | None:
-    """Solve the nodes of a map, level by level; None where a map of this size or kind does not gain by it.
+    """Solve the nodes of a map, level by level; None where one of them cannot be solved.
 
     Parameters: b (E,) mol; gibbs_RT (nT, S); temperature (nT,) K and log_pressure (nP,), both ascending.
     """
-    T_axis = choose_nodes(np.log(temperature), SPACING_LN_T)
-    p_axis = choose_nodes(log_pressure, SPACING_LN_P)
-    if T_axis.size * p_axis.size * WORTHWHILE > len(temperature) * len(log_pressure):
-        return None
+    T_axis, p_axis = _axes(temperature, log_pressure)
     levels = [(T_axis, p_axis)]
     while levels[-1][0].size > FIRST_LEVEL or levels[-1][1].size > FIRST_LEVEL:
         levels.append((levels[-1][0].coarser(), levels[-1][1].coarser()))
     nodes: Nodes | None = None
     for T_level, p_level in reversed(levels):
         g = gibbs_RT[np.searchsorted(np.log(temperature), T_level.node_positions)]
-        nodes = _first_nodes(A, b, g, T_level, p_level) if nodes is None else _refined(nodes, g, T_level, p_level)
+        nodes = (
+            _first_nodes(A, b, g, T_level, p_level) if nodes is None else _refined(nodes, g, T_level, p_level)
+        )
         if nodes is None:
             return None
     return nodes
@@ -110,7 +120,9 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nod
     for tile in tiles(coarse, *shape):
         log_y, total = estimate(coarse, tile)
         rows, lnp = g[tile.temperatures], p_axis.node_positions[tile.pressures]
-        done = polish(coarse.feed(tile.components), rows, lnp, log_y, total, first_reach=NODE_REACH)
+        points = Rectangle(rows, lnp)
+        feed = coarse.feed(tile.components)
+        done = polish(feed, points, log_y, total, longest=NODE_REACH, settled=NODE_REACH)
         size = (len(rows), len(lnp))
         at = (tile.temperatures, tile.pressures)
         log_x[at] = done.log_x.T.reshape(*size, -1)
@@ -119,7 +131,12 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nod
         if left.size:
             row, column = np.divmod(left, len(lnp))
             found = minimise_near(
-                coarse.posed, coarse.b, rows[row] + lnp[column, None], tile.components, log_y.T[left], total[left]
+                coarse.posed,
+                coarse.b,
+                rows[row] + lnp[column, None],
+                tile.components,
+                log_y.T[left],
+                total[left],
             )
             if not found.solved.all():
                 return None
@@ -166,8 +183,9 @@ def solve_tile(nodes: Nodes, tile: Tile, gibbs_RT: Floats, log_pressure: Floats,
     g = gibbs_RT[tile.temperatures][:, posed.kept]
     lnp = log_pressure[tile.pressures]
     log_y, log_total = estimate(nodes, tile)
-    polished = polish(nodes.feed(tile.components), g, lnp, log_y, log_total, first_reach=FIRST_REACH)
-    proved = prove(polished, g, lnp)
+    points = Rectangle(g, lnp)
+    polished = polish(nodes.feed(tile.components), points, log_y, log_total, longest=SETTLED, settled=SETTLED)
+    proved = prove(polished, points)
     shape = (len(g), len(lnp))
     at = (tile.temperatures, tile.pressures)
     by_species = np.moveaxis(out.amounts, -1, 0)
@@ -175,10 +193,12 @@ def solve_tile(nodes: Nodes, tile: Tile, gibbs_RT: Floats, log_pressure: Floats,
     total_amount = proved.total_amount.reshape(shape)
     for y, species in zip(polished.y, posed.kept, strict=True):
         np.multiply(y.reshape(shape), total_amount, out=by_species[(species, *at)])
-    np.moveaxis(out.element_potentials, -1, 0)[(slice(None), *at)] = proved.element_potentials.reshape(-1, *shape)
+    np.moveaxis(out.element_potentials, -1, 0)[(slice(None), *at)] = proved.element_potentials.reshape(
+        -1, *shape
+    )
     out.gap[at] = proved.gap.reshape(shape)
     out.balance_residual[at] = proved.balance_residual.reshape(shape)
-    out.iterations[at] = STEPS
+    out.iterations[at] = polished.steps
     out.status[at] = Status.SOLVED
     left = np.flatnonzero(~proved.good)
     if left.size:

@@ -55,7 +55,9 @@ class Axis:
     def coarser(self) -> Axis:
         """The nodes as an axis of their own, with fewer nodes."""
         kept = max(min(ORDER, self.size), -(-self.size // COARSER))
-        return Axis(self.node_positions, np.unique(np.rint(np.linspace(0, self.size - 1, kept)).astype(np.intp)))
+        return Axis(
+            self.node_positions, np.unique(np.rint(np.linspace(0, self.size - 1, kept)).astype(np.intp))
+        )
 
 
 def choose_nodes(positions: Floats, spacing: float) -> Axis:
@@ -80,5 +82,7 @@ def lagrange_weights(nodes: Floats, targets: Floats) -> Floats:
     rows = np.arange(len(targets))
     for k in range(order):
         others = np.delete(local, k, axis=1)
-        weights[rows, columns[:, k]] = ((targets[:, None] - others) / (local[:, k, None] - others)).prod(axis=1)
+        weights[rows, columns[:, k]] = ((targets[:, None] - others) / (local[:, k, None] - others)).prod(
+            axis=1
+        )
     return weights

@@ -16,6 +16,7 @@ from __future__ import annotations
 import threading
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,11 +28,8 @@ from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE, Posed
 
 Floats = NDArray[np.float64]
 
-FIRST_REACH = 1e-2
-"""Largest change of any ln y by the first step that lets the two steps come near LAST_ERROR."""
-
-STEPS = 2
-"""Newton steps that polishing takes."""
+SETTLED = 1e-2
+"""Largest change of any ln y by a step with its own Hessian that lets the next, without, come near LAST_ERROR."""
 
 LAST_ERROR = 1e-13
 """Largest product of the changes of both steps: the order of the error that is left in ln y."""
@@ -48,7 +46,10 @@ ROUNDING = 4.0 * np.finfo(np.float64).eps
 
 @dataclass(frozen=True)
 class Feed:
-    """What the points of one feed share: the posed problem, components, b (E,) and m (r,) [mol]."""
+    """What points share: the posed problem and components; and their element amounts.
+
+    b (E, 1) and m (r, 1) of elements and components [mol], or (E, n) and (r, n) where each point has its own.
+    """
 
     posed: Posed
     components: Components
@@ -81,9 +82,9 @@ class Feed:
         return np.vstack([self.to_all_sums[: 1 + len(self.m)], signed])
 
     @cached_property
-    def shift_reach(self) -> float:
-        """w.b of the vector that makes potentials dual feasible [mol]."""
-        return float(self.b @ shift_weight(self.posed.A[:, self.posed.kept]))
+    def shift_reach(self) -> Floats:
+        """(1,) or (n,) w.b of the vector that makes potentials dual feasible [mol]."""
+        return np.asarray(shift_weight(self.posed.A[:, self.posed.kept]) @ self.b)
 
     @cached_property
     def component_formulas(self) -> Floats:
@@ -96,9 +97,67 @@ class Feed:
         return np.asarray(np.linalg.inv(self.component_formulas[self.posed.system.rows].T))
 
 
+class Points(Protocol):
+    """Points (n,) whose species have potentials c = g / RT + ln p."""
+
+    def offsets(self, components: Components) -> tuple[Floats, Floats]:
+        """Delta of the standard potentials: an array (s, m, 1) or (s, 1, n) for n = m * k points, and ln p (n,)."""
+
+    def potentials(self, components: Components) -> Floats:
+        """(r, n) potentials of the components."""
+
+    def largest_potential(self) -> Floats:
+        """(n,) largest |c_j|, or a bound of it."""
+
+
+@dataclass(frozen=True)
+class Rectangle:
+    """nT temperatures by nP pressures, pressure running fastest.
+
+    gibbs_RT (nT, s) standard g / RT of the kept species; log_pressure (nP,) ln(p / p0).
+    """
+
+    gibbs_RT: Floats  # noqa: N815 - the field's own symbol
+    log_pressure: Floats
+
+    @cached_property
+    def log_pressures(self) -> Floats:
+        return np.tile(self.log_pressure, len(self.gibbs_RT))
+
+    def offsets(self, components: Components) -> tuple[Floats, Floats]:
+        standard = np.ascontiguousarray(components.offsets(self.gibbs_RT).T)
+        return standard[:, :, None], self.log_pressures
+
+    def potentials(self, components: Components) -> Floats:
+        standard = self.gibbs_RT[:, components.columns].T
+        return np.repeat(standard, len(self.log_pressure), axis=1) + self.log_pressures
+
+    def largest_potential(self) -> Floats:
+        return np.repeat(np.abs(self.gibbs_RT).max(axis=1), len(self.log_pressure)) + np.abs(
+            self.log_pressures
+        )
+
+
+@dataclass(frozen=True)
+class Scattered:
+    """Points without order: gibbs_RT (n, s) and log_pressures (n,) of each."""
+
+    gibbs_RT: Floats  # noqa: N815 - the field's own symbol
+    log_pressures: Floats
+
+    def offsets(self, components: Components) -> tuple[Floats, Floats]:
+        return np.ascontiguousarray(components.offsets(self.gibbs_RT).T)[:, None, :], self.log_pressures
+
+    def potentials(self, components: Components) -> Floats:
+        return self.gibbs_RT[:, components.columns].T + self.log_pressures
+
+    def largest_potential(self) -> Floats:
+        return np.asarray(np.abs(self.gibbs_RT).max(axis=1) + np.abs(self.log_pressures))
+
+
 @dataclass
 class Polished:
-    """Points (n,) after two steps; arrays hold the points last.
+    """Points (n,) after the steps; arrays hold the points last.
 
     y and log_x live in the thread's work space: they last until its next call of polish.
     """
@@ -108,9 +167,10 @@ class Polished:
     log_x: Floats  # (s, n)
     log_y: Floats  # (r, n) of the components
     log_total: Floats  # (n,)
-    first_reach: Floats  # (n,) largest change of any ln y
-    second_reach: Floats
+    first_reach: Floats  # (n,) largest change of any ln y by the last step with a Hessian of its own
+    second_reach: Floats  # (n,) the same of the step that reuses it
     usable: NDArray[np.bool_]  # (n,) whether the steps could be taken
+    steps: int
 
 
 _work_space = threading.local()
@@ -125,49 +185,67 @@ def _scratch(species: int, points: int) -> list[Floats]:
 
 
 def polish(
-    feed: Feed, gibbs_RT: Floats, log_pressure: Floats, log_y: Floats, log_total: Floats, *, first_reach: float
+    feed: Feed,
+    points: Points,
+    log_y: Floats,
+    log_total: Floats,
+    *,
+    longest: float,
+    settled: float,
+    most_steps: int = 1,
+    stragglers: float = 0.0,
 ) -> Polished:
-    """Take two Newton steps at nT temperatures by nP pressures, n = nT nP points, pressure running fastest.
+    """Take Newton steps until all of them are short, then one more that reuses the last Hessian.
 
     Parameters
     ----------
-    gibbs_RT : (nT, s) standard g / RT of the kept species.
-    log_pressure : (nP,) ln(p / p0).
     log_y, log_total : (r, n), (n,) estimates of ln y of the components and of ln(N / mol).
-    first_reach : largest change of any ln y that the first step may bring.
+    longest : largest change of ln y of a component that a step may bring; longer steps are shortened to it.
+    settled : change of any ln y in one step below which no further Hessian is formed.
+    most_steps : Hessians at the most; a point whose last step was not settled is not usable.
+    stragglers : part of the points that is not waited for.
     """
-    m = feed.m[:, None]
+    m = feed.m
     r = len(m)
-    lnp = np.tile(log_pressure, len(gibbs_RT))
-    offsets = np.ascontiguousarray(feed.components.offsets(gibbs_RT).T)
-    exponents, y, growth = _scratch(len(feed.to_exponents), len(lnp))
+    standard, lnp = points.offsets(feed.components)
+    exponents, y, growth = _scratch(len(feed.to_change), len(lnp))
+    # ln y_j = sum_i C_ij (ln y_i + ln p) - Delta_j - ln p
     np.matmul(feed.to_exponents, np.concatenate([log_y + lnp, lnp[None, :]]), out=exponents)
-    by_temperature = exponents.reshape(len(exponents), len(gibbs_RT), len(log_pressure))
-    by_temperature -= offsets[:, :, None]
+    exponents.reshape(len(exponents), standard.shape[1], -1)[...] -= standard
+    usable = np.ones(len(lnp), dtype=bool)
+    steps = 0
     with np.errstate(all="ignore"):  # what goes wrong in a point shows in `usable`
-        np.exp(exponents, out=y)
-        table = feed.to_all_sums @ y
-        total, balance, packed = table[0], table[1 : 1 + r], table[1 + r :]
-        condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
-        factors = Factors.of_packed(packed)
-        to_target = factors.solve(m * np.exp(-log_total))
-        to_balance = factors.solve(balance)
-        by_balance = (balance * to_balance).sum(axis=0)
-        ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / by_balance
-        first = to_target / ratio - to_balance
-        reach = feed.components.largest @ np.abs(first)
-        usable = (reach < first_reach) & (condition < ILL_CONDITIONED) & (np.abs(ratio - 1.0) < first_reach)
-        if not usable.all():
-            first[:, ~usable], ratio[~usable] = 0.0, 1.0
-        log_total = log_total + np.log(ratio)
-        exponents += np.matmul(feed.to_change, first, out=growth)
+        while True:
+            np.exp(exponents, out=y)
+            table = feed.to_all_sums @ y
+            total, balance, packed = table[0], table[1 : 1 + r], table[1 + r :]
+            condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
+            factors = Factors.of_packed(packed)
+            to_target = factors.solve(m * np.exp(-log_total))
+            to_balance = factors.solve(balance)
+            by_balance = (balance * to_balance).sum(axis=0)
+            ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / by_balance
+            first = to_target / ratio - to_balance
+            reach = np.maximum(feed.components.largest @ np.abs(first), np.abs(ratio - 1.0))
+            usable &= (condition < ILL_CONDITIONED) & (ratio > 0.0)
+            if not usable.all():
+                first[:, ~usable], ratio[~usable] = 0.0, 1.0
+            length = np.minimum(1.0, longest / np.abs(first).max(axis=0))
+            first *= length
+            log_total = log_total + length * np.log(ratio)
+            log_y = log_y + first
+            exponents += np.matmul(feed.to_change, first, out=growth)
+            steps += 1
+            unsettled = np.count_nonzero(usable & (reach >= settled))
+            if steps == most_steps or unsettled <= stragglers * len(lnp):
+                break
         np.exp(exponents, out=y)
         table = feed.to_balances[: 1 + r] @ y
         to_missing = factors.solve(m * np.exp(-log_total) - table[1:])
         change = ((balance * to_missing).sum(axis=0) - 1.0 + table[0]) / by_balance
         second = to_missing - to_balance * change
         second_reach = feed.components.largest @ np.abs(second) + np.abs(change)
-        usable &= second_reach < first_reach
+        usable &= (reach < settled) & (second_reach < settled)
         if not usable.all():
             second[:, ~usable], change[~usable] = 0.0, 0.0
         np.matmul(feed.to_change, second, out=growth)
@@ -175,7 +253,7 @@ def polish(
         growth += 1.0
         y *= growth
     log_total += np.log1p(change)
-    return Polished(feed, y, exponents, log_y + first + second, log_total, reach, second_reach, usable)
+    return Polished(feed, y, exponents, log_y + second, log_total, reach, second_reach, usable, steps + 1)
 
 
 @dataclass
@@ -189,29 +267,27 @@ class Proved:
     good: NDArray[np.bool_]
 
 
-def prove(polished: Polished, gibbs_RT: Floats, log_pressure: Floats) -> Proved:
+def prove(polished: Polished, points: Points) -> Proved:
     """Certificate of polished points (see minimiser/certificate.py), from few sums.
 
-    ln y_j and the level a_j.pi - c_j that the potentials assign differ by no more than the error of the second step,
+    ln y_j and the level a_j.pi - c_j that the potentials assign differ by no more than the error of the last step,
     which took exp(d) as 1 + d, and the rounding of the exponents.
     """
     feed = polished.feed
     components, posed = feed.components, feed.posed
     r = len(feed.m)
-    lnp = np.tile(log_pressure, len(gibbs_RT))
     total_amount = np.exp(polished.log_total)
     table = feed.to_balances @ polished.y
     total = table[0]
-    terms = components.largest @ np.abs(polished.log_y + lnp) + np.abs(lnp)
-    terms += np.repeat(np.abs(gibbs_RT).max(axis=1) * (1.0 + np.abs(components.C).sum(axis=0).max()), len(log_pressure))
+    potentials = polished.log_y + points.potentials(components)
+    terms = (1.0 + np.abs(components.C).sum(axis=0).max()) * points.largest_potential()
+    terms += components.largest @ np.abs(polished.log_y)
     uncertainty = polished.second_reach**2 + ROUNDING * terms
-    b = feed.b[:, None]
-    missed = total_amount * (feed.component_formulas @ table[1 : 1 + r]) - b
-    turnover = np.repeat(np.maximum(np.abs(b), TINY), len(total), axis=1)
+    missed = total_amount * (feed.component_formulas @ table[1 : 1 + r]) - feed.b
+    turnover = np.broadcast_to(np.maximum(np.abs(feed.b), TINY), missed.shape).copy()
     turnover[feed.signed_rows] = np.maximum(total_amount * table[1 + r :], TINY)
     residual = (np.abs(missed) / turnover).max(axis=0)
-    potentials = polished.log_y + np.repeat(gibbs_RT[:, components.columns].T, len(log_pressure), axis=1) + lnp
-    pi = np.full((len(b), len(total)), np.nan)
+    pi = np.full(missed.shape, np.nan)
     pi[posed.A[:, posed.kept].any(axis=1)] = 0.0
     pi[posed.system.rows] = feed.to_potentials @ potentials
     log_sum = np.log(total)
@@ -220,5 +296,5 @@ def prove(polished: Polished, gibbs_RT: Floats, log_pressure: Floats) -> Proved:
     imbalance = np.abs(missed[posed.system.rows] * pi[posed.system.rows]).sum(axis=0)
     gap = np.maximum(above_dual + imbalance + excess * feed.shift_reach, 0.0)
     good = polished.usable & (polished.first_reach * polished.second_reach < LAST_ERROR)
-    good &= (residual <= BALANCE_TOLERANCE) & (gap <= GAP_TOLERANCE * np.abs(feed.b).sum())
+    good &= (residual <= BALANCE_TOLERANCE) & (gap <= GAP_TOLERANCE * np.abs(feed.b).sum(axis=0))
     return Proved(total_amount, pi, gap, residual, good)

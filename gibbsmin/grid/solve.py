@@ -16,12 +16,16 @@ import numpy as np
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
-from gibbsmin.grid.map import solve_nodes, solve_tile, tiles
+from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
+from gibbsmin.grid.scattered import Cloud, take_sample, tasks
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 
-SMALLEST_TASK, LARGEST_TASK = 1024, 16384
-"""Scattered points a task: many, so that enough of them share their components, but enough tasks for all threads."""
+SMALLEST_TASK, LARGEST_TASK, TASKS = 1024, 16384, 8
+"""Scattered points a task: many, so that enough of them share their components, but enough tasks for some threads.
+
+The number of threads has no say: it must not show in the rounding of the results.
+"""
 
 Progress = Callable[[int], None]
 Indices = NDArray[np.intp]
@@ -57,52 +61,54 @@ def solve_grid(
     shape = (len(element_amounts), len(temperature), len(log_pressure))
     T, T_order = np.unique(temperature, return_index=True)
     p, p_order = np.unique(log_pressure, return_index=True)
-    if (len(T), len(p)) != shape[1:]:
-        return _as_points(
-            formula_matrix, element_amounts, gibbs_RT, log_pressure, shape, threads=threads, progress=progress
-        )
+    distinct = (len(T), len(p)) == shape[1:]
+    if not (distinct and np.isfinite(gibbs_RT).all() and is_dense(T, p)):
+        feed, T_index, p_index = (index.ravel() for index in np.indices(shape))
+        return solve_points(
+            formula_matrix,
+            element_amounts,
+            gibbs_RT,
+            temperature,
+            log_pressure,
+            feed,
+            T_index,
+            p_index,
+            threads=threads,
+            progress=progress,
+        ).reshaped(shape)
     g = gibbs_RT[T_order]
     out = GridSolution.blank(shape, *formula_matrix.shape)
     with _workers(threads) as pool:
         for feed, b in enumerate(element_amounts):
-            mine = out.part(feed)
-            nodes = solve_nodes(formula_matrix, b, g, T, p)
-            if nodes is None:
-                points = _as_points(
-                    formula_matrix, b[None], g, p, (1, *shape[1:]), threads=threads, progress=progress
-                )
-                mine.fill(..., points.part(0))
-                continue
-            work = (
-                lambda tile=tile: solve_tile(nodes, tile, g, p, mine)  # noqa: B023
-                for tile in tiles(nodes, len(T), len(p))
-            )
-            _run(pool, work, progress)
+            _run(pool, _map_tasks(formula_matrix, b, g, T, p, out.part(feed)), progress)
     if (np.diff(T_order) > 0).all() and (np.diff(p_order) > 0).all():
         return out
     return out.part((slice(None), *np.ix_(np.argsort(T_order), np.argsort(p_order))))
 
 
-def _as_points(
-    formula_matrix: Floats,
-    element_amounts: Amounts,
-    gibbs_RT: Floats,
-    log_pressure: Floats,
-    shape: tuple[int, ...],
-    *,
-    threads: int | None,
-    progress: Progress | None,
-) -> GridSolution:
-    feed, T, p = (index.ravel() for index in np.indices(shape))
-    return solve_points(
-        formula_matrix, element_amounts, gibbs_RT, log_pressure, feed, T, p, threads=threads, progress=progress
-    ).reshaped(shape)
+def _map_tasks(
+    A: Floats, b: Amounts, g: Floats, T: Floats, p: Floats, out: GridSolution
+) -> Iterator[Callable[[], int]]:
+    """Work on the tiles of one feed's map; where its nodes cannot be solved, on rows of temperature from nothing."""
+    nodes = solve_nodes(A, b, g, T, p)
+    if nodes is not None:
+        for tile in tiles(nodes, len(T), len(p)):
+            yield lambda tile=tile: solve_tile(nodes, tile, g, p, out)  # type: ignore[misc]
+        return
+    for row in range(len(T)):
+
+        def task(row: int = row) -> int:
+            out.fill(row, minimise(A, b, g[row] + p[:, None]))
+            return len(p)
+
+        yield task
 
 
 def solve_points(
     formula_matrix: Floats,
     element_amounts: Amounts,
     gibbs_RT: Floats,
+    temperature: Floats,
     log_pressure: Floats,
     feed_index: Indices,
     temperature_index: Indices,
@@ -115,20 +121,34 @@ def solve_points(
 
     Other parameters as in :func:`solve_grid`. Returns a GridSolution with leading shape (N,).
     """
-    points = len(feed_index)
-    out = GridSolution.blank((points,), *formula_matrix.shape)
-
-    size = int(np.clip(points // (threads or available_cores()), SMALLEST_TASK, LARGEST_TASK))
-
-    def solve(first: int) -> int:
-        at = slice(first, min(first + size, points))
-        potentials = gibbs_RT[temperature_index[at]] + log_pressure[pressure_index[at], None]
-        out.fill(at, minimise(formula_matrix, element_amounts[feed_index[at]], potentials))
-        return int(at.stop - at.start)
-
+    cloud = Cloud(
+        formula_matrix,
+        element_amounts,
+        gibbs_RT,
+        temperature,
+        log_pressure,
+        feed_index,
+        temperature_index,
+        pressure_index,
+    )
+    out = GridSolution.blank((len(feed_index),), *formula_matrix.shape)
     with _workers(threads) as pool:
-        _run(pool, (lambda first=first: solve(first) for first in range(0, points, size)), progress)
+        sample = take_sample(cloud)
+        work = _from_nothing(cloud, out) if sample is None else tasks(cloud, sample, out)
+        _run(pool, work, progress)
     return out
+
+
+def _from_nothing(cloud: Cloud, out: GridSolution) -> Iterator[Callable[[], int]]:
+    points = len(cloud.feed)
+    size = int(np.clip(points // TASKS, SMALLEST_TASK, LARGEST_TASK))
+    for first in range(0, points, size):
+
+        def task(index: Indices = np.arange(first, min(first + size, points))) -> int:  # noqa: B008
+            out.fill(index, minimise(cloud.A, cloud.b[cloud.feed[index]], cloud.potentials(index)))
+            return len(index)
+
+        yield task
 
 
 @contextmanager

@@ -18,7 +18,7 @@ from collections.abc import Sequence
 from fractions import Fraction
 from functools import cached_property, lru_cache
 from math import gcd, lcm, log
-from typing import Any
+from typing import Any, Generic, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -51,6 +51,13 @@ CANCELLATION = 1e-2
 
 LOST = 1e-20
 """Below this part even these are few: it is then summed exactly, and a zero found to be one."""
+
+
+FEASIBLE_KEPT = 1024
+COMPONENTS_KEPT = 4096
+
+Key = TypeVar("Key")
+Value = TypeVar("Value")
 
 
 def exact(value: Any) -> Fraction:
@@ -140,7 +147,11 @@ class Components:
         rows = self._adjugate.tolist()
         for point, component in zip(points, positions, strict=True):
             sum_of_terms = sum(
-                (weight * exact(value) for weight, value in zip(rows[component], b[point], strict=True) if weight),
+                (
+                    weight * exact(value)
+                    for weight, value in zip(rows[component], b[point], strict=True)
+                    if weight
+                ),
                 Fraction(0),
             )
             m[point, component] = float(sum_of_terms)
@@ -203,6 +214,19 @@ class Components:
         return self.system.components(columns)
 
 
+class BoundedCache(dict[Key, Value], Generic[Key, Value]):
+    """A dictionary that is emptied when full: a long run must not keep every feed it has seen."""
+
+    def __init__(self, capacity: int) -> None:
+        super().__init__()
+        self.capacity = capacity
+
+    def __setitem__(self, key: Key, value: Value) -> None:
+        if len(self) >= self.capacity:
+            self.clear()
+        super().__setitem__(key, value)
+
+
 class FormulaSystem:
     """A formula matrix prepared for exact component arithmetic.
 
@@ -220,9 +244,11 @@ class FormulaSystem:
         self.integers = integers[self.rows]
         self.scale = scale
         self.rank = len(rows)
-        self._restricted: dict[tuple[tuple[int, ...], tuple[int, ...] | None], FormulaSystem] = {}
-        self.known_feasible: list[Components] = []
-        self._components: dict[tuple[int, ...], Components] = {}
+        self._restricted = BoundedCache[tuple[tuple[int, ...], tuple[int, ...] | None], FormulaSystem](
+            FEASIBLE_KEPT
+        )
+        self.feasible = BoundedCache[tuple[Any, ...], Components | None](FEASIBLE_KEPT)
+        self._components = BoundedCache[tuple[int, ...], Components](COMPONENTS_KEPT)
 
     @property
     def n_species(self) -> int:

@@ -7,6 +7,8 @@ together as long as they share their components.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import ArrayLike
 
@@ -120,13 +122,15 @@ def _solve_posed(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: 
     independent = b[np.ix_(points, posed.system.rows)]
     costs = c[np.ix_(points, posed.kept)]
     starts, impossible = estimates(posed.system, independent, costs)
-    for point in points[impossible]:
-        _retry_nearest(posed, b, c, point, answers)
+    for members in _same_amounts(b, points[impossible]):
+        _retry_nearest(posed, b, c, members, answers)
     batches = []
     for start in starts:
         excluding = start.excluded.any(axis=1)
         for pattern, members in alike(start.excluded[excluding], np.flatnonzero(excluding)):
-            _solve_alike(posed.A, posed.kept[~pattern.astype(bool)], b, c, points[start.points[members]], answers)
+            _solve_alike(
+                posed.A, posed.kept[~pattern.astype(bool)], b, c, points[start.points[members]], answers
+            )
         full = np.flatnonzero(~excluding)
         if full.size:
             at = start.points[full]
@@ -138,14 +142,24 @@ def _solve_posed(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: 
         posed.finish(batch, b[points], costs, points, answers)
 
 
-def _retry_nearest(posed: Posed, b: Amounts, c: Floats, point: np.intp, answers: Answers) -> None:
-    """A point whose element amounts lie just outside what the species can hold, by rounding."""
-    balanced = nearest_balanced(posed.system, b[point, posed.system.rows], BALANCE_TOLERANCE)
+def _same_amounts(b: Amounts, points: Indices) -> list[Indices]:
+    """Points grouped by equal element amounts."""
+    groups: dict[tuple[Any, ...], list[np.intp]] = {}
+    for point in points:
+        groups.setdefault(tuple(b[point].tolist()), []).append(point)
+    return [np.array(members) for members in groups.values()]
+
+
+def _retry_nearest(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
+    """Points whose common element amounts lie just outside what the species can hold, by rounding."""
+    given = b[points[0]]
+    balanced = nearest_balanced(posed.system, given[posed.system.rows], BALANCE_TOLERANCE)
     if balanced is None:
         return
-    corrected = np.array([[exact(value) for value in b[point]]], dtype=object)
+    corrected = np.array([[exact(value) for value in given]], dtype=object)
     corrected[0, posed.system.rows] = balanced
-    alone = Answers.blank(1, *posed.A.shape)
-    _solve_alike(posed.A, posed.kept, corrected, c[point : point + 1], np.array([0]), alone)
+    apart = Answers.blank(len(points), *posed.A.shape)
+    every = np.arange(len(points))
+    _solve_alike(posed.A, posed.kept, corrected.repeat(len(points), axis=0), c[points], every, apart)
     for name, values in vars(answers).items():
-        values[point] = getattr(alone, name)[0]
+        values[points] = getattr(apart, name)

@@ -31,7 +31,7 @@ def minimise_near(
     Parameters
     ----------
     posed : the problem, shared by all points.
-    b : (E,) mol, shared by all points.
+    b : (E,) mol, shared by all points, or (n, E).
     c : (n, s) potentials of the kept species.
     components : of the estimates.
     log_y : (n, r) ln mole fractions of the components.
@@ -42,11 +42,11 @@ def minimise_near(
     Minimum of all S species.
     """
     points = np.arange(len(c))
-    repeated = np.repeat(b[None, :], len(c), axis=0)
-    independent = repeated[:, posed.system.rows]
+    of_each = np.broadcast_to(b, (len(c), b.shape[-1]))
+    independent = of_each[:, posed.system.rows]
     m = components.amounts(independent)
     batch = Batch.begin(components, points, m, log_y.copy(), np.exp(log_total), c)
     answers = Answers.blank(len(c), *posed.A.shape)
     for finished in minimise_batches([batch], independent, c):
-        posed.finish(finished, repeated, c, points, answers)
+        posed.finish(finished, of_each, c, points, answers)
     return answers.minimum()

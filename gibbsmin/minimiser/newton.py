@@ -169,26 +169,29 @@ def minimise_batches(batches: list[Batch], b: Amounts, c: Floats) -> list[Batch]
     """
     finished: list[Batch] = []
     queue = list(batches)
-    while queue:
-        batch = queue.pop()
-        if len(batch.points) > BATCH:
-            queue.append(batch.take(np.arange(BATCH, len(batch.points))))
-            batch = batch.take(np.arange(BATCH))
-        while len(batch.points):
-            log_all = batch.log_mole_fractions()
-            sums = sums_over_species(batch.components, log_all.copy())
-            misfits, exchanges = _exchanges(batch, sums, log_all)
-            if misfits.size:
-                queue.extend(_exchanged(batch.take(misfits), exchanges, log_all[misfits], b, c))
-                stay = np.setdiff1d(np.arange(len(batch.points)), misfits, assume_unique=True)
-                batch, sums, log_all = batch.take(stay), sums.take(stay), log_all[stay]
-                if not stay.size:
-                    break
-            done = _step(batch, sums, log_all)
-            if done.any():
-                finished.append(batch.take(np.flatnonzero(done)))
-                batch = batch.take(np.flatnonzero(~done))
-        queue = _merged(queue)
+    with np.errstate(
+        all="ignore"
+    ):  # trial values far off may overflow; what is accepted is judged at the end
+        while queue:
+            batch = queue.pop()
+            if len(batch.points) > BATCH:
+                queue.append(batch.take(np.arange(BATCH, len(batch.points))))
+                batch = batch.take(np.arange(BATCH))
+            while len(batch.points):
+                log_all = batch.log_mole_fractions()
+                sums = sums_over_species(batch.components, log_all.copy())
+                misfits, exchanges = _exchanges(batch, sums, log_all)
+                if misfits.size:
+                    queue.extend(_exchanged(batch.take(misfits), exchanges, log_all[misfits], b, c))
+                    stay = np.setdiff1d(np.arange(len(batch.points)), misfits, assume_unique=True)
+                    batch, sums, log_all = batch.take(stay), sums.take(stay), log_all[stay]
+                    if not stay.size:
+                        break
+                done = _step(batch, sums, log_all)
+                if done.any():
+                    finished.append(batch.take(np.flatnonzero(done)))
+                    batch = batch.take(np.flatnonzero(~done))
+            queue = _merged(queue)
     return _merged(finished)
 
 

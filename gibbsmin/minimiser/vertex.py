@@ -152,22 +152,18 @@ def _feasible_groups(system: FormulaSystem, b: Amounts) -> tuple[list[_Visit], I
     left = np.arange(len(b))
     visits: list[_Visit] = []
     impossible: list[Indices] = []
-    for components in system.known_feasible:
-        fits = (components.amounts(b[left]) >= 0.0).all(axis=1)
-        if fits.any():
-            visits.append(_Visit(components, components, left[fits]))
-            left = left[~fits]
-            if not left.size:
-                break
     while left.size:
-        found = _feasible_components(system, b[left[:1]])
+        # remembered by the amounts alone: what was solved before must not leave its mark on the rounding
+        amounts = tuple(b[left[0]].tolist())
+        found = system.feasible.get(amounts)
+        if found is None:
+            found = system.feasible[amounts] = _feasible_components(system, b[left[:1]])
         if found is None:
             fits = (b[left] == b[left[0]]).all(axis=1)
             impossible.append(left[fits])
         else:
             fits = (found.amounts(b[left]) >= 0.0).all(axis=1)
             visits.append(_Visit(found, found, left[fits]))
-            system.known_feasible.append(found)
         left = left[~fits]
     return visits, np.concatenate(impossible) if impossible else np.zeros(0, dtype=np.intp)
 
