@@ -1,0 +1,113 @@
+"""Results as tables: extremes over the grid, and the whole picture at chosen points."""
+
+from __future__ import annotations
+
+import itertools
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from gibbsmin.figures import key_species
+from gibbsmin.figures.labels import number
+from gibbsmin.outcome.summary import key_results
+from gibbsmin.report.markup import Markup, pretty_name, pretty_words, table, tag
+from gibbsmin.report.quantities import quantities, unit_shown
+from gibbsmin.report.quantity_text import axis_value, place
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from gibbsmin.outcome import Outcome
+    from gibbsmin.scenario.model import Scenario
+
+_MOST_SPECIES = 16
+_LEAST_FRACTION = 1e-6  # a species below it at all chosen points is left to the charts
+_MOST_POINTS = 9
+_SHOWN_KINDS = ("result", "energy", "property")
+
+
+def results_part(outcome: Outcome) -> list[Markup | None]:
+    return [_extremes(outcome), *_at_chosen_points(outcome)]
+
+
+def _extremes(outcome: Outcome) -> Markup:
+    rows = [_extreme_row(name, array, outcome) for name, array in key_results(outcome)]
+    headings = ["result", "unit", "lowest", "at", "highest", "at"]
+    caption = "Lowest and highest value of each result over the grid"
+    return table(caption, headings, rows, words=(1, 3, 5))
+
+
+def _extreme_row(name: str, array: xr.DataArray, outcome: Outcome) -> list[object]:
+    unit, factor = unit_shown(array)
+    values = array.transpose(*outcome.dataset["status"].dims).values
+    species, comma, rest = name.partition(",")
+    shown = pretty_name(species) + comma + rest if comma else pretty_words(name)
+    if not np.isfinite(values).any():
+        return [shown, unit or "–", "–", "–", "–", "–"]
+    ends: list[object] = []
+    for at in (int(np.nanargmin(values)), int(np.nanargmax(values))):
+        index = [int(i) for i in np.unravel_index(at, values.shape)]
+        ends += [number(float(values.flat[at]) * factor), place(index, outcome.scenario) or "–"]
+    return [shown, unit or "–", *ends]
+
+
+def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
+    scenario = outcome.scenario
+    points = chosen_points(scenario)
+    dataset = outcome.dataset
+    fraction = dataset["mole_fraction"].transpose(*dataset["status"].dims, "species").values
+    names = [str(name) for name in dataset["species"].values]
+    columns = [fraction[index] for index in points]
+    largest = np.nan_to_num(np.max(columns, axis=0))
+    order = sorted(range(len(names)), key=lambda i: -largest[i])
+    wanted = [
+        names.index(name) for name in key_species(dataset, scenario.results.key_species) if name in names
+    ]
+    ordered = dict.fromkeys([*wanted, *(i for i in order if largest[i] > _LEAST_FRACTION)][:_MOST_SPECIES])
+    headings = ["point", "unit", *(str(position) for position in range(1, len(points) + 1))]
+    rows: list[list[object]] = [
+        [axis.title, "", *(axis_value(axis, index[position]) for index in points)]
+        for position, axis in enumerate(scenario.axes)
+    ]
+    rows += [[pretty_name(names[i]), "mol/mol", *(_figure(column[i]) for column in columns)] for i in ordered]
+    for each in quantities(dataset):
+        if each.kind in _SHOWN_KINDS:
+            values = each.values.transpose(*dataset["status"].dims).values
+            rows.append([each.label, each.unit or "–", *(_figure(values[index]) for index in points)])
+    where = _window_words(outcome.scenario, len(points))
+    held = [axis.title for axis in scenario.further_axes if len(axis) > 1]
+    if held:
+        where += f", lowest and highest {held[0]}"
+        where += f", {' and '.join(held[1:])} in the middle" if held[1:] else ""
+    caption = f"Composition and results at chosen points: {where}"
+    others = len(names) - len(ordered)
+    note = f"{others} further species are below the limit of this table; the charts and results.nc hold them."
+    return [table(caption, headings, rows, words=(1,)), tag("p", note, class_="note") if others else None]
+
+
+def chosen_points(scenario: Scenario) -> list[tuple[int, ...]]:
+    """Corners and middle of temperature and pressure, at both ends of the first further axis with several values.
+
+    Other further axes are held in the middle. In the order of the grid, each point once.
+    """
+    varied = next((axis.name for axis in scenario.further_axes if len(axis) > 1), None)
+    further = []
+    for axis in scenario.further_axes:
+        ends = [0, len(axis) - 1] if axis.name == varied else [len(axis) // 2]
+        further.append(sorted(set(ends)))
+    t, p = len(scenario.temperature), len(scenario.pressure)
+    window = sorted({*itertools.product((0, t - 1), (0, p - 1)), (t // 2, p // 2)})
+    if varied is not None:  # two ends of a further axis: the middle of the window would make too many columns
+        window = sorted(set(itertools.product((0, t - 1), (0, p - 1))))
+    return [(*left, *right) for left in itertools.product(*further) for right in window][:_MOST_POINTS]
+
+
+def _window_words(scenario: Scenario, points: int) -> str:
+    if points == 1:
+        return "the only point"
+    varied = any(len(axis) > 1 for axis in scenario.further_axes)
+    return "corners of temperature and pressure" + ("" if varied else ", and their middle")
+
+
+def _figure(value: float) -> str:
+    return number(float(value)) if np.isfinite(value) else "not solved"
