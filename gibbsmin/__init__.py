@@ -35,6 +35,8 @@ _HOME_OF = {
     "standard_library": "gibbsmin.species",
 }
 
+_GIVE_DATASETS = frozenset({"equilibrium", "run"})
+
 __all__ = [
     "Outcome",
     "__version__",
@@ -55,6 +57,8 @@ def __getattr__(name: str) -> Any:
         value = import_module("gibbsmin.errors")
     elif name in _HOME_OF:
         value = getattr(import_module(_HOME_OF[name]), name)
+        if name in _GIVE_DATASETS:
+            import_module("gibbsmin.notebook")  # lets a data set plot itself: dataset.gibbsmin.plot
     else:
         raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
     globals()[name] = value  # kept, so that the next access does not come here

@@ -153,6 +153,7 @@ def _add_run(parser: argparse.ArgumentParser) -> None:
         "--table", choices=("csv", "parquet"), help="save the results as a plain table as well"
     )
     parser.add_argument("--no-figures", action="store_true", help="draw nothing")
+    parser.add_argument("--no-report", action="store_true", help="leave out report.html")
     parser.add_argument("-v", "--verbose", action="store_true", help="say what is being done")
     parser.set_defaults(command=_run)
 
@@ -186,7 +187,7 @@ def _run(options: argparse.Namespace) -> int:
         outcome = run(scenario, threads=options.threads, progress=solved, check_progress=checked)
     tell(f"saving in {folder}")
     figures = _Figures(outcome, wanted=not options.no_figures)
-    outcome.save(folder, overwrite=options.overwrite, further_files=figures.write)
+    outcome.save(folder, overwrite=options.overwrite, further_files=_further_files(outcome, figures, options))
     print(outcome.summary())
     print()
     print("\n".join([*_files(folder), *figures.in_words()]))
@@ -207,6 +208,21 @@ def _with_options(scenario: Scenario, options: argparse.Namespace) -> Scenario:
         tables = (*scenario.output.tables, options.table)
         scenario = replace(scenario, output=replace(scenario.output, tables=tables))
     return scenario
+
+
+def _further_files(
+    outcome: Outcome, figures: _Figures, options: argparse.Namespace
+) -> Callable[[Path], None]:
+    """What goes into the folder beside the data: the figures and the report, as far as they are wanted."""
+
+    def write(folder: Path) -> None:
+        figures.write(folder)
+        if not options.no_report:
+            from gibbsmin.report import REPORT_FILE, write_report
+
+            write_report(outcome, folder / REPORT_FILE)
+
+    return write
 
 
 class _Figures:

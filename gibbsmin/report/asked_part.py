@@ -56,7 +56,7 @@ def _feed(scenario: Scenario) -> Markup:
     note = [
         tag(
             "p",
-            f"The amount of the stream {axis.stream} follows the axis {axis.title}; its composition stays.",
+            f"The amount of the stream {axis.stream} follows the axis {pretty_words(axis.title)}; its composition stays.",
         )
         for axis in scenario.further_axes
     ]
@@ -75,7 +75,13 @@ def _span(values: NDArray[np.float64]) -> str:
 
 def _grid(scenario: Scenario) -> Markup:
     rows = [
-        [axis.title, f"{len(axis):,}", axis_value(axis, 0), axis_value(axis, len(axis) - 1), _spacing(axis)]
+        [
+            pretty_words(axis.title),
+            f"{len(axis):,}",
+            axis_value(axis, 0),
+            axis_value(axis, len(axis) - 1),
+            _spacing(axis),
+        ]
         for axis in scenario.axes
     ]
     caption = f"Axes of the grid, {scenario.points:,} points in all"

@@ -13,7 +13,7 @@ from gibbsmin.figures.axes import is_logarithmic
 from gibbsmin.figures.look import LINE_COLOURS
 from gibbsmin.outcome.composition import WATER
 from gibbsmin.report.boundaries import boundaries
-from gibbsmin.report.markup import pretty_name
+from gibbsmin.report.markup import pretty_name, pretty_words
 from gibbsmin.report.packing import packed
 from gibbsmin.report.quantities import quantities
 from gibbsmin.report.thinning import MOST_POINTS, Thinned, thin
@@ -25,6 +25,8 @@ if TYPE_CHECKING:
 LEAST_SHOWN = 1e-12  # a species that nowhere exceeds this mole fraction is left to the results file
 MOST_SPECIES = 100
 _COLOUR_STOPS = 17
+# The same hues in the same order, light enough for a dark page.
+_DARK_LINE_COLOURS = ("#5a9ff0", "#f08d4f", "#35c49c", "#e6a3ca", "#e7e9ec", "#f2b53a", "#a9dcf7")
 _COLOURS = {  # one scale for each kind of quantity; all of them even in lightness and safe for colour-blind eyes
     # Cut off where white writing on it would fade.
     "composition": ("viridis", (0.04, 0.86)),
@@ -92,7 +94,7 @@ class ChartData:
             ],
             "boundaries": list(boundaries(whole, kept)),
             "colours": _colour_scales(),
-            "lineColours": list(LINE_COLOURS),
+            "lineColours": {"light": list(LINE_COLOURS), "dark": list(_DARK_LINE_COLOURS)},
         }
 
 
@@ -101,7 +103,7 @@ def _axis(axis: Axis, kept: tuple[int, ...]) -> dict[str, Any]:
     factor = axis.display_values[-1] / axis.values[-1] if kind == "other" and axis.values[-1] else 1.0
     return {
         "name": axis.name,
-        "title": axis.title,
+        "title": pretty_words(axis.title),
         "kind": kind,
         "values": [axis.values[i] for i in kept],
         "written": [axis.display_values[i] for i in kept],

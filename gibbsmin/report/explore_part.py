@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from gibbsmin.report.markup import Markup, joined, tag
+from gibbsmin.report.markup import Markup, joined, pretty_words, tag
 
 if TYPE_CHECKING:
     from gibbsmin.outcome import Outcome
@@ -91,7 +91,7 @@ def _sliders(outcome: Outcome) -> Markup:
     for axis in outcome.scenario.axes:
         if len(axis) > 1:
             name = f"slider-{axis.name}"
-            title = axis.title[:1].upper() + axis.title[1:]
+            title = pretty_words(axis.title[:1].upper() + axis.title[1:])
             rows.append(
                 tag(
                     "div",

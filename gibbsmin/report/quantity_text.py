@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 from gibbsmin.figures.labels import number
 from gibbsmin.figures.of_outcome import display_units
-from gibbsmin.report.markup import Markup, joined, tag
+from gibbsmin.report.markup import Markup, joined, pretty_words, tag
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -22,7 +22,7 @@ def axis_value(axis: Axis, position: int, *, named: bool = False) -> Markup:
     text = f"{axis.display_values[position]:.{_PLAIN_DIGITS}g}"
     symbol = "" if axis.display_unit == "1" else axis.display_unit.replace("deg", "°")
     shown = switchable(f"{text} {symbol}".strip(), KINDS.get(axis.unit), axis.values[position])
-    return joined((f"{axis.title} ", shown)) if named and not symbol else shown
+    return joined((f"{pretty_words(axis.title)} ", shown)) if named and not symbol else shown
 
 
 def switchable(text: str, kind: str | None, value: float) -> Markup:

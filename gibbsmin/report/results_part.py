@@ -66,7 +66,7 @@ def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
     ordered = dict.fromkeys([*wanted, *(i for i in order if largest[i] > _LEAST_FRACTION)][:_MOST_SPECIES])
     headings = ["point", "unit", *(str(position) for position in range(1, len(points) + 1))]
     rows: list[list[object]] = [
-        [axis.title, "", *(axis_value(axis, index[position]) for index in points)]
+        [pretty_words(axis.title), "", *(axis_value(axis, index[position]) for index in points)]
         for position, axis in enumerate(scenario.axes)
     ]
     rows += [[pretty_name(names[i]), "mol/mol", *(_figure(column[i]) for column in columns)] for i in ordered]
@@ -77,7 +77,7 @@ def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
     where = _window_words(outcome.scenario, len(points))
     held = [axis.title for axis in scenario.further_axes if len(axis) > 1]
     if held:
-        where += f", lowest and highest {held[0]}"
+        where += f", lowest and highest {pretty_words(held[0])}"
         where += f", {' and '.join(held[1:])} in the middle" if held[1:] else ""
     caption = f"Composition and results at chosen points: {where}"
     others = len(names) - len(ordered)

@@ -6,7 +6,7 @@ const LABEL_STEP = 17; // pixels between the labels at the ends of lines
 const MOST_CURVES = 7;
 
 function lineLook(position) {
-  const colours = data.lineColours.map((each) => (each === '#000000' ? colour('ink') : each));
+  const colours = data.lineColours[colour('scheme') || 'light'];
   return { color: colours[position % colours.length],
     dash: DASHES[Math.floor(position / colours.length) % DASHES.length] };
 }
@@ -116,7 +116,7 @@ function endLabels(chart, lines, range, log) {
   }
   return ends.map(({ line, place, off }) => ({
     xref: 'paper', yref: 'paper', x: 1, xanchor: 'left', xshift: 8, y: place, yanchor: 'middle', showarrow: false,
-    text: plainText(line.label) + (off ? ' ↓' : ''), font: { color: line.look.color, size: 13 },
+    text: `<span style="color:${line.look.color}"><b>–</b></span> ${plainText(line.label)}${off ? ' ↓' : ''}`,
   }));
 }
 

@@ -103,6 +103,7 @@ function fillSpecies() {
     tick.dataset.species = species[index].name;
     const swatch = put(label, 'span', { className: 'swatch' });
     const { color, dash } = lineLook(position);
+    swatch.dataset.position = position;
     swatch.style.borderTopColor = color;
     swatch.style.borderTopStyle = { solid: 'solid', dash: 'dashed', dot: 'dotted', dashdot: 'dashed' }[dash];
     label.append(species[index].label);
@@ -214,7 +215,12 @@ function connectPrinting() {
     resized(null);
     drawNow();
   });
-  matchMedia('(prefers-color-scheme: dark)').addEventListener('change', draw);
+  matchMedia('(prefers-color-scheme: dark)').addEventListener('change', () => {
+    for (const each of document.querySelectorAll('.swatch')) {
+      each.style.borderTopColor = lineLook(Number(each.dataset.position)).color;
+    }
+    draw();
+  });
 }
 
 function start() {
