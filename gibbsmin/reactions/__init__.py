@@ -14,11 +14,11 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from gibbsmin.reactions.against_mixture import Comparison, FullMixture, MixtureTolerance, Reason, compare
     from gibbsmin.reactions.approach import Analysis, Approach, approaches, complete_analysis
-    from gibbsmin.reactions.best_fit import BestFit, best_fit, best_fits
+    from gibbsmin.reactions.best_correlation import BestFit, best_fit, best_fits
     from gibbsmin.reactions.equation import Reaction, read_reaction
     from gibbsmin.reactions.independence import Coverage, coverage
     from gibbsmin.reactions.measured import MeasuredConstants, measured_constants
-    from gibbsmin.reactions.second_law import SecondLaw, second_law
+    from gibbsmin.reactions.second_law_analysis import SecondLaw, second_law
     from gibbsmin.reactions.shortcut_error import Tolerance, Window, shortcut_errors, windows
     from gibbsmin.reactions.shortcuts import ConstantEnthalpy, ConstantHeatCapacity, Correlation
     from gibbsmin.reactions.standard import (
@@ -29,12 +29,12 @@ if TYPE_CHECKING:
         validity,
     )
     from gibbsmin.reactions.subset import MapConditions, Subset, conserved_rows, solve_subset
-    from gibbsmin.reactions.third_law import ThirdLaw, third_law
+    from gibbsmin.reactions.third_law_analysis import ThirdLaw, third_law
 
 _HOME_OF = {
     "Analysis": "approach",
     "Approach": "approach",
-    "BestFit": "best_fit",
+    "BestFit": "best_correlation",
     "Comparison": "against_mixture",
     "ConstantEnthalpy": "shortcuts",
     "ConstantHeatCapacity": "shortcuts",
@@ -47,15 +47,15 @@ _HOME_OF = {
     "Reaction": "equation",
     "ReactionFunctions": "standard",
     "Reason": "against_mixture",
-    "SecondLaw": "second_law",
+    "SecondLaw": "second_law_analysis",
     "StandardFunctions": "standard",
     "Subset": "subset",
-    "ThirdLaw": "third_law",
+    "ThirdLaw": "third_law_analysis",
     "Tolerance": "shortcut_error",
     "Window": "shortcut_error",
     "approaches": "approach",
-    "best_fit": "best_fit",
-    "best_fits": "best_fit",
+    "best_fit": "best_correlation",
+    "best_fits": "best_correlation",
     "compare": "against_mixture",
     "complete_analysis": "approach",
     "conserved_rows": "subset",
@@ -63,11 +63,11 @@ _HOME_OF = {
     "direction": "standard",
     "measured_constants": "measured",
     "read_reaction": "equation",
-    "second_law": "second_law",
+    "second_law": "second_law_analysis",
     "shortcut_errors": "shortcut_error",
     "solve_subset": "subset",
     "standard_functions": "standard",
-    "third_law": "third_law",
+    "third_law": "third_law_analysis",
     "validity": "standard",
     "windows": "shortcut_error",
 }

@@ -18,7 +18,7 @@ from gibbsmin.constants import GAS_CONSTANT
 from gibbsmin.reactions.equation import Reaction
 from gibbsmin.reactions.least_squares import CONFIDENCE, fit
 from gibbsmin.reactions.measured import MeasuredConstants
-from gibbsmin.reactions.second_law import Estimate, SecondLaw, estimate
+from gibbsmin.reactions.second_law_analysis import Estimate, SecondLaw, estimate
 from gibbsmin.reactions.standard import ReactionFunctions
 
 Array = NDArray[np.float64]
