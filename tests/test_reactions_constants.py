@@ -69,7 +69,7 @@ def test_another_standard_pressure(standard_pressure: float) -> None:
     np.testing.assert_allclose(other.Kp("atm"), at_bar.Kp("atm"), rtol=1e-12)
 
 
-def test_units_of_K() -> None:
+def test_units_of_constants() -> None:
     K = np.exp(standard_functions(REFORMING, 1000.0).ln_K)
     found = standard_functions(REFORMING, 1000.0)
     assert found.Kp("bar^2") == pytest.approx(K, rel=1e-12)
@@ -140,7 +140,7 @@ LN10 = math.log(10.0)
         ("C2H4 + 3 O2 = 2 CO2 + 2 H2O", 0.008),
     ],
 )
-def test_log_K_of_nist_janaf(text: str, tolerance: float) -> None:
+def test_constants_of_nist_janaf(text: str, tolerance: float) -> None:
     """NIST-JANAF Thermochemical Tables, 4th ed. (1998): log K of the reaction from log Kf of each compound, 298 to
     3000 K. Each is printed to 0.001. Largest differences measured: 0.0073, 0.0055, 0.0057, 0.0158, 0.0013, 0.0472, 0.1370,
     0.0068, all but the third above 2800 K, where the heat capacities of CH4 and NH3 differ."""
