@@ -190,7 +190,7 @@ def solve(
         solution: Any = solve_grid(*common, T, log_pressure, threads=threads, progress=progress)
     else:
         indices = _point_indices(conditions)
-        solution = solve_points(*common, log_pressure, *indices, threads=threads, progress=progress)
+        solution = solve_points(*common, T, log_pressure, *indices, threads=threads, progress=progress)
     extrapolated = (
         table.extrapolated(T).reshape(*conditions.temperature.values.shape, -1) if extrapolate else None
     )
