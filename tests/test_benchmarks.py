@@ -68,11 +68,13 @@ def test_scaling(folder: Path) -> None:
     found = measured(folder, "scaling")
     for kind in ("map points", "scattered points"):
         assert all(case["solved"] == case["points"] for case in found[kind])
-    stream = found["streamed"]
-    assert stream["solved"] == stream["points"] == 2 * 40 * 25
-    assert stream["peak MiB"] >= stream["start MiB"] > 0
-    # doubles of every species on disk
-    assert stream["file MiB"] * 2**20 > 8 * stream["points"] * stream["species"]
+    assert [stream["way"] for stream in found["streamed"]] == ["slices", "study"]
+    for stream in found["streamed"]:
+        assert stream["solved"] == stream["points"] == 2 * 40 * 25
+        assert stream["peak MiB"] >= stream["start MiB"] > 0
+    # doubles of every species on disk, uncompressed
+    slices = found["streamed"][0]
+    assert slices["file MiB"] * 2**20 > 8 * slices["points"] * slices["species"]
 
 
 def test_floor(folder: Path) -> None:
@@ -99,6 +101,7 @@ def test_robustness(folder: Path) -> None:
     assert beside["fates"][OURS] == {"right": posed}
     assert beside["references"] >= 1
     assert beside["worst trace"] < 1e-9
+    assert beside["traces off"][OURS] == 0
     for name in SOLVERS:
         assert sum(beside["fates"][name].values()) == posed > 0
 

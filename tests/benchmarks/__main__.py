@@ -51,26 +51,30 @@ def main(arguments: Sequence[str] | None = None) -> int:
     parser.add_argument(
         "--redraw", action="store_true", help="only make tables and plots from the JSON files"
     )
+    parser.add_argument(
+        "--compared", type=int, help="problems that go through Cantera's solvers in robustness [20000]"
+    )
     options = parser.parse_args(arguments)
     if unknown := set(options.names).difference(BENCHMARKS):
         parser.error(f"no benchmark is called {min(unknown)}; there are {', '.join(BENCHMARKS)}")
     options.into.mkdir(parents=True, exist_ok=True)
     if not options.redraw:
         for name in options.names or BENCHMARKS:
-            run(name, options.quick, options.into)
+            more = {"compared": options.compared} if name == "robustness" else {}
+            run(name, options.quick, options.into, **more)
     write_tables(options.into)
     write_plots(options.into)
     return 0
 
 
-def run(name: str, quick: bool, folder: Path) -> None:
+def run(name: str, quick: bool, folder: Path, **more: Any) -> None:
     """Measure one benchmark, print its tables and write its JSON file."""
     module = BENCHMARKS[name]
     conditions = machine()
     begin = time.perf_counter()
     # What threads there are is then our choice, and the same for every contender.
     with threadpool_limits(1, user_api="blas"):
-        measured = module.measure(quick)
+        measured = module.measure(quick, **more)
     record = {
         "benchmark": name,
         "title": module.TITLE,

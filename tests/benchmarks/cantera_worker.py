@@ -58,7 +58,7 @@ class IsolatedWorker:
                     break
                 try:
                     received = self._connection.recv()
-                except EOFError:
+                except (EOFError, OSError):
                     answers[left.pop(0)] = Answer(None, np.nan, "crash")
                     self._restart()
                     break
@@ -195,8 +195,9 @@ def feed_of(case: Problem) -> np.ndarray:
     try:
         tableau = reference._feasible_tableau(exact, totals)
     except reference.InfeasibleError:
-        out[neutral] = nnls(case.formula_matrix[np.ix_(rows, neutral)], case.element_amounts[rows])[0]
-        return out / out.sum()
+        out[neutral] = nnls(case.formula_matrix[rows][:, neutral], case.element_amounts[rows])[0]
+        out /= out.sum()
+        return out
     vertex = reference.interior_point(tableau) if case.kind == "dense" else tableau.vertex()
     total = sum(vertex)
     out[neutral] = [float(value / total) for value in vertex]

@@ -77,7 +77,7 @@ def measure(quick: bool) -> Measured:
         "largest gap": float(solution.gap.max() / feed.element_amounts.sum()),
         "largest balance residual": float(solution.balance_residual.max()),
         "difference from Cantera": against_cantera,
-        "difference from minimise": _from_minimise(amounts, feed, table, T, p, 200 if quick else 5000),
+        "difference from minimise": _from_minimise(amounts, feed, table, T, p, 100 if quick else 5000),
     }
 
 

@@ -44,7 +44,7 @@ def measure(quick: bool) -> Measured:
             PASS: lambda: one_pass(grid.temperature),
             EACH: lambda: one_pass(T_of_points),
         },
-        3 if quick else 7,
+        2 if quick else 7,
     )
     return {"species": species, "points": grid.points, "solved": min(solved), "seconds": seconds}
 

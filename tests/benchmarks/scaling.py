@@ -25,12 +25,15 @@ WHOLE_TREE = Path(__file__).resolve().parents[2]
 
 
 def measure(quick: bool) -> Measured:
-    counts, maps, scattered = (COUNTS[:3], MAPS[:3], SCATTERED[:2]) if quick else (COUNTS, MAPS, SCATTERED)
+    counts, maps, scattered = (COUNTS[:2], MAPS[:3], SCATTERED[:2]) if quick else (COUNTS, MAPS, SCATTERED)
     return {
         "species": [species_count.compare(count, "lean", quick) for count in counts],
-        "map points": [_map(*size, repeats=2 if quick else 5) for size in maps],
-        "scattered points": [_scattered(count, repeats=2 if quick else 5) for count in scattered],
-        "streamed": streamed(2, (40, 25)) if quick else streamed(STREAMED_FEEDS, STREAMED_MAP),
+        "map points": [_map(*size, repeats=1 if quick else 5) for size in maps],
+        "scattered points": [_scattered(count, repeats=1 if quick else 5) for count in scattered],
+        "streamed": [
+            streamed(way, 2, (40, 25)) if quick else streamed(way, STREAMED_FEEDS, STREAMED_MAP)
+            for way in ("slices", "study")
+        ],
     }
 
 
@@ -59,9 +62,9 @@ def _scattered(count: int, repeats: int) -> dict[str, Any]:
     return {"points": count, "seconds": seconds, "solved": min(solved)}
 
 
-def streamed(feeds: int, size: tuple[int, int]) -> dict[str, Any]:
-    """A map written to disk feed by feed, in a process of its own, whose peak memory is counted."""
-    command = [sys.executable, "-m", "tests.benchmarks.streaming", str(feeds), *map(str, size)]
+def streamed(way: str, feeds: int, size: tuple[int, int]) -> dict[str, Any]:
+    """A map written to disk, in a process of its own, whose peak memory is counted."""
+    command = [sys.executable, "-m", "tests.benchmarks.streaming", way, str(feeds), *map(str, size)]
     done = subprocess.run(command, capture_output=True, text=True, check=True, cwd=WHOLE_TREE)
     figures: dict[str, Any] = json.loads(done.stdout)
     return figures
@@ -80,16 +83,23 @@ def tables(measured: Measured) -> list[Table]:
             )
             unsolved = case["points"] - case["solved"]
             points.append([kind.split()[0], f"{case['points']:,}", *costs, str(unsolved)])
-    stream = measured["streamed"]
-    points.append(
+    streams = measured["streamed"]
+    for stream in streams:
+        cost = stream["seconds"] / stream["points"] * 1e6
+        unsolved = stream["points"] - stream["solved"]
+        points.append([f"map to disk, {stream['way']}", f"{stream['points']:,}", None, cost, str(unsolved)])
+    disk: list[list[Cell]] = [
         [
-            "map, streamed to disk",
-            f"{stream['points']:,}",
-            None,
-            stream["seconds"] / stream["points"] * 1e6,
-            str(stream["points"] - stream["solved"]),
+            stream["way"],
+            stream["points"],
+            stream["seconds"],
+            stream["file MiB"],
+            stream["start MiB"],
+            stream["peak MiB"],
+            stream["processes"],
         ]
-    )
+        for stream in streams
+    ]
     return [
         Table(
             "Cost of a point against the number of species: methane in air, lean, one thread [us]",
@@ -97,13 +107,17 @@ def tables(measured: Measured) -> list[Table]:
             species,
         ),
         Table(
-            f"Cost of a point against the number of points: steam reforming, {stream['species']} gases [us]",
+            f"Cost of a point against the number of points: steam reforming, {streams[0]['species']} gases [us]",
             ["", "points", "one thread", "all threads", "not solved"],
             points,
-            f"Streamed: `gibbsmin.equilibrium` and NetCDF for {stream['feeds']} feeds in turn, "
-            f"{stream['file MiB']:,.0f} MiB on disk, of {stream['seconds']:.1f} s {stream['writing']:.1f} s "
-            f"writing; peak memory of the whole process {stream['peak MiB']:,.0f} MiB, of which "
-            f"{stream['start MiB']:,.0f} MiB before the first feed.",
+        ),
+        Table(
+            "Maps streamed to disk: time, and memory of all processes together",
+            ["", "points", "s", "MiB on disk", "MiB before the first point", "MiB at the peak", "processes"],
+            disk,
+            "Slices: `gibbsmin.equilibrium` feed by feed into one NetCDF file. Study: `gibbsmin.study` with one "
+            "case a feed, all species kept. Memory shared between the processes of a study is counted more "
+            "than once.",
         ),
     ]
 
@@ -139,19 +153,20 @@ def plot(measured: Measured) -> Figure:
                 markersize=3.5,
                 label=f"{label}, {threads}",
             )
-    stream = measured["streamed"]
-    right.loglog(
-        [stream["points"]],
-        [stream["seconds"] / stream["points"] * 1e6],
-        "D",
-        color=LINE_COLOURS[4],
-        markersize=4.5,
-        label="map, streamed to disk",
-    )
+    streams = measured["streamed"]
+    for colour, stream in zip(LINE_COLOURS[3:], streams, strict=False):
+        right.loglog(
+            [stream["points"]],
+            [stream["seconds"] / stream["points"] * 1e6],
+            "D",
+            color=colour,
+            markersize=4.5,
+            label=f"map to disk, {stream['way']}",
+        )
     right.set_xlabel("points")
-    right.set_title(f"steam reforming, {stream['species']} gases", loc="left")
+    right.set_title(f"steam reforming, {streams[0]['species']} gases", loc="left")
     for panel in (left, right):
         panel.grid(True, which="major", color="#dddddd", linewidth=0.5)
         panel.spines[["top", "right"]].set_visible(False)
-        panel.legend(frameon=False, fontsize=7)
+        panel.legend(frameon=False, fontsize=7, handlelength=3.2)
     return figure

@@ -33,7 +33,7 @@ STANDARDS = {"right": (1e-6, 1e-4), "roughly right": (1e-3, 1e-2)}
 
 def measure(quick: bool) -> Measured:
     table = reforming_gases()
-    counts = {"SLSQP": 5, "trust-constr": 3} if quick else {"SLSQP": 100, "trust-constr": 100}
+    counts = {"SLSQP": 3, "trust-constr": 1} if quick else {"SLSQP": 100, "trust-constr": 100}
     most = max(counts.values())
     feeds, T, p = scattered_reforming(most)
     A = table.formula_matrix

@@ -25,7 +25,7 @@ COUNTS = (5, 30, 50, 100, 150)
 
 
 def measure(quick: bool) -> Measured:
-    calls = 10 if quick else 200
+    calls = 5 if quick else 200
     T, p = scattered_combustion(calls)
     limits = combustion_map(2, 2).temperature
     by_species = {}

@@ -47,8 +47,8 @@ def compare(count: int, feed_name: str, quick: bool) -> dict[str, Any]:
     """One number of species and one feed, three ways: a map, scattered points, a sample of those by Cantera."""
     table = combustion_gases(count)
     feed = combustion_feed(table, METHANE_IN_AIR[feed_name])
-    grid = combustion_map(61, 11) if quick else combustion_map(241, 41)
-    points, sample = (500, 50) if quick else (10_000, 400)
+    grid = combustion_map(41, 11) if quick else combustion_map(241, 41)
+    points, sample = (300, 20) if quick else (10_000, 400)
     T, p = scattered_combustion(points)
     loop = CanteraLoop(table, (LOWEST, HIGHEST))
     answers: dict[str, Any] = {}
