@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from gibbsmin.scenario import load_scenario
     from gibbsmin.solving import equilibrium
     from gibbsmin.species import standard_library
+    from gibbsmin.study import load_study, open_study, run_study
 
     __version__: str
 
@@ -30,8 +31,11 @@ _HOME_OF = {
     "Outcome": "gibbsmin.outcome",
     "equilibrium": "gibbsmin.solving",
     "load_scenario": "gibbsmin.scenario",
+    "load_study": "gibbsmin.study",
     "minimise": "gibbsmin.minimiser",
+    "open_study": "gibbsmin.study",
     "run": "gibbsmin.running",
+    "run_study": "gibbsmin.study",
     "standard_library": "gibbsmin.species",
 }
 
@@ -43,8 +47,11 @@ __all__ = [
     "equilibrium",
     "errors",
     "load_scenario",
+    "load_study",
     "minimise",
+    "open_study",
     "run",
+    "run_study",
     "standard_library",
 ]
 

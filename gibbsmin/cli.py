@@ -18,6 +18,8 @@ from pathlib import Path
 from textwrap import fill
 from typing import TYPE_CHECKING
 
+from gibbsmin.commands.cases import add_cases
+from gibbsmin.commands.study import add_study
 from gibbsmin.errors import FolderExistsError, GibbsminError
 from gibbsmin.terminal import accept_any_text, progress_bar, say
 
@@ -352,6 +354,7 @@ def copy_files(files: Sequence[Path], folder: Path, *, overwrite: bool) -> list[
 
 _SCHEMAS = {
     "scenario": ("gibbsmin.scenario", "schema.json"),
+    "study": ("gibbsmin.study", "schema.json"),
     "species": ("gibbsmin.species", "species_file.schema.json"),
 }
 
@@ -374,6 +377,8 @@ def _schema(options: argparse.Namespace) -> int:
 _COMMANDS: dict[str, tuple[str, Callable[[argparse.ArgumentParser], None]]] = {
     "run": ("solve a scenario, cross-check it, draw it and save everything in a folder", _add_run),
     "check": ("say whether a scenario is sound and what it would compute", _add_check),
+    "study": ("compute many scenarios as one, or what is missing of them", add_study),
+    "cases": ("sum up, rank, filter and draw the cases of a study", add_cases),
     "species": ("list species, or show the data of one", _add_species),
     "scenarios": ("list the example scenarios, print one, or copy them out", _add_scenarios),
     "schema": ("print the JSON Schema of a file form, for editors that check as you type", _add_schema),

@@ -128,7 +128,7 @@ class Cluster:
         return len(self._client.scheduler_info(n_workers=-1)["workers"])
 
     def compute(self, chunks: Sequence[tuple[int, Chunk]], work: Work) -> Iterator[tuple[int, Receipt]]:
-        from distributed import KilledWorker, as_completed
+        import distributed
 
         packer = _Packer()
         groups: dict[str, Any] = {}
@@ -142,7 +142,12 @@ class Cluster:
             if digest not in groups:
                 groups[digest] = self._client.scatter(group, broadcast=True)
             future = self._client.submit(
-                _solve_packed, groups[digest], digest, *rest, work, key=f"gibbsmin-{work.run_name}-{i}-{deaths}",
+                _solve_packed,
+                groups[digest],
+                digest,
+                *rest,
+                work,
+                key=f"gibbsmin-{work.run_name}-{i}-{deaths}",
                 pure=False,
             )
             sources[future] = i
@@ -150,13 +155,15 @@ class Cluster:
 
         order = iter(list(pending))
         ahead = max(AHEAD * 8, AHEAD * self.workers)
-        futures = as_completed([submit(i) for i in itertools.islice(order, ahead)])
+        futures: Any = distributed.as_completed(  # type: ignore[no-untyped-call]
+            [submit(i) for i in itertools.islice(order, ahead)]
+        )
         try:
             for future in futures:
                 i = sources.pop(future)
                 try:
                     receipt = future.result()
-                except KilledWorker:
+                except distributed.KilledWorker:
                     deaths += 1
                     if deaths > limit:
                         raise
@@ -174,10 +181,11 @@ class Cluster:
 def connect(address: str) -> Any:
     """A Dask client of the scheduler at an address. Raises MissingPackageError, OSError (no answer)."""
     try:
-        from distributed import Client
+        import distributed
     except ImportError as error:
         raise MissingPackageError("distributed", "running a study on a cluster") from error
-    return Client(address, timeout="10s", set_as_default=False)
+    client: Any = distributed.Client(address, timeout="10s", set_as_default=False)  # type: ignore[no-untyped-call]
+    return client
 
 
 def _attempt_limit(chunks: Any) -> int:
@@ -233,4 +241,3 @@ def _end_processes(pool: ProcessPoolExecutor) -> None:
     for process in list(processes.values()):
         with suppress(Exception):
             process.kill()
-

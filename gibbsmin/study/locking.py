@@ -31,7 +31,8 @@ def folder_lock(folder: Path) -> Iterator[None]:
             stream.seek(0)
             holder = stream.read().strip() or "another process"
             raise StudyRefusedError(
-                str(folder), f"a study is running in this folder ({holder}); wait for it or choose another folder"
+                str(folder),
+                f"a study is running in this folder ({holder}); wait for it or choose another folder",
             )
         stream.seek(0)
         stream.truncate()

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 from functools import cache
 from importlib.resources import files
 from os import PathLike
@@ -15,6 +16,8 @@ from gibbsmin.examples import scenario_file
 from gibbsmin.scenario.loading import build_scenario
 from gibbsmin.scenario.reading import Reading
 from gibbsmin.scenario.structure import FAULTY, check_structure
+from gibbsmin.scenario.words import listed, nearest
+from gibbsmin.shipped_files import scenario_folder
 from gibbsmin.strict_yaml import Document, parse_file
 from gibbsmin.study.model import DEFAULT_CHECKED_POINTS, Keep, Study
 from gibbsmin.study.placing import BETWEEN_KEYS, PlaceFault, changed
@@ -32,7 +35,9 @@ _ENDINGS = (".yaml", ".yml")
 @cache
 def study_schema() -> dict[str, Any]:
     """The published JSON Schema of the study file."""
-    loaded: dict[str, Any] = json.loads(files(__package__).joinpath("schema.json").read_text(encoding="utf-8"))
+    loaded: dict[str, Any] = json.loads(
+        files(__package__).joinpath("schema.json").read_text(encoding="utf-8")
+    )
     return loaded
 
 
@@ -86,6 +91,22 @@ def load_study(
     )
 
 
+def study_file(argument: str) -> Path:
+    """The file meant by a study argument: a file if there is one, else the shipped study of that name.
+
+    Raises StudyError if it is neither.
+    """
+    path = Path(argument)
+    if path.is_file():
+        return path
+    shipped = {each.stem: each for each in sorted(scenario_folder().joinpath("studies").glob("*.yaml"))}
+    name = argument.removesuffix(".yaml")
+    if name in shipped:
+        return shipped[name]
+    known = f"shipped: {listed(shipped)}{nearest(name, shipped)}"
+    raise StudyError([Fault(f"there is no such file and no shipped study of that name; {known}", argument)])
+
+
 class _StudyReader:
     def __init__(self, reading: Reading, data: Mapping[str, Any], folder: Path, progress: Progress) -> None:
         self.reading = reading
@@ -97,7 +118,7 @@ class _StudyReader:
         self.keep = Keep(keep.get("composition", "key species"), further)
         self.prepared = Preparing(self.keep)
         self.quantities: dict[str, Quantity] = {}
-        self._faulty: dict[tuple[str, str, int | None, int | None], list[str]] = {}
+        self._faulty: dict[Fault, list[str]] = {}
         self._names: dict[str, int] = {}
 
     def read(self) -> None:
@@ -108,7 +129,9 @@ class _StudyReader:
         if "variations" in self.data or "base" in self.data:
             self._add_variations()
         elif "quantities" in self.data:
-            self.reading.fault(("quantities",), "quantities are named, but there are no variations", of_key=True)
+            self.reading.fault(
+                ("quantities",), "quantities are named, but there are no variations", of_key=True
+            )
         if not self.prepared.cases and not self.reading.faults and not self._faulty:
             self.reading.fault((), "there are no cases: give 'scenarios', or 'base' and 'variations'")
         self._report_faulty()
@@ -182,9 +205,7 @@ class _StudyReader:
                         raise ScenarioError([Fault(where, variant.file, variant.line)]) from fault
             text = json.dumps(data, indent=1, ensure_ascii=False)
             # Positions stay those of the base file, where a reader looks for what a value belongs to.
-            whole = Document(
-                data, document.file, document.positions, document.key_positions, document.faults
-            )
+            whole = Document(data, document.file, document.positions, document.key_positions, document.faults)
             return self._built(whole, text, home)
 
         return make
@@ -207,19 +228,17 @@ class _StudyReader:
             self.prepared.add(name, values, make())
         except ScenarioError as error:
             for fault in error.faults:
-                key = (fault.message, fault.file, fault.line, fault.column)
-                self._faulty.setdefault(key, []).append(name)
+                self._faulty.setdefault(fault, []).append(name)
         except ConditionsError as error:
-            self._faulty.setdefault((str(error), file, line, None), []).append(name)
+            self._faulty.setdefault(Fault(str(error), file, line), []).append(name)
         self.progress(1)
 
     def _report_faulty(self) -> None:
-        for (message, *place), cases in self._faulty.items():
-            self.reading.faults.append(Fault(f"{message} ({_in_cases(cases)})", *place))
+        for fault, cases in self._faulty.items():
+            self.reading.faults.append(replace(fault, message=f"{fault.message} ({_in_cases(cases)})"))
 
 
 def _in_cases(names: list[str]) -> str:
     if len(names) == 1:
         return f"case {names[0]}"
     return f"{len(names)} cases: {', '.join(names[:3])}{' ...' if len(names) > 3 else ''}"
-

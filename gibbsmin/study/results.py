@@ -14,7 +14,8 @@ import xarray as xr
 
 from gibbsmin.errors import StudyRefusedError
 from gibbsmin.study.shards import file_digest
-from gibbsmin.study.store import MANIFEST, PROGRAM, STORE, SUMMARY
+from gibbsmin.study.solving import STORE
+from gibbsmin.study.store import MANIFEST, PROGRAM, SUMMARY
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -69,6 +70,11 @@ class StudyResults:
         import pandas as pd
 
         return pd.read_parquet(self.folder / SUMMARY, engine="pyarrow")
+
+    @property
+    def quantity_columns(self) -> tuple[str, ...]:
+        """Columns of the summary that hold the varied quantities."""
+        return tuple(self.manifest["quantities"])
 
     @property
     def all_solved(self) -> bool:

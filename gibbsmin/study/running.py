@@ -123,7 +123,7 @@ def run_study(
                 client.close()
         write_summary(plan, receipts, home)
         write_manifest(plan, receipts, described, home)
-        forget_unfinished(plan, home, Found(receipts, ("finished",) * len(plan.chunks)))
+        forget_unfinished(plan, home, Found.complete(receipts, len(plan.chunks)))
     from gibbsmin.study.results import open_study
 
     return StudyRun(open_study(home), found, len(left))
@@ -203,7 +203,8 @@ def check_study_folder(folder: Path, title: str, overwrite: bool) -> None:
     earlier = _title_in(folder)
     if earlier is not None and earlier != title and not overwrite:
         raise StudyRefusedError(
-            str(folder), f"it holds the study {earlier!r}; choose another folder or ask for it to be overwritten"
+            str(folder),
+            f"it holds the study {earlier!r}; choose another folder or ask for it to be overwritten",
         )
 
 

@@ -88,7 +88,7 @@ def _carry(given: Mapping[str, Any]) -> Callable[[FloatArray], FloatArray]:
     def carry(unit: FloatArray) -> FloatArray:
         values = law.ppf(np.clip(low + unit * (high - low), smallest, 1.0))
         values = np.exp(values) if _is_on_logarithm(kind) else values
-        return np.clip(values, bottom, top)
+        return np.asarray(np.clip(values, bottom, top), dtype=np.float64)
 
     return carry
 

@@ -114,7 +114,7 @@ def shard(plan: ArrayPlan, values: NDArray[Any]) -> list[bytes | memoryview]:
     size = ordered.nbytes // max(1, present)
     index[:present, 0] = np.arange(present, dtype=np.uint64) * np.uint64(size)
     index[:present, 1] = size
-    return [memoryview(ordered).cast("B"), index.tobytes()]
+    return [ordered.reshape(-1).view(np.uint8).data, index.tobytes()]
 
 
 def write_whole(path: Path, pieces: Sequence[bytes | memoryview]) -> str:

@@ -111,7 +111,7 @@ class Receipt:
 
 def solve_case(layout: Layout, table: ThermoTable, case: Case, threads: int | None) -> GridSolution:
     """The map of one case, leading shape (F, nT, nP)."""
-    gibbs = _gibbs_RT(table, case.temperature.tobytes())
+    gibbs = _standard_potentials(table, case.temperature.tobytes())
     log_pressure = np.log(case.pressure / STANDARD_PRESSURE)
     return solve_grid(
         table.formula_matrix, case.element_amounts, gibbs, case.temperature, log_pressure, threads=threads
@@ -119,7 +119,8 @@ def solve_case(layout: Layout, table: ThermoTable, case: Case, threads: int | No
 
 
 @lru_cache(maxsize=16)
-def _gibbs_RT(table: ThermoTable, temperature: bytes) -> FloatArray:
+def _standard_potentials(table: ThermoTable, temperature: bytes) -> FloatArray:
+    """g/RT of the standard states at temperatures that cases usually share."""
     return table.gibbs_RT(np.frombuffer(temperature))
 
 
@@ -144,7 +145,7 @@ def solve_chunk(
     table = thermo_table(layout.species, layout.extrapolate)
     trail = Trail.of(home, chunk.group.path, chunk.number, run_name)
     deadly = trail.deadly_cases()
-    block = _Block(layout, table, len(chunk.cases))
+    block = _Block(chunk, table)
     with trail:
         for i, case in enumerate(chunk.cases):
             begun = time.perf_counter()
@@ -171,60 +172,103 @@ def solve_chunk(
 
 
 class _Block:
-    """Solver results of the cases of a chunk, (B, points, ...)."""
+    """Solver results of the cases of a chunk, (B, points, ...), reduced to what is stored or derived from."""
 
-    def __init__(self, layout: Layout, table: ThermoTable, cases: int) -> None:
-        points = layout.points
-        self.amounts = np.full((cases, points, len(layout.species)), np.nan)
-        self.potentials = np.full((cases, points, len(table.elements)), np.nan)
+    def __init__(self, chunk: Chunk, table: ThermoTable) -> None:
+        group, layout = chunk.group, chunk.group.layout
+        cases, points = len(chunk.cases), layout.points
+        self.layout = layout
+        self.species = species_needed(group)
+        self._columns = list(self.species)
+        self.amounts = np.full((cases, points, len(self.species)), np.nan)
+        self.gas = np.full((cases, points), np.nan)
         self.gap = np.full((cases, points), np.nan)
-        self.balance = np.full((cases, points), np.nan)
-        self.iterations = np.full((cases, points), NOT_COMPUTED, dtype=np.int32)
         self.status = np.full((cases, points), NOT_COMPUTED, dtype=np.int8)
+        self.largest_gap = np.full(cases, np.nan)
+        self.largest_balance = np.full(cases, np.nan)
         self.seconds = np.zeros(cases)
         self.failures: dict[int, str] = {}
+        self.checked: list[tuple[int, int, FloatArray]] = []
+        self._checked_points = group.checked_points
+        self.extra: dict[str, NDArray[Any]] = {}
+        for name in ("element_potential", "balance_residual", "iterations"):
+            if (array := group.array(name)) is not None:
+                shape = (cases, points, array.extras) if array.extra else (cases, points)
+                self.extra[name] = np.full(shape, array.fill, dtype=array.dtype)
 
     def fill(self, i: int, case: Case, solution: GridSolution) -> None:
-        feeds = len(case.factor)
+        """Take what is needed of a case while it is still in the cache."""
+        feeds, points = len(case.factor), self.layout.points
         factor = case.factor.reshape(feeds, 1)
-        amounts = solution.amounts.reshape(feeds, -1, self.amounts.shape[-1])
-        np.divide(amounts, factor[..., None], out=self.amounts[i].reshape(amounts.shape))
+        amounts = solution.amounts.reshape(points, -1)
+        gas = amounts.sum(axis=-1).reshape(feeds, -1)
+        np.divide(gas, factor, out=self.gas[i].reshape(gas.shape))
+        wanted = amounts if len(self.species) == amounts.shape[-1] else amounts[:, self._columns]
+        wanted = wanted.reshape(feeds, -1, len(self.species))
+        np.divide(wanted, factor[..., None], out=self.amounts[i].reshape(wanted.shape))
         gap = solution.gap.reshape(feeds, -1)
         np.divide(gap, factor, out=self.gap[i].reshape(gap.shape))
-        self.potentials[i] = solution.element_potentials.reshape(self.potentials.shape[1:])
-        self.balance[i] = solution.balance_residual.ravel()
-        self.iterations[i] = solution.iterations.ravel()
         self.status[i] = solution.status.ravel()
+        balance = solution.balance_residual.ravel()
+        with np.errstate(invalid="ignore", divide="ignore"):
+            self.largest_gap[i] = _largest(gap / gas)
+        self.largest_balance[i] = _largest(balance)
+        further: dict[str, NDArray[Any]] = {
+            "element_potential": solution.element_potentials,
+            "balance_residual": balance,
+            "iterations": solution.iterations,
+        }
+        for name, values in self.extra.items():
+            values[i] = further[name].reshape(values.shape[1:])
+        for point in _checked_points(case, points, self._checked_points):
+            if self.status[i, point] == 0:
+                self.checked.append((i, int(point), amounts[point] / gas.ravel()[point]))
 
     def fail(self, i: int, reason: str) -> None:
         self.failures[i] = reason
 
 
+def species_needed(group: Group) -> tuple[int, ...]:
+    """Indices of the species whose amounts a chunk must hold on to."""
+    layout = group.layout
+    if group.further:
+        return tuple(range(len(layout.species)))
+    wanted = layout.results
+    names = {each.species for each in wanted.conversions}
+    for made in wanted.yields:
+        names.update(name for name in (made.product, made.reactant) if name is not None)
+    for choice in wanted.selectivities:
+        names.update((choice.product, choice.reactant))
+    for ratio in wanted.ratios:
+        names.update((*ratio.numerator, *ratio.denominator))
+    asked = {k for k, each in enumerate(layout.species) if each.name in names}
+    return tuple(sorted(asked.union(layout.kept_species)))
+
+
 def _values(chunk: Chunk, block: _Block, table: ThermoTable) -> Iterator[tuple[str, NDArray[Any]]]:
     """Every stored variable, (B, points) or (B, points, extras)."""
     group, layout = chunk.group, chunk.group.layout
-    gas = block.amounts.sum(axis=-1)
-    yield "gas_amount", gas
+    yield "gas_amount", block.gas
     yield "status", block.status
     yield "gap", block.gap
-    yield "balance_residual", block.balance
-    yield "iterations", block.iterations
-    yield "element_potential", block.potentials
+    yield from block.extra.items()
     with np.errstate(invalid="ignore", divide="ignore"):
-        if group.array("mole_fraction") is not None:
-            kept = list(layout.kept_species)
-            every = len(kept) == len(layout.species)
-            yield "mole_fraction", (block.amounts if every else block.amounts[..., kept]) / gas[..., None]
+        if layout.kept_species:
+            yield "mole_fraction", _kept_amounts(block, layout) / block.gas[..., None]
         if group.derived:
-            dataset = _block_dataset(chunk, block, gas)
-            fed = _fed_enthalpy(chunk)
-            found = derived_results(dataset, layout, group.further, table, fed)
-            shape = (len(chunk.cases), *layout.shape)
+            dataset = _block_dataset(chunk, block, table)
+            found = derived_results(dataset, layout, group.further, table, _fed_enthalpy(chunk))
+            dims, shape = ("case", *_axis_dims(layout)), (len(chunk.cases), *layout.shape)
             for name, (_, array) in zip(group.derived, found, strict=True):
-                order = [dim for dim in ("case", *_axis_dims(layout)) if dim in array.dims]
-                sizes = [n if dim in order else 1 for dim, n in zip(("case", *_axis_dims(layout)), shape, strict=True)]
-                values = array.transpose(*order).values.reshape(sizes)
-                yield name, np.broadcast_to(values, shape).reshape(len(chunk.cases), -1)
+                values = array.transpose(*(dim for dim in dims if dim in array.dims)).values
+                sizes = [n if dim in array.dims else 1 for dim, n in zip(dims, shape, strict=True)]
+                yield name, np.broadcast_to(values.reshape(sizes), shape).reshape(len(chunk.cases), -1)
+
+
+def _kept_amounts(block: _Block, layout: Layout) -> FloatArray:
+    if block.species == layout.kept_species:
+        return block.amounts
+    return block.amounts[..., [block.species.index(k) for k in layout.kept_species]]
 
 
 def derived_results(
@@ -240,8 +284,8 @@ def derived_results(
         if name in FURTHER:
             yield name, FURTHER[name](dataset, table)
     if "heat duty" in further and fed is not None:
-        for name, array in energy.heat_duty(dataset, table, fed).data_vars.items():
-            yield str(name), array
+        for duty, array in energy.heat_duty(dataset, table, fed).data_vars.items():
+            yield str(duty), array
 
 
 def _axis_dims(layout: Layout) -> tuple[str, ...]:
@@ -249,32 +293,35 @@ def _axis_dims(layout: Layout) -> tuple[str, ...]:
     return tuple(f"{axis.name} point" for axis in layout.axes)
 
 
-def _block_dataset(chunk: Chunk, block: _Block, gas: FloatArray) -> xr.Dataset:
+def _block_dataset(chunk: Chunk, block: _Block, table: ThermoTable) -> xr.Dataset:
     """As much of the data set of `gibbsmin.equilibrium` as derived results need, with a dimension "case" more."""
     layout, cases = chunk.group.layout, chunk.cases
     axes = _axis_dims(layout)
     points = ("case", *axes)
     shape = (len(cases), *layout.shape)
-    feed = np.stack([case.feed for case in cases])
-    table = thermo_table(layout.species, layout.extrapolate)
     units = {"units": layout.amount_unit.replace("/h", " h-1")}
+    species = [layout.species[k] for k in block.species]
     variables: dict[str, Any] = {
         "amount": ((*points, "species"), block.amounts.reshape(*shape, -1), units),
-        "gas_amount": (points, gas.reshape(shape)),
-        "feed_amount": (("case", *axes[:-2], "feed_species"), feed, units),
+        "gas_amount": (points, block.gas.reshape(shape)),
+        "feed_amount": (
+            ("case", *axes[:-2], "feed_species"),
+            np.stack([case.feed for case in cases]),
+            units,
+        ),
     }
     if any(name in chunk.group.further for name in FURTHER):
-        fractions = block.amounts / gas[..., None]
+        fractions = block.amounts / block.gas[..., None]
         variables["mole_fraction"] = ((*points, "species"), fractions.reshape(*shape, -1))
     coordinates = {
         "temperature": (("case", axes[-2]), np.stack([case.temperature for case in cases])),
         "pressure": (("case", axes[-1]), np.stack([case.pressure for case in cases])),
-        "species": [each.name for each in layout.species],
+        "species": [each.name for each in species],
         "feed_species": [each.name for each in layout.feed_species],
         "element": list(table.elements),
-        "atoms": (("species", "element"), np.array(table.formula_matrix).T),
+        "atoms": (("species", "element"), np.array(table.formula_matrix).T[list(block.species)]),
         "feed_atoms": (("feed_species", "element"), feed_atoms(layout.feed_species, table)),
-        "molar_mass": (("species",), np.array([each.molar_mass for each in layout.species])),
+        "molar_mass": (("species",), np.array([each.molar_mass for each in species])),
     }
     return xr.Dataset(variables, coordinates)
 
@@ -285,10 +332,10 @@ def feed_atoms(feed_species: Sequence[Species], table: ThermoTable) -> FloatArra
 
 
 def _fed_enthalpy(chunk: Chunk) -> xr.DataArray | None:
-    parts = [case.fed_enthalpy for case in chunk.cases]
-    if any(part is None for part in parts):
+    parts = [case.fed_enthalpy for case in chunk.cases if case.fed_enthalpy is not None]
+    if len(parts) < len(chunk.cases):
         return None
-    return xr.DataArray(np.stack([part for part in parts if part is not None]), dims=("case", *_axis_dims(chunk.group.layout)[:-2]))
+    return xr.DataArray(np.stack(parts), dims=("case", *_axis_dims(chunk.group.layout)[:-2]))
 
 
 # --- one row a case
@@ -298,11 +345,8 @@ def _rows(
     chunk: Chunk, block: _Block, values: Mapping[str, NDArray[Any]], table: ThermoTable
 ) -> Iterator[dict[str, Any]]:
     layout = chunk.group.layout
-    gas = values["gas_amount"]
     unsolved = (block.status != 0).sum(axis=1)
-    with np.errstate(invalid="ignore"):
-        gap = block.gap / gas
-    checks = _cross_checks(chunk, block, gas, table)
+    checks = _cross_checks(chunk, block, table)
     ranges: dict[str, NDArray[Any]] = {}
     if "mole_fraction" in values:
         names = [layout.species[k].name for k in layout.kept_species]
@@ -320,52 +364,53 @@ def _rows(
             "failure": failure,
             "points": layout.points,
             "unsolved points": bad,
-            "largest gap per mol of gas": _largest(gap[i]),
-            "largest balance residual": _largest(block.balance[i]),
+            "largest gap per mol of gas": _or_none(block.largest_gap[i]),
+            "largest balance residual": _or_none(block.largest_balance[i]),
             "data extrapolated": bool(layout.extrapolate and table.extrapolated(case.temperature).any()),
             **checks[i],
             "seconds": round(float(block.seconds[i]), 6),
         }
         for name, array in ranges.items():
-            row[f"{name} lowest"] = _least(array[i])
-            row[f"{name} highest"] = _largest(array[i])
+            row[f"{name} lowest"] = _or_none(-_largest(-array[i]))
+            row[f"{name} highest"] = _or_none(_largest(array[i]))
         yield row
 
 
-def _largest(values: NDArray[Any]) -> float | None:
+def _largest(values: NDArray[Any]) -> float:
+    """Largest finite value, NaN if there is none."""
+    largest = values.max()
+    if np.isfinite(largest):
+        return float(largest)
     finite = values[np.isfinite(values)]
-    return float(finite.max()) if finite.size else None
+    return float(finite.max()) if finite.size else float("nan")
 
 
-def _least(values: NDArray[Any]) -> float | None:
-    finite = values[np.isfinite(values)]
-    return float(finite.min()) if finite.size else None
+def _or_none(value: float) -> float | None:
+    return float(value) if np.isfinite(value) else None
 
 
-def _cross_checks(
-    chunk: Chunk, block: _Block, gas: FloatArray, table: ThermoTable
-) -> list[dict[str, Any]]:
+def _cross_checks(chunk: Chunk, block: _Block, table: ThermoTable) -> list[dict[str, Any]]:
     """For each case: how many points were solved again, and how far the answers differ."""
-    layout, count = chunk.group.layout, chunk.group.checked_points
-    chosen = [
-        (i, int(point))
-        for i, case in enumerate(chunk.cases)
-        for point in _checked_points(case, layout.points, count)
-        if block.status[i, point] == 0
-    ]
     found: list[list[Any]] = [[] for _ in chunk.cases]
-    if chosen:
+    if block.checked:
         from gibbsmin.comparison import Comparison
 
-        compare = Comparison(_chosen_points(chunk, block, gas, chosen), table, ("point",), layout.tolerance)
-        for k, (i, _) in enumerate(chosen):
+        points = _chosen_points(chunk, block, table)
+        compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
+        for k, (i, _, _) in enumerate(block.checked):
             found[i].append(compare.at((k,)))
-    columns = {"confirmed": "confirmed", "differing": "differs", "no independent answer": "no independent answer"}
+    statuses = {
+        "confirmed": "confirmed",
+        "differing": "differs",
+        "no independent answer": "no independent answer",
+    }
     return [
         {
             "checked points": len(points),
-            **{name: sum(point.status == status for point in points) for name, status in columns.items()},
-            "largest relative difference": _largest(np.array([point.relative for point in points])),
+            **{name: sum(point.status == status for point in points) for name, status in statuses.items()},
+            "largest relative difference": _or_none(
+                _largest(np.array([point.relative for point in points])) if points else float("nan")
+            ),
         }
         for points in found
     ]
@@ -377,30 +422,27 @@ def _checked_points(case: Case, points: int, count: int) -> NDArray[np.intp]:
     return np.sort(generator.choice(points, size=min(count, points), replace=False))
 
 
-def _chosen_points(
-    chunk: Chunk, block: _Block, gas: FloatArray, chosen: Sequence[tuple[int, int]]
-) -> xr.Dataset:
+def _chosen_points(chunk: Chunk, block: _Block, table: ThermoTable) -> xr.Dataset:
     """A data set of scattered points, as the comparison takes it."""
     layout = chunk.group.layout
-    at = tuple(np.array(chosen).T)
-    places = [np.unravel_index(point, layout.shape) for _, point in chosen]
-    cases = [chunk.cases[i] for i, _ in chosen]
-    feeds = [case.feed[place[:-2]] for case, place in zip(cases, places, strict=True)]
-    table = thermo_table(layout.species, layout.extrapolate)
+    cases = [chunk.cases[i] for i, _, _ in block.checked]
+    places = [np.unravel_index(point, layout.shape) for _, point, _ in block.checked]
+    at = tuple(np.array([(i, point) for i, point, _ in block.checked]).T)
+    pairs = list(zip(cases, places, strict=True))
     return xr.Dataset(
         {
-            "mole_fraction": (("point", "species"), block.amounts[at] / gas[at][:, None]),
+            "mole_fraction": (("point", "species"), np.stack([part for _, _, part in block.checked])),
             "gap": ("point", block.gap[at]),
-            "gas_amount": ("point", gas[at]),
+            "gas_amount": ("point", block.gas[at]),
             "status": ("point", block.status[at]),
-            "feed_amount": (("point", "feed_species"), np.stack(feeds)),
+            "feed_amount": (
+                ("point", "feed_species"),
+                np.stack([case.feed[place[:-2]] for case, place in pairs]),
+            ),
         },
         {
-            "temperature": (
-                "point",
-                [case.temperature[place[-2]] for case, place in zip(cases, places, strict=True)],
-            ),
-            "pressure": ("point", [case.pressure[place[-1]] for case, place in zip(cases, places, strict=True)]),
+            "temperature": ("point", [case.temperature[place[-2]] for case, place in pairs]),
+            "pressure": ("point", [case.pressure[place[-1]] for case, place in pairs]),
             "species": [each.name for each in layout.species],
             "feed_species": [each.name for each in layout.feed_species],
             "feed_atoms": (("feed_species", "element"), feed_atoms(layout.feed_species, table)),

@@ -48,6 +48,12 @@ class Found:
     receipts: Mapping[int, Receipt]
     states: tuple[ChunkState, ...]
 
+    @classmethod
+    def complete(cls, receipts: Mapping[int, Receipt], chunks: int) -> Found:
+        """What a folder holds when a run is over."""
+        finished: ChunkState = "finished"
+        return cls(receipts, (finished,) * chunks)
+
     def having(self, state: ChunkState) -> int:
         return sum(each == state for each in self.states)
 
@@ -275,17 +281,23 @@ def write_summary(plan: Plan, receipts: Mapping[int, Receipt], folder: Path) -> 
 
 def summary_rows(plan: Plan, receipts: Mapping[int, Receipt]) -> list[dict[str, Any]]:
     """Rows of the summary: what a case is, then what became of it."""
+    headings = quantity_columns(plan)
     rows: list[dict[str, Any]] = []
     for i, chunk in enumerate(plan.chunks):
-        for case, row in zip(chunk.cases, receipts[i].rows, strict=True):
+        for case, outcome in zip(chunk.cases, receipts[i].rows, strict=True):
+            # The receipt tells values; what a case is called may have changed since.
             told = {"number": case.number, "case": case.name, "title": case.title}
-            values: dict[str, Any] = {}
-            for name, quantity in plan.study.quantities.items():
-                heading = f"{name} [{quantity.unit}]" if quantity.unit else name
-                values[heading] = case.values.get(name)
-            rows.append({**told, **values, "maps": chunk.group.path or "all", **{k: v for k, v in row.items() if k not in told}})
+            values = {heading: case.values.get(name) for name, heading in headings.items()}
+            found = {name: value for name, value in outcome.items() if name not in told}
+            rows.append({**told, **values, "maps": chunk.group.path or "all", **found})
     _one_type(rows)
     return sorted(rows, key=lambda row: int(row["number"]))
+
+
+def quantity_columns(plan: Plan) -> dict[str, str]:
+    """Varied quantity -> heading of its column in the summary."""
+    quantities = plan.study.quantities.items()
+    return {name: f"{name} [{each.unit}]" if each.unit else name for name, each in quantities}
 
 
 def _one_type(rows: list[dict[str, Any]]) -> None:
@@ -315,6 +327,7 @@ def write_manifest(
             "further results": list(study.keep.further),
             "cross-checked points per case": study.checked_points,
         },
+        "quantities": list(quantity_columns(plan).values()),
         "species data SHA-256": {path or "all": digest for path, digest in plan.species_digests.items()},
         "metadata": dict(described),
         "chunks": [
@@ -330,4 +343,3 @@ def write_manifest(
     }
     text = json.dumps(content, indent=1, ensure_ascii=False) + "\n"
     write_whole(folder / MANIFEST, [text.encode()])
-

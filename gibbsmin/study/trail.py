@@ -39,7 +39,9 @@ class Trail:
                 ends.append("")
             elif ends:
                 ends[-1] = case
-        return frozenset(int(case) for case in set(ends) if case.isdecimal() and ends.count(case) >= MOST_DEATHS)
+        return frozenset(
+            int(case) for case in set(ends) if case.isdecimal() and ends.count(case) >= MOST_DEATHS
+        )
 
     def __enter__(self) -> Trail:
         self._path.parent.mkdir(parents=True, exist_ok=True)

@@ -161,7 +161,9 @@ class Variations:
         if not sound:
             return []
         names = list(data["quantities"])
-        rows = draw(data["method"], int(data["size"]), int(data.get("seed", 0)), list(data["quantities"].values()))
+        rows = draw(
+            data["method"], int(data["size"]), int(data.get("seed", 0)), list(data["quantities"].values())
+        )
         return [Variant(dict(zip(names, row, strict=True))) for row in rows]
 
     def _rows(self, name: str, path: YamlPath) -> list[Variant]:

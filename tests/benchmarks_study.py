@@ -1,0 +1,147 @@
+"""Throughput of a study against that of its plain maps: `python -m tests.benchmarks_study [cases] [points a side]`.
+
+Prints, and asserts nothing: the time of the same maps solved by the grid solver alone, on as many processes, then
+that of the study with everything (starting processes, reading, checking, storing, digests, summary), for what is
+kept by default and for all species, and the peak memory of all its processes together. Processor time is given as
+well, since other programs of the machine do not count in it.
+"""
+
+from __future__ import annotations
+
+import resource
+import shutil
+import sys
+import tempfile
+import threading
+import time
+from collections.abc import Callable
+from concurrent.futures import ProcessPoolExecutor
+from multiprocessing import get_context
+from pathlib import Path
+from typing import Any
+
+from gibbsmin.solving import thermo_table
+from gibbsmin.study import load_study, run_study
+from gibbsmin.study.solving import solve_case
+
+SCENARIO = """\
+title: Reforming of a survey gas
+feed:
+  gas:
+    temperature: 500 degC
+    mole per cent: {{CH4: rest, C2H6: 4, CO2: 1, N2: 1}}
+    total: 100 kmol/h
+  steam:
+    temperature: 500 degC
+    amounts: {{H2O: 300 kmol/h}}
+grid:
+  temperature: {{from: 600 degC, to: 1000 degC, points: {side}}}
+  pressure: {{from: 1 bar, to: 40 bar, points: {side}}}
+species:
+  gases: [CH4, C2H6, CO2, N2, H2O, H2, CO, O2, NH3, HCN, HNCO, CH3OH, HCHO, HCOOH, C2H4, C2H2 (acetylene), CH2CO,
+          CH3CHO, C2H5OH, H2O2, NO, NO2, N2O, N2H4, HNO, CH3, OH, H, O, N, NH2, NH, HCO, C2H5, CN, HO2]
+results:
+  key species: [H2, CO, CO2, CH4, H2O]
+  conversions: [CH4]
+  yields:
+    hydrogen yield: {{of: H2, from: CH4}}
+"""
+
+STUDY = """\
+title: Throughput
+base: base.yaml
+quantities:
+  ethane: {{place: feed / gas / mole per cent / C2H6}}
+  steam: {{place: feed / steam / amounts / H2O, unit: kmol/h}}
+variations:
+  - sample:
+      method: latin hypercube
+      size: {cases}
+      quantities:
+        ethane: {{from: 0, to: 8}}
+        steam: {{from: 200, to: 400}}
+cross-check: {{points per case: {checks}}}
+keep: {{composition: {composition}}}
+"""
+
+WORKERS = 2
+
+
+def write_study(folder: Path, cases: int, side: int, composition: str, checks: int) -> Path:
+    """The study file and its base scenario."""
+    (folder / "base.yaml").write_text(SCENARIO.format(side=side))
+    path = folder / "study.yaml"
+    path.write_text(STUDY.format(cases=cases, composition=composition, checks=checks))
+    return path
+
+
+def plain_maps(job: tuple[Any, list[Any]]) -> int:
+    """Solve maps and forget them."""
+    layout, cases = job
+    table = thermo_table(layout.species, False)
+    return sum(solve_case(layout, table, case, 1).status.size for case in cases)
+
+
+def cpu_seconds() -> float:
+    """Processor time of this process and of its children that have ended."""
+    parts = (resource.getrusage(who) for who in (resource.RUSAGE_SELF, resource.RUSAGE_CHILDREN))
+    return sum(part.ru_utime + part.ru_stime for part in parts)
+
+
+def peak_memory() -> Callable[[], float]:
+    """Start watching this process and its children; the function gives the peak of their sum so far [GiB]."""
+    import psutil
+
+    own = psutil.Process()
+    peak = [0]
+
+    def watch() -> None:
+        while True:
+            total = 0
+            for process in [own, *own.children(recursive=True)]:
+                try:
+                    total += process.memory_full_info().pss
+                except psutil.Error:
+                    continue
+            peak[0] = max(peak[0], total)
+            time.sleep(0.2)
+
+    threading.Thread(target=watch, daemon=True).start()
+    return lambda: peak[0] / 2**30
+
+
+def main() -> None:
+    cases = int(sys.argv[1]) if len(sys.argv) > 1 else 1000
+    side = int(sys.argv[2]) if len(sys.argv) > 2 else 100
+    with tempfile.TemporaryDirectory() as name:
+        folder = Path(name)
+        study = load_study(write_study(folder, cases, side, "key species", 0))
+        layout = study.layouts[0]
+        print(f"{cases} cases x {side * side} points x {len(layout.species)} species, {WORKERS} processes")
+        parts = [(layout, list(study.cases[i::50])) for i in range(50)]
+        before = cpu_seconds()
+        with ProcessPoolExecutor(WORKERS, get_context("spawn")) as pool:
+            begun = time.perf_counter()
+            points = sum(pool.map(plain_maps, parts))
+            plain = time.perf_counter() - begun
+        plain_cpu = cpu_seconds() - before
+        print(f"plain maps: {plain:.2f} s, {plain_cpu:.2f} s of processor, {plain / points * 1e6:.3f} us a point")
+        memory = peak_memory()
+        for composition, checks in (("key species", 0), ("key species", 1), ("all", 0)):
+            file = write_study(folder, cases, side, composition, checks)
+            before = cpu_seconds()
+            begun = time.perf_counter()
+            run = run_study(file, folder / "out", workers=WORKERS)
+            took = time.perf_counter() - begun
+            cpu = cpu_seconds() - before
+            size = sum(path.stat().st_size for path in (folder / "out").rglob("*") if path.is_file())
+            print(
+                f"study, {composition}, {checks} checked a case: {took:.2f} s, {plain / took:.0%} of the plain speed "
+                f"({cpu:.2f} s of processor, {plain_cpu / cpu:.0%}), "
+                f"{size / 1e9:.2f} GB, solved {run.all_solved}, peak so far {memory():.2f} GiB"
+            )
+            shutil.rmtree(folder / "out")
+
+
+if __name__ == "__main__":
+    main()
