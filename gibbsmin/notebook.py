@@ -53,7 +53,7 @@ class Picture:
         return stream.getvalue()
 
 
-@xr.register_dataset_accessor("gibbsmin")
+@xr.register_dataset_accessor("gibbsmin")  # type: ignore[no-untyped-call]
 class GibbsminAccessor:
     """What a data set of equilibrium compositions can do in a notebook; see `Plots`."""
 
@@ -184,7 +184,7 @@ def _display_units(wanted: Mapping[str, str]) -> Mapping[str, DisplayUnit]:
     from gibbsmin.figures.axes import DisplayUnit
     from gibbsmin.scenario.units import find_unit
 
-    shown = {}
+    shown: dict[str, DisplayUnit] = {}
     kinds: tuple[Literal["temperature", "pressure"], ...] = ("temperature", "pressure")
     for kind in kinds:
         word = wanted.get(kind, DEFAULT_UNITS[kind])

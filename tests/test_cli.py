@@ -84,7 +84,7 @@ def test_run_solves_confirms_draws_and_saves(small: Path, capsys: pytest.Capture
     assert "written to small-results:" in lines
     folder = Path("small-results")
     names = ["composition", "composition_dry", "map_H2", "map_CO", "map_conversion_of_CO", "map_H2_to_CO"]
-    data = {"results.nc", "record.json", "crosscheck.csv", "scenario.yaml"}
+    data = {"results.nc", "record.json", "crosscheck.csv", "scenario.yaml", "report.html"}
     figures = {f"figures/{name}.{ending}" for name in names for ending in ("png", "svg")}
     assert files_in(folder) == data | figures
     told = " ".join(out.partition("written to")[2].split())

@@ -27,10 +27,18 @@ CAUTION = (
     "come first."
 )
 
+# Inherits colours and type from the notebook, light or dark; only lines and space are its own.
 _STYLE = (
-    "<style>.gibbsmin-outcome{font-family:sans-serif}.gibbsmin-outcome td,.gibbsmin-outcome th"
-    "{padding:.15em .8em;text-align:right}.gibbsmin-outcome td:first-child,.gibbsmin-outcome th:first-child"
-    "{text-align:left}.gibbsmin-outcome .warning{font-weight:bold}</style>"
+    "<style>.gibbsmin-outcome{max-width:62em;line-height:1.45;font-variant-numeric:tabular-nums}"
+    ".gibbsmin-outcome h3{margin:.2em 0 .3em}"
+    ".gibbsmin-outcome .verdict span{display:inline-block;border:1px solid #8888;border-radius:1em;"
+    "padding:0 .8em;margin:0 .5em .4em 0}"
+    ".gibbsmin-outcome .verdict .warning{font-weight:bold;border:2px solid #d55e00}"
+    ".gibbsmin-outcome table{border-collapse:collapse;margin:.4em 0}"
+    ".gibbsmin-outcome td,.gibbsmin-outcome th{padding:.15em .9em .15em 0;text-align:right;"
+    "border-bottom:1px solid #8884;background:none}"
+    ".gibbsmin-outcome td:first-child,.gibbsmin-outcome th:first-child{text-align:left}"
+    ".gibbsmin-outcome ul{margin:.3em 0;padding-left:1.3em}</style>"
 )
 
 
@@ -51,21 +59,37 @@ def summary_text(outcome: Outcome) -> str:
 
 
 def summary_html(outcome: Outcome) -> str:
-    """The same for a notebook; every text from outside is escaped."""
+    """The same, compact, for a notebook; every text from outside is escaped."""
     heading, rows = key_table(outcome)
     head = "".join(f"<th>{html.escape(cell)}</th>" for cell in heading)
     body = "".join(
         "<tr>" + "".join(f"<td>{html.escape(cell)}</td>" for cell in row) + "</tr>" for row in rows
     )
-    sound = outcome.all_solved and outcome.all_confirmed
-    mark = "" if sound else ' class="warning"'
+    shown = "" if outcome.all_solved and outcome.all_confirmed else " open"
     return (
         f'{_STYLE}<div class="gibbsmin-outcome"><h3>{html.escape(outcome.scenario.title)}</h3>'
-        + _list(facts(outcome))
+        + f'<div class="verdict">{"".join(_verdicts(outcome))}</div>'
         + f"<table><thead><tr>{head}</tr></thead><tbody>{body}</tbody></table>"
-        + f"<div{mark}>{_list(evidence_lines(outcome))}</div>"
+        + f"<details><summary>What was asked</summary>{_list(facts(outcome))}</details>"
+        + f"<details{shown}><summary>Evidence</summary>{_list(evidence_lines(outcome))}</details>"
         + f"<p><small>{html.escape(CAUTION)}</small></p></div>"
     )
+
+
+def _verdicts(outcome: Outcome) -> Iterator[str]:
+    check = outcome.crosscheck
+    solved = outcome.points - outcome.unsolved
+    yield _verdict(outcome.all_solved, f"{solved} of {outcome.points} points solved and proved")
+    if check.points:
+        yield _verdict(
+            check.all_confirmed, f"{check.confirmed} of {len(check.points)} checked points confirmed"
+        )
+
+
+def _verdict(good: bool, text: str) -> str:
+    sign = "\N{CHECK MARK}" if good else "!"
+    kind = "" if good else ' class="warning"'
+    return f"<span{kind}>{sign} {html.escape(text)}</span>"
 
 
 def facts(outcome: Outcome) -> list[str]:

@@ -1,7 +1,7 @@
 """Numbers for the page's charts in few characters.
 
 A value becomes the upper three bytes of its single-precision form (IEEE 754), rounded: a sign, eight bits of
-exponent and fifteen of the fraction. That is a relative error of at most 2^-16 (1.5e-5), so four printed
+exponent and fifteen of the fraction. That is a relative error of hardly more than 2^-16 (1.5e-5), so four printed
 digits hold to within one unit of the last; the results file keeps all digits. Three bytes are exactly four
 characters of base64 (RFC 4648), without a compressor whose output could differ between machines.
 """
@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-RELATIVE_ERROR = 2.0**-16
+RELATIVE_ERROR = 2.0**-16 + 2.0**-24  # the second: of the step through single precision
 SMALLEST = float(np.finfo(np.float32).tiny)  # what lies below becomes zero
 _LARGEST = 3.38e38  # so far below the end of single precision that rounding up cannot leave it
 

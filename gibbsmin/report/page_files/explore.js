@@ -245,6 +245,7 @@ function start() {
   connectMap();
   connectButtons();
   connectPrinting();
+  performance.mark('ready');
   document.documentElement.dataset.ready = 'yes';
 }
 
