@@ -134,6 +134,13 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
     results = read_results(reading, data.get("results", {}), feed, choice, pressure)
     if reading.faults or temperature is None or pressure is None or further_axes is None:
         return None
+    reactions = None
+    if "reactions" in data:
+        from gibbsmin.scenario.reactions import read_reactions  # scenarios without reactions need none of it
+
+        reactions = read_reactions(reading, data["reactions"], choice, feed, temperature, further_axes, folder)
+        if reactions is None:
+            return None
     return Scenario(
         title=data["title"],
         notes=data.get("notes", ""),
@@ -154,6 +161,7 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
         ambient_pressure=float(reading.ambient),
         remarks=tuple(reading.remarks),
         positions=reading.document.positions,
+        reactions=reactions,
     )
 
 

@@ -25,6 +25,7 @@ from numpy.typing import NDArray
 from gibbsmin.scenario.ratios import FeedEquations
 
 if TYPE_CHECKING:
+    from gibbsmin.reactions.wanted import ReactionsWanted
     from gibbsmin.species import Species, SpeciesLibrary
 
 Measure = Literal["moles", "atoms", "mass", "oxygen demand"]
@@ -260,6 +261,7 @@ class Scenario:
         ambient_pressure: Pa; gauge pressures were read against it.
         remarks: things that are no fault but should be told.
         positions: path in the file -> (line, column), both from 1.
+        reactions: what is asked about single reactions, or None.
     """
 
     title: str
@@ -281,6 +283,7 @@ class Scenario:
     ambient_pressure: float
     remarks: tuple[str, ...] = ()
     positions: Mapping[tuple[str | int, ...], tuple[int, int]] = field(default_factory=dict, repr=False)
+    reactions: ReactionsWanted | None = field(default=None, repr=False)
 
     @property
     def species(self) -> tuple[Species, ...]:
