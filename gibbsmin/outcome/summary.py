@@ -37,6 +37,7 @@ _STYLE = (
     ".gibbsmin-outcome table{border-collapse:collapse;margin:.4em 0}"
     ".gibbsmin-outcome td,.gibbsmin-outcome th{padding:.15em .9em .15em 0;text-align:right;"
     "border-bottom:1px solid #8884;background:none}"
+    ".gibbsmin-outcome td:last-child,.gibbsmin-outcome th:last-child{text-align:left}"
     ".gibbsmin-outcome td:first-child,.gibbsmin-outcome th:first-child{text-align:left}"
     ".gibbsmin-outcome ul{margin:.3em 0;padding-left:1.3em}</style>"
 )
@@ -54,6 +55,10 @@ def summary_text(outcome: Outcome) -> str:
             *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)),
         ]
         lines.append("  ".join(cells).rstrip())
+    if outcome.reactions is not None:
+        from gibbsmin.outcome.reactions import summary_lines
+
+        lines += ["", *summary_lines(outcome)]
     lines += ["", *_filled(evidence_lines(outcome)), "", *_filled([CAUTION])]
     return "\n".join(lines)
 

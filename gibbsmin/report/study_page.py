@@ -97,7 +97,7 @@ def _cases(cases: Sequence[StudyCase]) -> Markup:
         [
             tag("a", case.name, href=case.report) if case.report else case.name,
             f"{case.points:,}",
-            f"{case.unsolved:,}",
+            "did not run" if case.failure else f"{case.unsolved:,}",
             f"{case.differing:,} of {case.checked:,}" if case.checked else "–",
             "–" if case.largest_gap is None else number(case.largest_gap, 2),
             *(number(case.results[heading]) if heading in case.results else "–" for heading in headings),

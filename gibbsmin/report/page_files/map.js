@@ -34,18 +34,34 @@ function rangeOf(quantity) {
 function bands(quantity, log) {
   const { low, high, positive } = rangeOf(quantity);
   if (!(high - low > 1e-9 * Math.max(Math.abs(high), Math.abs(low)))) return null;
-  if (log && high > 0 && low >= 0) {
-    const floor = Math.log10(Math.max(positive, high * DEEPEST));
-    const step = Math.max(niceStep(Math.max(Math.log10(high) - floor, 1e-6), BANDS), 1e-6);
-    const [start, end] = [Math.floor(floor / step) * step, Math.ceil(Math.log10(high) / step) * step];
-    return { start, end, step, text: (place) => formatNumber(10 ** place, 3), log: true };
-  }
+  if (log && high > 0 && low >= 0) return logBands(Math.max(positive, high * DEEPEST), high);
   const signed = low < 0 && high > 0;
   const size = Math.max(-low, high);
   const [from, to] = signed ? [-size, size] : [low, high];
   const step = niceStep(to - from, BANDS);
   return { start: Math.floor(from / step) * step, end: Math.ceil(to / step) * step, step, signed,
     text: (place) => formatNumber(Number(place.toPrecision(8)), 4), log: false };
+}
+
+// Bands that end at 1, 2 and 5 of each decade, at 1 and 3, or at each decade: a value's place on the scale is
+// counted in bands, so that all of them are equally wide.
+function logBands(low, high) {
+  const decades = Math.log10(high / low);
+  const steps = decades < 4 ? [1, 2, 5] : decades < 7 ? [1, 3] : [1];
+  const ends = [];
+  for (let power = Math.floor(Math.log10(low)); power <= Math.ceil(Math.log10(high)); power += 1) {
+    ends.push(...steps.map((step) => step * 10 ** power));
+  }
+  const first = ends.findLastIndex((end) => end <= low * 1.000001);
+  const last = ends.findIndex((end) => end >= high * 0.999999);
+  const kept = ends.slice(Math.max(first, 0), (last < 0 ? ends.length : last) + 1);
+  const place = (value) => {
+    if (!(value > kept[0])) return 0;
+    const band = Math.min(Math.max(kept.findLastIndex((end) => end <= value), 0), kept.length - 2);
+    return band + Math.log(value / kept[band]) / Math.log(kept[band + 1] / kept[band]);
+  };
+  return { start: 0, end: kept.length - 1, step: 1, place, text: (at) => formatNumber(kept[Math.round(at)], 3),
+    log: true };
 }
 
 function levels({ start, end, step }) {
@@ -85,10 +101,7 @@ function reach(values, type) {
 }
 
 function filled(x, y, values, scale, quantity) {
-  const z = scale.log
-    ? values.map((row) => row.map((value) => (value === null ? null
-      : Math.max(scale.start, value > 0 ? Math.log10(value) : scale.start))))
-    : values;
+  const z = scale.log ? values.map((row) => row.map((value) => (value === null ? null : scale.place(value)))) : values;
   const marks = levels(scale);
   // Every band gets a mark where there is room for all of them.
   const shown = marks.filter((_, i) => marks.length < 14 || i % 2 === 0);
@@ -123,7 +136,7 @@ function unsolvedMarks(x, y, values) {
     }
   }));
   if (!xs.length) return [];
-  return [{ type: 'scatter', mode: 'markers', x: xs, y: ys, hoverinfo: 'skip', name: 'not solved',
+  return [{ type: 'scatter', mode: 'markers', x: xs, y: ys, hoverinfo: 'skip', name: 'not solved', cliponaxis: false,
     marker: { symbol: 'x-thin', size: 7, line: { width: 1.3, color: colour('ink') } } }];
 }
 
@@ -159,11 +172,11 @@ function boundaryLines(state, across, up, x, y) {
       const value = each.values[flat];
       return value === null ? null : shownSingle(axisNamed[each.along], value, state);
     });
-    const middle = Math.floor(places.length / 2);
+    const labelled = Math.floor(0.8 * (places.length - 1));
     const common = { type: 'scatter', mode: 'lines+text', hoverinfo: 'skip', name: each.label,
-      line: { width: 2.5, color: '#fff' }, textfont: { color: colour('ink') }, textposition: 'top center' };
+      line: { width: 2.5, color: '#fff' }, textfont: { color: colour('ink') }, textposition: 'middle right' };
     const own = each.along === up.name ? { x, y: places } : { x: places, y };
-    const text = places.map((_, i) => (i === middle ? plainText(each.label) : ''));
+    const text = places.map((_, i) => (i === labelled ? plainText(each.label) : ''));
     return [{ ...common, ...own, mode: 'lines', line: { width: 5, color: 'rgba(255,255,255,0.85)' } },
       { ...common, ...own, text, line: { width: 2, color: '#111', dash: 'dash' } }];
   }).flat();
