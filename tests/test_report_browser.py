@@ -68,13 +68,13 @@ def opened(browser: Any, folder: Path) -> Iterator[Opener]:
 
 
 def number(text: str) -> float:
-    """A number as the page prints it: 0.25, 1.5×10⁻⁴, −3."""
-    match = re.match(r"(−?[\d.]*)(?:×?10([⁻⁰¹²³⁴⁵⁶⁷⁸⁹]+))?", text)
-    assert match, text
-    front, power = match.groups()
-    if power is None:
-        return float(front.replace("−", "-"))
-    return float((front or "1").replace("−", "-")) * 10.0 ** int(power.translate(_RAISED))
+    """A number as the page prints it: 0.25, 1.5×10⁻⁴, 10⁻⁶, −3; a unit behind it is left out."""
+    if power := re.match(r"(?:(−?[\d.]+)×)?10([⁻⁰¹²³⁴⁵⁶⁷⁸⁹]+)", text):
+        front, exponent = power.groups()
+        return float((front or "1").replace("−", "-")) * 10.0 ** int(exponent.translate(_RAISED))
+    plain = re.match(r"−?[\d.]+", text)
+    assert plain, text
+    return float(plain[0].replace("−", "-"))
 
 
 def pixel_of(page: OpenedPage, column: int, row: int) -> tuple[float, float]:
