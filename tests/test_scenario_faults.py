@@ -410,6 +410,23 @@ def test_faults_of_small_files(axes: str, feed: str, said: str) -> None:
     assert any(said in fault for fault in faults_of(FRAME % (axes, feed)))
 
 
+@pytest.mark.parametrize("total", ["100 kmol/h", "100 kmol/x"], ids=["feed sound", "feed faulty"])
+def test_faults_of_all_sections_come_in_one_message(total: str) -> None:
+    text = (
+        SOUND.replace("total: 100 kmol/h", f"total: {total}")
+        .replace("N2, O2]", "N2, O2X]")
+        .replace("key species: [H2, CO]", "key species: [H2, COX]")
+        .replace("hydrogen: {of: H2,", "hydrogen: {of: H2X,")
+        .replace("lines at: [1 bar]", "lines at: [1 barn]")
+    )
+    said = "\n".join(faults_of(text))
+    for wrong in ("O2X", "COX", "H2X", "barn"):
+        assert f"'{wrong}'" in said
+    assert ("kmol/x" in said) == ("kmol/x" in total)
+    # what cannot be known without the faulty parts is not complained of
+    assert said.count("\n") == 3 + ("kmol/x" in total)
+
+
 def test_an_element_without_a_gas_is_a_fault() -> None:
     text = "species: {gases: [H2O, H2, O2]}\n" + FRAME % ("{}", "{a: {amounts: {H2O: 1 mol, C(gr): 1 mol}}}")
     assert any(

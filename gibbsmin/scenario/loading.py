@@ -14,7 +14,7 @@ from gibbsmin.scenario.axes import check_feeds, read_axis, read_further_axes, st
 from gibbsmin.scenario.feed import Feed, read_feed
 from gibbsmin.scenario.model import Scenario
 from gibbsmin.scenario.reading import Reading
-from gibbsmin.scenario.species_choice import add_own_species, choose_species
+from gibbsmin.scenario.species_choice import add_own_species, check_names, choose_species
 from gibbsmin.scenario.structure import check_structure
 from gibbsmin.scenario.wanted import read_cross_check, read_output, read_results
 from gibbsmin.strict_yaml import Document, parse
@@ -123,22 +123,25 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
     whole = reading.document.data.get("feed")
     feed.sound = feed.sound and isinstance(whole, dict) and len(streams) == len(whole)
     further_axes = read_further_axes(reading, further, tuple(streams), feed)
+    wanted_results = data.get("results", {})
     if not feed.sound or not feed.streams:
+        check_names(reading, wanted_species)
+        read_results(reading, wanted_results, None, None, pressure)
         return None
     _check_feed(reading, feed)
     if further_axes is not None and not reading.faults:
         check_feeds(reading, further_axes, feed)
     choice = choose_species(reading, wanted_species, feed, temperature)
-    if choice is None:
-        return None
-    results = read_results(reading, data.get("results", {}), feed, choice, pressure)
-    if reading.faults or temperature is None or pressure is None or further_axes is None:
+    results = read_results(reading, wanted_results, feed, choice, pressure)
+    if choice is None or reading.faults or temperature is None or pressure is None or further_axes is None:
         return None
     reactions = None
     if "reactions" in data:
         from gibbsmin.scenario.reactions import read_reactions  # scenarios without reactions need none of it
 
-        reactions = read_reactions(reading, data["reactions"], choice, feed, temperature, further_axes, folder)
+        reactions = read_reactions(
+            reading, data["reactions"], choice, feed, temperature, further_axes, folder
+        )
         if reactions is None:
             return None
     return Scenario(

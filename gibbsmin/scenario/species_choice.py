@@ -42,6 +42,15 @@ def add_own_species(reading: Reading, data: Mapping[str, Any], folder: Path) -> 
         reading.library = reading.library.with_records(records)
 
 
+def check_names(reading: Reading, data: Mapping[str, Any]) -> None:
+    """Faults of the names in this section alone, for when the feed is not sound."""
+    for key in ("gases", "leave out"):
+        names = data.get(key, ())
+        for i, name in enumerate(() if isinstance(names, str) else names):
+            if name is not FAULTY:
+                reading.species(name, ("species", key, i))
+
+
 def choose_species(
     reading: Reading, data: Mapping[str, Any], feed: Feed, temperature: Axis | None
 ) -> SpeciesChoice | None:
@@ -121,7 +130,8 @@ def _all_gases(reading: Reading, data: Mapping[str, Any], feed: Feed) -> tuple[l
     fed = [species for species in feed.species.values() if species.state == "g"]
     added = [species.name for species in fed if species.name not in names]
     if added:
-        reading.remarks.append(f"species: {', '.join(added)} takes part beyond the limits because it is fed")
+        part = "takes part" if len(added) == 1 else "take part"
+        reading.remarks.append(f"species: {', '.join(added)} {part} beyond the limits because fed")
     fed_names = {species.name for species in fed}
     rest = [s for s in found if s.name not in fed_names and s.name not in unwanted]
     limits = [f"at most {carbon} carbon {'atom' if carbon == 1 else 'atoms'}"] if carbon is not None else []

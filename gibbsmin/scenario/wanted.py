@@ -44,9 +44,16 @@ def read_output(data: Mapping[str, Any]) -> OutputWanted:
 
 
 def read_results(
-    reading: Reading, data: Mapping[str, Any], feed: Feed, choice: SpeciesChoice, pressure: Axis | None
+    reading: Reading,
+    data: Mapping[str, Any],
+    feed: Feed | None,
+    choice: SpeciesChoice | None,
+    pressure: Axis | None,
 ) -> WantedResults:
-    """The wanted results; faults are recorded, so the return value counts only when there are none."""
+    """The wanted results; faults are recorded, so the return value counts only when there are none.
+
+    Without a sound feed or choice, what depends on it is not checked, but everything else still is.
+    """
     reader = _ResultsReader(reading, feed, choice)
     return WantedResults(
         key_species=reader.several(data.get("key species", ()), ("results", "key species")),
@@ -60,27 +67,26 @@ def read_results(
 
 
 class _ResultsReader:
-    def __init__(self, reading: Reading, feed: Feed, choice: SpeciesChoice) -> None:
+    def __init__(self, reading: Reading, feed: Feed | None, choice: SpeciesChoice | None) -> None:
         self.reading = reading
         self.feed = feed
-        self.gases: dict[str, Species] = {species.name: species for species in choice.species}
+        self.gases = None if choice is None else [species.name for species in choice.species]
 
     def gas(self, name: Any, path: YamlPath) -> Species | None:
         """A gas that takes part."""
         species = None if name is FAULTY else self.reading.species(name, path)
-        if species is None or not self.reading.choice(
-            species.name, self.gases, "a gas that takes part", path
-        ):
-            return None
-        return species
+        if species is None or self.gases is None:
+            return species
+        takes_part = self.reading.choice(species.name, self.gases, "a gas that takes part", path)
+        return species if takes_part else None
 
     def reactant(self, name: Any, path: YamlPath) -> Species | None:
         """A gas of the feed."""
         species = None if name is FAULTY else self.reading.species(name, path)
+        if species is None or self.feed is None:
+            return species
         fed = [name for name, each in self.feed.species.items() if each.state == "g"]
-        if species is None or not self.reading.choice(species.name, fed, "a gas of the feed", path):
-            return None
-        return species
+        return species if self.reading.choice(species.name, fed, "a gas of the feed", path) else None
 
     def several(self, value: Any, path: YamlPath) -> tuple[str, ...]:
         if isinstance(value, str):
@@ -167,7 +173,9 @@ class _ResultsReader:
         """Whether the element is in the product and in what it comes from."""
         if not self.reading.choice(element, product.composition, f"an element of {product.name}", path):
             return False
-        if reactant is None:
-            of_feed = dict.fromkeys(e for species in self.feed.species.values() for e in species.composition)
-            return self.reading.choice(element, of_feed, "an element of the feed", path)
-        return self.reading.choice(element, reactant.composition, f"an element of {reactant.name}", path)
+        if reactant is not None:
+            return self.reading.choice(element, reactant.composition, f"an element of {reactant.name}", path)
+        if self.feed is None:
+            return True
+        of_feed = dict.fromkeys(e for species in self.feed.species.values() for e in species.composition)
+        return self.reading.choice(element, of_feed, "an element of the feed", path)
