@@ -19,6 +19,7 @@ from textwrap import fill
 from typing import TYPE_CHECKING
 
 from gibbsmin.commands.cases import add_cases
+from gibbsmin.commands.reactions import add_approach, add_measured, add_reaction
 from gibbsmin.commands.study import add_study
 from gibbsmin.errors import FolderExistsError, GibbsminError
 from gibbsmin.terminal import accept_any_text, progress_bar, say
@@ -379,6 +380,9 @@ _COMMANDS: dict[str, tuple[str, Callable[[argparse.ArgumentParser], None]]] = {
     "check": ("say whether a scenario is sound and what it would compute", _add_check),
     "study": ("compute many scenarios as one, or what is missing of them", add_study),
     "cases": ("sum up, rank, filter and draw the cases of a study", add_cases),
+    "reaction": ("K(T) of a reaction, its best short correlations, and the error of given ones", add_reaction),
+    "measured": ("reaction enthalpy and entropy from measured K", add_measured),
+    "approach": ("approach to equilibrium from gas analyses", add_approach),
     "species": ("list species, or show the data of one", _add_species),
     "scenarios": ("list the example scenarios, print one, or copy them out", _add_scenarios),
     "schema": ("print the JSON Schema of a file form, for editors that check as you type", _add_schema),

@@ -49,6 +49,7 @@ def run(
         TemperatureRangeError: the grid leaves a species' data and the scenario does not allow that.
         ConditionsError: an axis is called like one of the results.
         MissingPackageError: the scenario asks for a Parquet table and pyarrow is not installed.
+        MeasurementError, ReactionError: measured values or reactions that cannot be worked out.
     """
     if "parquet" in scenario.output.tables and find_spec("pyarrow") is None:
         raise MissingPackageError("pyarrow", "writing a Parquet table")
@@ -65,10 +66,16 @@ def run(
         progress=check_progress,
     )
     dataset = check.add_to(dataset)
+    reactions = None
+    if scenario.reactions is not None:
+        from gibbsmin.outcome.reactions import add_reactions, reaction_results
+
+        reactions = reaction_results(scenario, conditions, dataset, threads=threads)
+        dataset = add_reactions(dataset, reactions)
     dataset.attrs["title"] = scenario.title
     if scenario.notes:
         dataset.attrs["notes"] = scenario.notes
-    return Outcome(scenario, dataset, check, _settings(scenario))
+    return Outcome(scenario, dataset, check, _settings(scenario), reactions)
 
 
 def scenario_conditions(scenario: Scenario) -> Conditions:

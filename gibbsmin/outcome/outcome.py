@@ -12,6 +12,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from gibbsmin.crosscheck import CrossCheck
+    from gibbsmin.reactions.results import ReactionResults
     from gibbsmin.scenario import Scenario
 
 
@@ -24,12 +25,14 @@ class Outcome:
         dataset: composition, evidence and derived results at every point, with units and long names.
         crosscheck: the comparison with an independent program.
         settings: what else decided the numbers.
+        reactions: answers about single reactions, where the scenario asks for some.
     """
 
     scenario: Scenario
     dataset: xr.Dataset
     crosscheck: CrossCheck
     settings: Mapping[str, Any]
+    reactions: ReactionResults | None = None
 
     @property
     def points(self) -> int:

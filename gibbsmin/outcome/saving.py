@@ -61,6 +61,10 @@ def save(
         for kind in wanted:
             write_table(outcome.dataset, draft / TABLE_FILES[kind], kind)
         write_crosscheck(outcome.crosscheck, draft / CROSSCHECK_FILE)
+        if outcome.reactions is not None:
+            from gibbsmin.outcome.reactions import write_reactions
+
+            write_reactions(outcome, draft)
         # newline="" keeps the line ends of the source, so that the copy has the digest of the original
         (draft / SCENARIO_FILE).write_text(outcome.scenario.text, encoding="utf-8", newline="")
         if further_files is not None:

@@ -27,6 +27,7 @@ from gibbsmin.reactions.independence import coverage
 from gibbsmin.reactions.subset import Composition, MapConditions, Subset, as_gases, solve_subset
 
 if TYPE_CHECKING:
+    from gibbsmin.reactions.shortcuts import Shortcut
     from gibbsmin.species import Species
 
 Array = NDArray[np.float64]
@@ -34,6 +35,9 @@ Booleans = NDArray[np.bool_]
 
 MOST_CANDIDATES = 8
 """Neglected reactions that are tried; they come in the order of how abundant the species they form is."""
+
+SEPARATOR = " + "
+"""Between the names of shortcuts that are used together."""
 
 TRACE = 0.1
 """Species that nowhere reach this share of the tolerance cannot be the reason and are not tried."""
@@ -94,19 +98,35 @@ class FullMixture:
 
 
 @dataclass(frozen=True)
+class Largest:
+    """The largest difference over a map, measured by the tolerance of the quantity that differs.
+
+    Attributes:
+        quantity: a species' name, for its mole fraction, or "conversion of ...".
+        value: the difference itself [1], with its sign. ratio: its size over the tolerance.
+        place: index of the point (feed, temperature, pressure).
+    """
+
+    quantity: str
+    value: float
+    ratio: float
+    place: tuple[int, int, int]
+
+    def __str__(self) -> str:
+        return f"{self.quantity} {self.value:+.3f}"
+
+
+@dataclass(frozen=True)
 class Neglected:
     """A reaction that the subset leaves out, and what adding it alone would change.
 
     Attributes:
-        largest: largest change of any key species' mole fraction over the map.
-        species: the key species that changes so. place: index of that point (feed, temperature, pressure).
-        change: (F, nT, nP) largest change at each point.
+        largest: the largest change over the map.
+        change: (F, nT, nP) largest change at each point, over its tolerance.
     """
 
     reaction: Reaction
-    largest: float
-    species: str
-    place: tuple[int, int, int]
+    largest: Largest
     change: Array
 
 
@@ -120,7 +140,7 @@ class Comparison:
         error: (F, nT, nP, S) mole fraction less that of the full mixture.
         conversion, conversion_error: species -> (F, nT, nP), of the species whose conversion is wanted.
         reason: (F, nT, nP) codes of `Reason`.
-        largest: largest |error| of a key species; `species` and `place` say which and where.
+        largest: the largest error of a key species or a conversion.
         neglected: reactions left out, those that matter most first.
     """
 
@@ -131,9 +151,7 @@ class Comparison:
     conversion: Mapping[str, Array]
     conversion_error: Mapping[str, Array]
     reason: NDArray[np.int8]
-    largest: float
-    species: str
-    place: tuple[int, int, int]
+    largest: Largest
     neglected: tuple[Neglected, ...]
 
     @property
@@ -192,17 +210,19 @@ def compare(
     *,
     key_species: Sequence[str],
     conversions: Sequence[str] = (),
+    shortcuts: Sequence[Mapping[str, Shortcut]] = (),
     tolerance: MixtureTolerance = MixtureTolerance(),
     known_reactions: Sequence[Reaction] = (),
     threads: int | None = None,
 ) -> list[Comparison]:
-    """Compare a subset with the full mixture: with the exact K and, if it has shortcuts, with them.
+    """Compare a subset with the full mixture: with the exact K, and with each choice of shortcuts.
 
     Args:
         full: the full minimisation.
-        subset: the reactions that are taken to run alone, with their shortcuts.
+        subset: the reactions that are taken to run alone.
         key_species: whose mole fractions count, names of species of the mixture.
         conversions: feed species whose conversions count as well.
+        shortcuts: choices of shortcuts, each a mapping of reaction name to shortcut.
         tolerance: what is accepted.
         known_reactions: neglected ones that have a name; tried before those that are made up.
         threads: number of threads.
@@ -216,17 +236,17 @@ def compare(
         raise ReactionError(
             subset.name, f"key species {', '.join(unknown) or 'are missing'}: name gases of the mixture"
         )
-    keys = [names.index(each) for each in key_species]
-    exact = solve_subset(full.conditions, Subset(subset.name, subset.reactions), threads=threads)
-    neglected = _neglected(full, subset, exact, keys, tolerance, known_reactions, threads)
+    judged = _Judged(full, tuple(key_species), tuple(conversions), tolerance)
+    exact = solve_subset(full.conditions, subset, threads=threads)
+    neglected = _neglected(judged, subset, exact, known_reactions, threads)
     choices = [("exact", exact)]
-    if subset.shortcuts:
-        label = ", ".join(dict.fromkeys(each.name for each in subset.shortcuts.values()))
-        choices.append((label, solve_subset(full.conditions, subset, threads=threads)))
-    beyond_with_exact = _beyond(full, exact, keys, conversions, tolerance)
+    for choice in shortcuts:
+        label = SEPARATOR.join(dict.fromkeys(each.name for each in choice.values()))
+        approximate = Subset(subset.name, subset.reactions, choice)
+        choices.append((label, solve_subset(full.conditions, approximate, threads=threads)))
+    beyond_with_exact = np.asarray((np.abs(judged.differences(exact, full.composition)) > 1).any(axis=-1))
     return [
-        _comparison(full, subset, label, found, keys, conversions, tolerance, beyond_with_exact, neglected)
-        for label, found in choices
+        _comparison(judged, subset, label, found, beyond_with_exact, neglected) for label, found in choices
     ]
 
 
@@ -246,89 +266,99 @@ def conversion_of(conditions: MapConditions, composition: Composition, species: 
 # --- inner ---------------------------------------------------------------------------------------------------
 
 
+@dataclass(frozen=True)
+class _Judged:
+    """The quantities by which compositions are judged: mole fractions of key species, and conversions."""
+
+    full: FullMixture
+    key_species: tuple[str, ...]
+    conversions: tuple[str, ...]
+    tolerance: MixtureTolerance
+
+    @property
+    def columns(self) -> list[int]:
+        names = [each.name for each in self.full.conditions.species]
+        return [names.index(each) for each in self.key_species]
+
+    def differences(self, one: Composition, other: Composition) -> Array:
+        """One less other of every quantity over its tolerance, (F, nT, nP, quantities)."""
+        fractions = one.mole_fractions[..., self.columns] - other.mole_fractions[..., self.columns]
+        parts = [fractions / self.tolerance.mole_fraction]
+        for name in self.conversions:
+            off = conversion_of(self.full.conditions, one, name) - conversion_of(
+                self.full.conditions, other, name
+            )
+            parts.append(np.nan_to_num(off)[..., None] / self.tolerance.conversion)
+        return np.concatenate(parts, axis=-1)
+
+    def largest(self, differences: Array) -> Largest:
+        """The largest of these differences; unsolved points count as none."""
+        size = np.nan_to_num(np.abs(differences))
+        place = np.unravel_index(int(np.argmax(size)), size.shape)
+        which = int(place[3])
+        fraction = which < len(self.key_species)
+        scale = self.tolerance.mole_fraction if fraction else self.tolerance.conversion
+        quantity = (
+            self.key_species[which]
+            if fraction
+            else f"conversion of {self.conversions[which - len(self.key_species)]}"
+        )
+        value = float(np.nan_to_num(differences[place])) * scale
+        return Largest(quantity, value, float(size[place]), (int(place[0]), int(place[1]), int(place[2])))
+
+
 def _comparison(
-    full: FullMixture,
+    judged: _Judged,
     subset: Subset,
     label: str,
     found: Composition,
-    keys: list[int],
-    conversions: Sequence[str],
-    tolerance: MixtureTolerance,
     beyond_with_exact: Booleans,
     neglected: tuple[Neglected, ...],
 ) -> Comparison:
-    names = [each.name for each in full.conditions.species]
-    error = found.mole_fractions - full.composition.mole_fractions
-    beyond = _beyond(full, found, keys, conversions, tolerance)
+    full = judged.full
+    differences = judged.differences(found, full.composition)
+    beyond = (np.abs(differences) > 1).any(axis=-1)
     solved = (found.status == 0) & (full.composition.status == 0)
     reason = np.full(solved.shape, Reason.WITHIN, dtype=np.int8)
     reason[beyond] = Reason.K_ERROR
     reason[beyond & beyond_with_exact] = Reason.NEGLECTED_REACTIONS
     reason[full.activity > 1] = Reason.CONDENSED_PHASE
     reason[~solved] = Reason.NOT_SOLVED
-    size = np.abs(np.where(solved[..., None], error[..., keys], 0.0))
-    place = np.unravel_index(int(np.argmax(size)), size.shape)
-    converted = {name: conversion_of(full.conditions, found, name) for name in conversions}
+    converted = {name: conversion_of(full.conditions, found, name) for name in judged.conversions}
     return Comparison(
         subset=subset,
         K=label,
         composition=found,
-        error=error,
+        error=found.mole_fractions - full.composition.mole_fractions,
         conversion=converted,
         conversion_error={
             name: value - conversion_of(full.conditions, full.composition, name)
             for name, value in converted.items()
         },
         reason=reason,
-        largest=float(error[(*place[:3], keys[int(place[3])])]),
-        species=names[keys[int(place[3])]],
-        place=(int(place[0]), int(place[1]), int(place[2])),
+        largest=judged.largest(differences),
         neglected=neglected,
     )
 
 
-def _beyond(
-    full: FullMixture,
-    found: Composition,
-    keys: list[int],
-    conversions: Sequence[str],
-    tolerance: MixtureTolerance,
-) -> Booleans:
-    """(F, nT, nP) where a key species or a conversion is off by more than the tolerance."""
-    difference = found.mole_fractions[..., keys] - full.composition.mole_fractions[..., keys]
-    beyond = np.asarray((np.abs(difference) > tolerance.mole_fraction).any(axis=-1))
-    for name in conversions:
-        off = conversion_of(full.conditions, found, name) - conversion_of(
-            full.conditions, full.composition, name
-        )
-        beyond = beyond | (np.abs(np.nan_to_num(off)) > tolerance.conversion)
-    return beyond
-
-
 def _neglected(
-    full: FullMixture,
+    judged: _Judged,
     subset: Subset,
     exact: Composition,
-    keys: list[int],
-    tolerance: MixtureTolerance,
     known: Sequence[Reaction],
     threads: int | None,
 ) -> tuple[Neglected, ...]:
-    names = [each.name for each in full.conditions.species]
-    alone = exact.mole_fractions[..., keys]
+    conditions = judged.full.conditions
     found = []
-    for reaction in _candidates(full, subset, tolerance, known):
-        both = solve_subset(
-            full.conditions, Subset(subset.name, (*subset.reactions, reaction)), threads=threads
-        )
-        change = np.nan_to_num(np.abs(both.mole_fractions[..., keys] - alone))
-        place = np.unravel_index(int(np.argmax(change)), change.shape)
-        largest = float(change[place])
-        where = (int(place[0]), int(place[1]), int(place[2]))
+    for reaction in _candidates(judged.full, subset, judged.tolerance, known):
+        both = solve_subset(conditions, Subset(subset.name, (*subset.reactions, reaction)), threads=threads)
+        change = judged.differences(both, exact)
         found.append(
-            Neglected(reaction, largest, names[keys[int(place[3])]], where, np.asarray(change.max(axis=-1)))
+            Neglected(
+                reaction, judged.largest(change), np.asarray(np.nan_to_num(np.abs(change)).max(axis=-1))
+            )
         )
-    return tuple(sorted(found, key=lambda each: -each.largest))
+    return tuple(sorted(found, key=lambda each: -each.largest.ratio))
 
 
 def _candidates(

@@ -174,6 +174,25 @@ def approaches(
         MeasurementError: any analysis has a fault, or lacks a species of a reaction; all faults at once.
         TemperatureRangeError: a temperature outside the species data.
     """
+    completed = checked_analyses(
+        analyses, reactions, species, sum_tolerance=sum_tolerance, balance_tolerance=balance_tolerance
+    )
+    functions = [ReactionFunctions(each) for each in reactions]
+    return [_approach(done, each, species) for done in completed for each in functions]
+
+
+def checked_analyses(
+    analyses: Sequence[Analysis],
+    reactions: Sequence[Reaction],
+    species: Mapping[str, Species],
+    *,
+    sum_tolerance: float = SUM_TOLERANCE,
+    balance_tolerance: float = BALANCE_TOLERANCE,
+) -> list[CompletedAnalysis]:
+    """The analyses completed, every fault of any of them raised as one MeasurementError.
+
+    Beyond `complete_analysis` it asks that each holds the gases of every reaction.
+    """
     faults: list[Fault] = []
     completed: list[CompletedAnalysis] = []
     for each in analyses:
@@ -202,8 +221,7 @@ def approaches(
                 )
     if faults:
         raise MeasurementError(faults)
-    functions = [ReactionFunctions(each) for each in reactions]
-    return [_approach(done, each, species) for done in completed for each in functions]
+    return completed
 
 
 def _approach(

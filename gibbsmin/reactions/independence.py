@@ -19,6 +19,15 @@ if TYPE_CHECKING:
     from gibbsmin.species import Species
 
 
+MOST_SHOWN = 10
+"""Reactions and species that the text lists; the attributes hold all."""
+
+
+def _cut(names: Sequence[str]) -> str:
+    more = len(names) - MOST_SHOWN
+    return ", ".join(names[:MOST_SHOWN]) + (f" and {more} more" if more > 0 else "")
+
+
 @dataclass(frozen=True)
 class Redundant:
     """A reaction that is a combination of earlier ones: `weights` maps their names to factors."""
@@ -79,11 +88,13 @@ class Coverage:
             lines.append(f"the set given has {len(self.independent)} independent reactions; {verdict}")
             lines += [f"redundant: {each}" for each in self.redundant]
             if self.untouched:
-                lines.append(f"left as fed by the set: {', '.join(self.untouched)}")
+                lines.append(f"left as fed by the set: {_cut(self.untouched)}")
             if self.missing:
-                lines += ["it would be complete with:", *(f"  {each.equation}" for each in self.missing)]
+                shown = [f"  {each.equation}" for each in self.missing[:MOST_SHOWN]]
+                more = len(self.missing) - len(shown)
+                lines += ["it would be complete with:", *shown, *([f"  and {more} more"] if more else [])]
         if self.inert:
-            lines.append(f"in no reaction: {', '.join(self.inert)}")
+            lines.append(f"in no reaction: {_cut(self.inert)}")
         return "\n".join(
             part for line in lines for part in textwrap.wrap(line, 100, subsequent_indent="    ") or [""]
         )
@@ -153,7 +164,8 @@ def _formation_reactions(
     _, rows = element_rows(ordered)
     echelon, pivots = reduced(rows)
     made = []
-    for column in sorted(set(range(len(ordered))).difference(pivots), key=lambda c: order[c]):
+    # Without abundances in the order of the list; with them the most abundant first.
+    for column in sorted(set(range(len(ordered))).difference(pivots)):
         vector = [Fraction(0)] * len(ordered)
         vector[column] = Fraction(1)
         for row, pivot in zip(echelon, pivots, strict=True):

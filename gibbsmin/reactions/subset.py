@@ -47,10 +47,6 @@ class Subset:
     reactions: tuple[Reaction, ...]
     shortcuts: Mapping[str, Shortcut] | None = None
 
-    def with_reaction(self, reaction: Reaction) -> Subset:
-        """The same with one more reaction at its exact K."""
-        return Subset(f"{self.name} + {reaction.name}", (*self.reactions, reaction), self.shortcuts)
-
 
 @dataclass(frozen=True)
 class MapConditions:

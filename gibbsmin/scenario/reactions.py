@@ -9,14 +9,14 @@ from typing import TYPE_CHECKING, Any, TypeVar
 from gibbsmin.constants import GAS_CONSTANT
 from gibbsmin.errors import MeasurementError, ReactionError, TemperatureRangeError
 from gibbsmin.reactions.against_mixture import MixtureTolerance
-from gibbsmin.reactions.approach import Analysis
+from gibbsmin.reactions.approach import Analysis, checked_analyses
 from gibbsmin.reactions.constant_units import ConstantUnit
 from gibbsmin.reactions.equation import Reaction, read_reaction
 from gibbsmin.reactions.independence import coverage
 from gibbsmin.reactions.measured import MeasuredConstants
 from gibbsmin.reactions.shortcut_error import Tolerance
 from gibbsmin.reactions.shortcuts import ConstantEnthalpy, ConstantHeatCapacity, Correlation, Shortcut
-from gibbsmin.reactions.standard import validity
+from gibbsmin.reactions.standard import ReactionFunctions, validity
 from gibbsmin.reactions.subset import Subset
 from gibbsmin.reactions.wanted import ReactionsWanted
 from gibbsmin.scenario.feed import Feed
@@ -75,7 +75,7 @@ class _Reader:
         unit = self._unit(data.get("unit of K", "1"))
         pressure = self._standard_pressure(data)
         shortcuts = self._shortcuts(data.get("shortcuts", {}))
-        subsets = self._subsets(data.get("alone", {}), shortcuts)
+        subsets = self._subsets(data.get("alone", {}))
         measured = self._measured(data.get("measured", {}))
         analyses, analysed, species = self._analyses(data.get("outlet analyses", {}))
         if self.reading.faults or tolerances is None or unit is None or pressure is None:
@@ -284,7 +284,7 @@ class _Reader:
 
     # --- subsets --------------------------------------------------------------------------------------------
 
-    def _subsets(self, data: Mapping[str, Any], shortcuts: Sequence[Shortcut]) -> list[Subset]:
+    def _subsets(self, data: Mapping[str, Any]) -> list[Subset]:
         found = []
         names = [each.name for each in self.choice.species]
         for name, members in data.items():
@@ -295,16 +295,7 @@ class _Reader:
                 continue
             if self._unfit(sound, names, path):
                 continue
-            own = {each.name for each in sound}
-            by_reaction: dict[str, list[Shortcut]] = {}
-            for each in shortcuts:
-                if each.reaction.name in own:
-                    by_reaction.setdefault(each.reaction.name, []).append(each)
             found.append(Subset(name, tuple(sound)))
-            # The first shortcut of every reaction together, then the second ones ...: each is compared once.
-            for rank in range(max(map(len, by_reaction.values()), default=0)):
-                chosen = {key: row[rank] for key, row in by_reaction.items() if rank < len(row)}
-                found.append(Subset(name, tuple(sound), chosen))
         return found
 
     def _unfit(self, reactions: Sequence[Reaction], names: Sequence[str], path: YamlPath) -> bool:
@@ -345,6 +336,7 @@ class _Reader:
 
             values = self._tried(read, path)
             if values is not None:
+                self._inside_data(reaction, values.temperature.tolist(), path)
                 found.append(values)
         return found
 
@@ -364,7 +356,16 @@ class _Reader:
 
         found = self._tried(read, path)
         analyses, species = found if found is not None else ([], {})
-        return analyses, [each for each in reactions if each is not None], species
+        known = [each for each in reactions if each is not None]
+        self._tried(lambda: checked_analyses(analyses, known, species), path)
+        for each in known:
+            self._inside_data(each, [one.temperature for one in analyses], path)
+        return analyses, known, species
+
+    def _inside_data(self, reaction: Reaction, temperatures: Sequence[float], path: YamlPath) -> None:
+        sound = [T for T in temperatures if 0 < T < float("inf")]
+        if sound:
+            self._tried(lambda: ReactionFunctions(reaction).ln_K(sound), path)
 
     def _analysis_feed(self, data: Mapping[str, Any], path: YamlPath) -> dict[str, float] | None:
         """The feed that goes with the analyses: its own, or the scenario's where that does not vary."""
