@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from dataclasses import replace
 from fractions import Fraction
 from pathlib import Path
 
@@ -78,6 +79,30 @@ def test_an_example_describes_itself(file: Path) -> None:
     assert f"{scenario.points:,} points x {len(scenario.species)} gases" in text
     size = preview(scenario)
     assert size.result_bytes >= scenario.points * len(scenario.species) * 16
+    assert f"to cross-check {size.checked_points} points" in text
+    for stream in scenario.streams.values():  # in the units of the file
+        if stream.temperature is not None:
+            assert f" {stream.display_temperature_unit}" in text
+
+
+def test_time_foreseen_grows_with_points_species_and_checks() -> None:
+    """Orders of magnitude only; no clock is asked."""
+    scenario = scenario_named("steam_reforming")
+    size = preview(scenario)
+    assert size.checked_points == 50
+    unchecked = replace(scenario, cross_check=replace(scenario.cross_check, extent="none"))
+    assert preview(unchecked).checking_seconds == 0
+    assert "cross-check" not in unchecked.describe()
+    everywhere = replace(scenario, cross_check=replace(scenario.cross_check, extent="all"))
+    assert preview(everywhere).checked_points == scenario.points
+    assert preview(everywhere).checking_seconds > 10 * size.checking_seconds
+    assert preview(scenario_named("shift_low_temperature")).solving_seconds < size.solving_seconds
+
+
+def test_streams_are_shown_in_the_units_of_the_file() -> None:
+    text = scenario_named("steam_reforming").describe()
+    assert "520 degC" in text
+    assert "32 bar(g)" in text
 
 
 def scenario_named(name: str) -> Scenario:
