@@ -131,6 +131,8 @@ def test_an_ambiguous_query_names_the_candidates(query: str, candidates: set[str
         ("metane", "CH4 (methane)"),
         ("co2", "CO2"),
         ("c4h10", "C4H10 (n-butane)"),
+        ("H20", "H2O"),  # a zero
+        ("CH30H", "CH3OH"),
         ("hematit", "Fe2O3(cd) (hematite)"),
         ("ammonnia", "NH3 (ammonia)"),
         ("H2O(gas)", "H2O(cr)"),

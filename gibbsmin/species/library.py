@@ -206,13 +206,15 @@ class SpeciesLibrary:
             by_word.setdefault(word, names[0])
         for name in self._entries:
             by_word.setdefault(plain_words(name), name)
-        but_for_case = [
-            entry.name
+        alike = {wanted, wanted.replace("0", "o")}
+        but_for_case_or_zero = [
+            entry
             for entry in self._entries.values()
-            if wanted in (plain_words(entry.name), plain_words(entry.formula))
+            if not alike.isdisjoint((plain_words(entry.name), plain_words(entry.formula)))
         ]
-        if but_for_case:  # co2, c4h10
-            return tuple(but_for_case[:count])
+        if but_for_case_or_zero:  # co2, c4h10; H20, C02
+            gases_first = sorted(but_for_case_or_zero, key=lambda entry: entry.state != "g")
+            return tuple(entry.name for entry in gases_first[:count])
         near = difflib.get_close_matches(wanted, by_word, n=2 * count, cutoff=0.7)
         shown = (
             f"{by_word[word]} ({self._spelling(by_word[word], word)})"
