@@ -162,9 +162,12 @@ def _add_run(parser: argparse.ArgumentParser) -> None:
 
 
 def _positive(text: str) -> int:
-    number = int(text)
+    try:
+        number = int(text)
+    except ValueError:
+        number = 0
     if number < 1:
-        raise argparse.ArgumentTypeError("must be at least 1")
+        raise argparse.ArgumentTypeError(f"expected a whole number of at least 1, found {text!r}")
     return number
 
 
@@ -380,7 +383,10 @@ _COMMANDS: dict[str, tuple[str, Callable[[argparse.ArgumentParser], None]]] = {
     "check": ("say whether a scenario is sound and what it would compute", _add_check),
     "study": ("compute many scenarios as one, or what is missing of them", add_study),
     "cases": ("sum up, rank, filter and draw the cases of a study", add_cases),
-    "reaction": ("K(T) of a reaction, its best short correlations, and the error of given ones", add_reaction),
+    "reaction": (
+        "K(T) of a reaction, its best short correlations, and the error of given ones",
+        add_reaction,
+    ),
     "measured": ("reaction enthalpy and entropy from measured K", add_measured),
     "approach": ("approach to equilibrium from gas analyses", add_approach),
     "species": ("list species, or show the data of one", _add_species),

@@ -253,6 +253,18 @@ def test_a_defect_is_called_one(
     assert "a defect of the program" in err
 
 
+def test_a_single_point_is_told_without_empty_places(small: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    text = SMALL.replace("{from: 300 degC, to: 500 degC, step: 50 K}", "[300 degC]")
+    small.write_text(
+        text.replace("{from: 1 bar, to: 20 bar, points: 4, spacing: logarithmic}", "[1 bar]"),
+        encoding="utf-8",
+    )
+    assert main(["run", "small.yaml", "--no-figures"]) == 0
+    said = capsys.readouterr().out
+    assert "solved 1 of 1 points" in said
+    assert ", )" not in said
+
+
 # --- wrong requests
 
 
@@ -273,6 +285,19 @@ def test_a_folder_is_no_scenario(work: Path, capsys: pytest.CaptureFixture[str])
     (work / "steam_reforming").mkdir()
     assert main(["check", "steam_reforming"]) == 2
     assert capsys.readouterr().err == "gibbsmin: steam_reforming: is a folder, not a scenario file\n"
+
+
+def test_a_folder_that_cannot_be_made_is_told_before_any_work(
+    small: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.setattr("gibbsmin.running.run", lambda *_, **__: pytest.fail("computed all the same"))
+    assert main(["run", "small.yaml", "--out", "small.yaml/below"]) == 2
+    assert capsys.readouterr() == ("", "gibbsmin: small.yaml: Not a directory\n")
+    monkeypatch.setattr("os.access", lambda *_, **__: False)
+    assert main(["run", "small.yaml", "--out", "closed/below"]) == 2
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert "Permission denied" in err
 
 
 @pytest.mark.parametrize("command", ["run", "check"])
@@ -306,8 +331,8 @@ def test_debug_shows_where_an_error_arose(work: Path, capsys: pytest.CaptureFixt
         ([], "COMMAND"),
         (["fly"], "invalid choice"),
         (["run"], "SCENARIO"),
-        (["run", "x", "--threads", "0"], "must be at least 1"),
-        (["run", "x", "--threads", "two"], "invalid"),
+        (["run", "x", "--threads", "0"], "expected a whole number of at least 1, found '0'"),
+        (["run", "x", "--threads", "two"], "found 'two'"),
         (["run", "x", "--crosscheck", "some"], "invalid choice"),
         (["run", "x", "--table", "xls"], "invalid choice"),
     ],

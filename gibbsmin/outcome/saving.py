@@ -6,6 +6,7 @@ No clock time, machine name or path goes into any file, so the same run gives th
 from __future__ import annotations
 
 import csv
+import errno
 import hashlib
 import json
 import os
@@ -55,7 +56,10 @@ def save(
     check_folder(folder, overwrite)
     folder.parent.mkdir(parents=True, exist_ok=True)
     # Beside the final place, so that the last step is a rename within one file system.
-    draft = Path(tempfile.mkdtemp(prefix=f".{folder.name}.", suffix=".unfinished", dir=folder.parent))
+    try:
+        draft = Path(tempfile.mkdtemp(prefix=f".{folder.name}.", suffix=".unfinished", dir=folder.parent))
+    except OSError as error:  # told of the folder asked for, not of the draft
+        raise OSError(error.errno, error.strerror, str(folder)) from error
     try:
         write_netcdf(outcome.dataset, draft / DATA_FILE)
         for kind in wanted:
@@ -86,9 +90,13 @@ def check_folder(folder: Path, overwrite: bool) -> None:
     """Whether results may go to `folder`: it is new or empty, or overwriting is asked for and it holds
     results.
 
+    Worth calling before a long run.
+
     Raises:
-        FolderExistsError: otherwise. Worth calling before a long run.
+        FolderExistsError: otherwise.
+        OSError: nothing can be written where the folder is to be.
     """
+    _require_writable(folder.parent)
     if not folder.exists() and not folder.is_symlink():
         return
     if not folder.is_dir():
@@ -102,6 +110,15 @@ def check_folder(folder: Path, overwrite: bool) -> None:
             str(folder),
             "it holds other files and no earlier results, so it is not overwritten; choose another folder",
         )
+
+
+def _require_writable(folder: Path) -> None:
+    """Raise OSError unless `folder`, or the nearest one above it that exists, can take a new entry."""
+    existing = next(each for each in (folder, *folder.absolute().parents) if each.exists())
+    if not existing.is_dir():
+        raise NotADirectoryError(errno.ENOTDIR, os.strerror(errno.ENOTDIR), str(existing))
+    if not os.access(existing, os.W_OK | os.X_OK):
+        raise PermissionError(errno.EACCES, os.strerror(errno.EACCES), str(existing))
 
 
 def write_netcdf(dataset: xr.Dataset, path: Path) -> None:

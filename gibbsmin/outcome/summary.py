@@ -175,7 +175,7 @@ def evidence_lines(outcome: Outcome) -> list[str]:
     text += f", {check.differing} differ, {check.unanswered} without an independent answer"
     if (worst := check.worst) is not None:
         text += f"; largest relative difference {worst.relative:.1e}"
-        text += f" ({worst.species}, {in_words(worst.index, scenario)})"
+        text += f" ({', '.join(filter(None, (worst.species, in_words(worst.index, scenario))))})"
     lines.append(text)
     lines += _spelled_out("differs", check.having("differs"), scenario)
     lines += _spelled_out("no independent answer", check.having("no independent answer"), scenario)
@@ -196,8 +196,10 @@ def _unsolved(outcome: Outcome) -> list[str]:
 def _spelled_out(what: str, points: Sequence[CheckedPoint], scenario: Scenario) -> list[str]:
     lines = []
     for point in points[:_MOST_POINTS]:
+        words = in_words(point.index, scenario)
+        place = f" at {words}" if words else ""
         difference = f" by {point.relative:.1e} ({point.species})" if np.isfinite(point.relative) else ""
-        lines.append(f"{what}{difference} at {in_words(point.index, scenario)}: {point.reason}")
+        lines.append(f"{what}{difference}{place}: {point.reason}")
     if len(points) > _MOST_POINTS:
         lines.append(f"and {len(points) - _MOST_POINTS} more; crosscheck.csv lists all")
     return lines
