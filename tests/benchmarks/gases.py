@@ -91,15 +91,37 @@ def reforming_map(temperatures: int = 901, pressures: int = 111) -> Map:
     return Map(np.linspace(600.0, 1500.0, temperatures), np.geomspace(1e5, 1e7, pressures))
 
 
-def scattered_reforming(count: int, seed: int = 5) -> tuple[Feeds, Floats, Floats]:
-    """Random feeds of seven species, each with its temperature [K] and pressure [Pa], (count,)."""
+SCATTERED_FEEDS: dict[str, dict[str, tuple[float, float]]] = {
+    "any": {
+        "CH4": (0.0, 1.0),
+        "H2O": (0.0, 4.0),
+        "CO2": (0.0, 1.0),
+        "C2H6": (0.0, 0.2),
+        "N2": (0.0, 1.0),
+        "H2": (0.0, 0.5),
+        "O2": (0.0, 0.4),
+    },
+    "reformer": {
+        "CH4": (1.0, 1.0),
+        "H2O": (1.5, 5.0),
+        "CO2": (0.0, 0.5),
+        "C2H6": (0.0, 0.1),
+        "N2": (0.01, 0.2),
+        "H2": (0.02, 0.3),
+    },
+}
+"""mol, even within limits. "any" goes from feeds without oxygen to such without carbon, "reformer" stays within
+what a steam reformer may be fed (common practice, no source)."""
+
+
+def scattered_reforming(count: int, kind: str = "any", seed: int = 5) -> tuple[Feeds, Floats, Floats]:
+    """Random feeds, each with its temperature [K] and pressure [Pa], (count,)."""
     rng = np.random.default_rng(seed)
-    names = ("CH4", "H2O", "CO2", "C2H6", "N2", "H2", "O2")
-    most = np.array([1.0, 4.0, 1.0, 0.2, 1.0, 0.5, 0.4])
-    amounts = rng.random((count, len(names))) * most
+    limits = np.array(list(SCATTERED_FEEDS[kind].values()))
+    amounts = rng.uniform(limits[:, 0], limits[:, 1], (count, len(limits)))
     T = rng.uniform(600.0, 1500.0, count)
     p = np.exp(rng.uniform(np.log(1e5), np.log(1e7), count))
-    return Feeds(reforming_gases(), names, amounts), T, p
+    return Feeds(reforming_gases(), tuple(SCATTERED_FEEDS[kind]), amounts), T, p
 
 
 @lru_cache(maxsize=16)

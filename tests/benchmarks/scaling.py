@@ -51,7 +51,7 @@ def _map(temperatures: int, pressures: int, repeats: int) -> dict[str, Any]:
 
 
 def _scattered(count: int, repeats: int) -> dict[str, Any]:
-    feeds, T, p = scattered_reforming(count)
+    feeds, T, p = scattered_reforming(count, "reformer")
     solved = []
 
     def solve(threads: int | None) -> None:
