@@ -74,20 +74,26 @@ def read_condition(text: str) -> Condition:
         raise ConditionsError(f"condition {text!r}", f"{written!r} is no number") from error
 
 
+OF_SPECIES = "mole fraction "
+"""Before the name of a species; it may be left out where nothing else is called so."""
+
+_NOT_OF_POINTS = frozenset(["species", "element", "feed_species"])
+
+
 def names_of(dataset: xr.Dataset) -> list[str]:
-    """What can be ranked by or limited: results, species (their mole fraction), axes and varied quantities."""
+    """What can be ranked by or limited: results, mole fractions, axes and varied quantities."""
     results = [
         str(name)
         for name, array in dataset.data_vars.items()
-        if "case" in array.dims and not {"species", "element", "feed_species"}.intersection(array.dims)
+        if "case" in array.dims and not _NOT_OF_POINTS.intersection(array.dims)
     ]
-    species = [str(name) for name in dataset["species"].values] if "mole_fraction" in dataset else []
+    species = dataset["species"].values if "mole_fraction" in dataset else ()
     coordinates = [
         str(name)
         for name, array in dataset.coords.items()
-        if array.dtype.kind in "fiu" and not {"species", "element", "feed_species"}.intersection(array.dims)
+        if array.dtype.kind in "fiu" and not _NOT_OF_POINTS.intersection(array.dims)
     ]
-    return [*results, *species, *coordinates]
+    return [*results, *(f"{OF_SPECIES}{name}" for name in species), *coordinates]
 
 
 def field(dataset: xr.Dataset, name: str) -> xr.DataArray:
@@ -96,14 +102,15 @@ def field(dataset: xr.Dataset, name: str) -> xr.DataArray:
     Raises ConditionsError, with what there is, when nothing is called so.
     """
     known = names_of(dataset)
-    own = name if name in known else identifier(name)
-    if own not in known:
-        raise ConditionsError(
-            f"result {name!r}", f"there is none; there are {listed(known)}{nearest(name, known)}"
-        )
-    if own in dataset.variables:
+    for own in (name, f"{OF_SPECIES}{name}", identifier(name)):
+        if own not in known:
+            continue
+        if own.startswith(OF_SPECIES):
+            return dataset["mole_fraction"].sel(species=own.removeprefix(OF_SPECIES), drop=True)
         return dataset[own]
-    return dataset["mole_fraction"].sel(species=own, drop=True)
+    raise ConditionsError(
+        f"result {name!r}", f"there is none; there are {listed(known)}{nearest(name, known)}"
+    )
 
 
 def rank_cases(

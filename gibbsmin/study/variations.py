@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import itertools
 import re
+from collections import Counter
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -95,14 +96,16 @@ class Variations:
             self.reading.fault(path, f"{count} cases are too many for one study (at most {MOST_CASES})")
             return
         line = (self.reading.document.position(path) or (None,))[0]
+        per_name: Counter[str] = Counter()
         for combination in itertools.product(*parts):
             values = {name: value for variant in combination for name, value in variant.values.items()}
             named = next((each for each in combination if each.name or each.file), None)
             if named is None:
                 yield Variant(values, file=self.reading.document.file, line=line)
             else:
-                alone = len(parts) == 1
-                yield Variant(values, named.name if alone else "", named.file, named.line)
+                per_name[named.name] += 1
+                ending = f" {per_name[named.name]}" if named.name and len(parts) > 1 else ""
+                yield Variant(values, named.name + ending, named.file, named.line)
 
     def _known(self, name: str, path: YamlPath) -> bool:
         """Whether a name is that of a quantity; a place is made one on the spot."""
