@@ -6,8 +6,9 @@ matplotlib's global state (pyplot), so that it can be called from any program, t
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
@@ -166,19 +167,24 @@ class Written:
 
 
 def write_figures(
-    dataset: xr.Dataset, folder: Path, *, progress: Callable[[str], None] | None = None, **options: Any
+    dataset: xr.Dataset,
+    folder: Path,
+    *,
+    progress: Callable[[str], None] | None = None,
+    further: Iterable[Drawn] = (),
+    **options: Any,
 ) -> Written:
     """Save the figures of a result as PNG and SVG in `folder`, which is made if need be.
 
-    `options` are those of `figures_of`; `progress` is called with the name of each picture as it is made
-    or left out. Files of the same names are replaced.
+    `options` are those of `figures_of`; `further` figures follow them; `progress` is called with the name of each
+    picture as it is made or left out. Files of the same names are replaced.
     """
     folder.mkdir(parents=True, exist_ok=True)
     files: list[Path] = []
     left_out: dict[str, str] = {}
     taken: set[str] = set()
     with house_look():
-        for drawn in figures_of(dataset, **options):
+        for drawn in chain(figures_of(dataset, **options), further):
             if progress is not None:
                 progress(drawn.name)
             if drawn.figure is None:

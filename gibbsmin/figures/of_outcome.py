@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from gibbsmin.figures.axes import DisplayUnit
 
 if TYPE_CHECKING:
-    from gibbsmin.figures import Written
+    from gibbsmin.figures import Drawn, Written
     from gibbsmin.outcome import Outcome
     from gibbsmin.scenario.model import Axis, Scenario
 
@@ -22,7 +22,18 @@ def write_outcome_figures(
     """Draw what the outcome's scenario asks for and save it as PNG and SVG in `folder`."""
     from gibbsmin.figures import write_figures
 
-    return write_figures(outcome.dataset, folder, progress=progress, **figure_options(outcome))
+    further = _about_reactions(outcome)
+    return write_figures(
+        outcome.dataset, folder, progress=progress, further=further, **figure_options(outcome)
+    )
+
+
+def _about_reactions(outcome: Outcome) -> Iterable[Drawn]:
+    if outcome.reactions is None:
+        return ()
+    from gibbsmin.figures.of_reactions import outcome_figures
+
+    return outcome_figures(outcome)
 
 
 def figure_options(outcome: Outcome) -> dict[str, Any]:
@@ -55,7 +66,12 @@ def count_figures(outcome: Outcome) -> int:
     """How many pictures `write_outcome_figures` will make or leave out, for a progress bar."""
     options, sizes = figure_options(outcome), outcome.dataset["status"].shape
     maps = len(options["key"]) if sum(size > 1 for size in sizes) >= 2 else 1
-    return 1 + ("dry_mole_fraction" in outcome.dataset) + maps + len(options["quantities"])
+    count = 1 + ("dry_mole_fraction" in outcome.dataset) + maps + len(options["quantities"])
+    if outcome.reactions is not None:
+        from gibbsmin.figures.of_reactions import count_outcome_figures
+
+        count += count_outcome_figures(outcome)
+    return count
 
 
 def display_units(scenario: Scenario) -> Mapping[str, DisplayUnit]:

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import xarray as xr
 
-from gibbsmin.reactions.against_mixture import FullMixture, Reason, activities
+from gibbsmin.reactions.against_mixture import Comparison, FullMixture, Reason, activities
 from gibbsmin.reactions.report import TEMPERATURE_UNITS, TemperatureUnit, report_text
 from gibbsmin.reactions.results import ReactionResults, work_out
 from gibbsmin.reactions.subset import Composition, MapConditions
@@ -217,7 +217,19 @@ def _comparisons(results: ReactionResults, dataset: xr.Dataset) -> dict[str, xr.
         return out
 
     compared = results.comparisons
-    return {
+    conversions = list(compared[0].conversion)
+    neglected = list(dict.fromkeys(one.reaction.name for each in compared for one in each.neglected))
+    found = {
+        "alone_neglected": xr.Variable(
+            ("alone", *dims),
+            np.stack([_main_neglected(each, neglected).reshape(shape) for each in compared]),
+            {
+                "units": "1",
+                "long_name": "reaction that changes most where it is added to those alone; -1 where none is missed",
+                "flag_values": np.arange(-1, len(neglected), dtype=np.int16),
+                "flag_meanings": " ".join(["none", *(name.replace(" ", "_") for name in neglected)]),
+            },
+        ),
         "alone_mole_fraction": xr.Variable(
             ("alone", *dims, "species"),
             by_species(each.composition.mole_fractions for each in compared),
@@ -247,6 +259,28 @@ def _comparisons(results: ReactionResults, dataset: xr.Dataset) -> dict[str, xr.
             {"units": "1", "long_name": "largest activity of a condensed phase over the gas"},
         ),
     }
+    for kind, words in (
+        ("conversion", "conversion that these reactions alone reach"),
+        ("conversion_error", "conversion by these reactions alone less that of the whole mixture"),
+    ):
+        for name in conversions:
+            variable = f"alone_{kind}_{name.replace('/', ' ')}"
+            values = np.stack([getattr(each, kind)[name].reshape(shape) for each in compared])
+            found[variable] = xr.Variable(
+                ("alone", *dims), values, {"units": "1", "long_name": f"{words}, {name}"}
+            )
+    return found
+
+
+def _main_neglected(comparison: Comparison, names: Sequence[str]) -> Any:
+    """Number of the neglected reaction that matters most, where neglect is the reason; -1 elsewhere."""
+    codes = np.full(comparison.reason.shape, -1, dtype=np.int16)
+    if comparison.neglected:
+        change = np.stack([each.change for each in comparison.neglected])
+        numbers = np.array([names.index(each.reaction.name) for each in comparison.neglected], dtype=np.int16)
+        lost = comparison.reason == Reason.NEGLECTED_REACTIONS
+        codes[lost] = numbers[np.argmax(change, axis=0)][lost]
+    return codes
 
 
 def _names(dim: str, names: Sequence[str], long_name: str) -> xr.Variable:
