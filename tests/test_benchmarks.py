@@ -52,7 +52,8 @@ def test_single_point(folder: Path) -> None:
     found = measured(folder, "single_point")
     for figures in found["by species"].values():
         assert figures["solved"] == found["calls"]
-        assert len(figures["minimise"]) == len(figures["equilibrium"]) == found["calls"]
+        for name in ("minimise", "equilibrium", "Cantera"):
+            assert 0 < figures[name]["median"] <= figures[name]["longest"]
 
 
 @pytest.mark.parametrize(("name", "cases"), [("species_count", "cases"), ("scaling", "species")])
@@ -89,7 +90,7 @@ def test_scipy(folder: Path) -> None:
     # the majors agree, so both sides minimise the same function
     assert found["SLSQP"]["roughly right"] >= found["SLSQP"]["points"] - 1
     # an energy below the proved minimum would need an element balance that is off
-    assert min(found["SLSQP"]["energy above ours"]) > -1e-8
+    assert found["SLSQP"]["energy above ours, least"] > -1e-8
 
 
 def test_robustness(folder: Path) -> None:

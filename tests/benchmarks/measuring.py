@@ -89,6 +89,18 @@ def latencies(calls: Sequence[Callable[[], object]]) -> list[float]:
     return seconds
 
 
+def spread(seconds: Sequence[float]) -> dict[str, float]:
+    """What a record keeps of many calls [s]."""
+    values = np.array(seconds) if len(seconds) else np.array([np.nan])
+    return {
+        "median": float(np.median(values)),
+        "mean": float(values.mean()),
+        "95 %": float(np.percentile(values, 95)),
+        "99 %": float(np.percentile(values, 99)),
+        "longest": float(values.max()),
+    }
+
+
 def median(values: Sequence[float]) -> float:
     return float(statistics.median(values))
 

@@ -14,7 +14,7 @@ import numpy as np
 
 from tests import reference
 from tests.benchmarks.cantera_worker import OURS, SOLVERS, Answer, IsolatedWorker
-from tests.benchmarks.measuring import Cell, Measured, Table
+from tests.benchmarks.measuring import Cell, Measured, Table, spread
 from tests.population import KINDS, Problem, problem, run_population
 
 TITLE = "Population of random problems"
@@ -92,7 +92,7 @@ def comparison(count: int, most_species: int) -> dict[str, Any]:
         "not posed": not_posed,
         "fates": {name: dict(fate) for name, fate in fates.items()},
         "by kind": by_kind,
-        "seconds": {name: _spread(spent) for name, spent in seconds.items()},
+        "seconds": {name: spread(spent) for name, spent in seconds.items()},
         "traces off": traces_off,
         "notable": notable,
         "references": references,
@@ -175,16 +175,6 @@ def _imbalance(case: Problem, x: np.ndarray) -> float:
     found *= b.sum() / found.sum()
     present = b > JUDGED * b.sum()
     return float((np.abs(found - b)[present] / b[present]).max(initial=0.0))
-
-
-def _spread(seconds: list[float]) -> dict[str, float]:
-    values = np.array(seconds) if seconds else np.array([np.nan])
-    return {
-        "median": float(np.median(values)),
-        "mean": float(values.mean()),
-        "99 %": float(np.percentile(values, 99)),
-        "longest": float(values.max()),
-    }
 
 
 def tables(measured: Measured) -> list[Table]:

@@ -6,8 +6,6 @@ from collections.abc import Callable
 from functools import partial
 from typing import Any
 
-import numpy as np
-
 import gibbsmin
 from tests.benchmarks.cantera_loop import CanteraLoop
 from tests.benchmarks.gases import (
@@ -17,7 +15,7 @@ from tests.benchmarks.gases import (
     names_of,
     scattered_combustion,
 )
-from tests.benchmarks.measuring import Measured, Table, latencies
+from tests.benchmarks.measuring import Measured, Table, latencies, spread
 from tests.benchmarks.ours import potentials_of
 
 TITLE = "One point at a time"
@@ -55,7 +53,7 @@ def measure(quick: bool) -> Measured:
         solved = gibbsmin.minimise(table.formula_matrix, feed.element_amounts[0], potentials).solved
         by_species[str(count)] = {
             "solved": int(solved.sum()),
-            **{name: latencies(each) for name, each in contenders.items()},
+            **{name: spread(latencies(each)) for name, each in contenders.items()},
         }
     return {"calls": calls, "by species": by_species}
 
@@ -65,8 +63,7 @@ def tables(measured: Measured) -> list[Table]:
     for count, figures in measured["by species"].items():
         row: list[Any] = [count]
         for name in ("minimise", "equilibrium", "Cantera"):
-            spent = np.array(figures[name]) * 1e3
-            row += [float(np.median(spent)), float(np.percentile(spent, 95))]
+            row += [figures[name][key] * 1e3 for key in ("median", "95 %")]
         rows.append([*row, f"{figures['solved']} of {measured['calls']}"])
     return [
         Table(

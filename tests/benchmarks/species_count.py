@@ -24,10 +24,10 @@ from tests.benchmarks.measuring import (
     Table,
     largest_differences,
     latencies,
-    median,
     microseconds,
     ratio,
     rounds,
+    spread,
 )
 from tests.benchmarks.ours import potentials_of, solve_map, solve_scattered
 
@@ -75,7 +75,7 @@ def compare(count: int, feed_name: str, quick: bool) -> dict[str, Any]:
         "feed": feed_name,
         "points": {"map": grid.points, "scattered": points, "Cantera": sample},
         "seconds": seconds,
-        "single": singles,
+        "single": spread(singles),
         "solved": {
             "map": int((answers["map"].status == 0).sum()),
             "scattered": int((answers["scattered"].status == 0).sum()),
@@ -105,7 +105,7 @@ def tables(measured: Measured) -> list[Table]:
                 str(case["species"]),
                 case["feed"],
                 *(cost(case, way) for way in WAYS),
-                median(case["single"]) * 1e6,
+                case["single"]["median"] * 1e6,
                 *times,
                 "/".join(str(count) for count in unsolved),
                 case["difference"][1],

@@ -7,9 +7,11 @@ memory is counted per process.
 
 from __future__ import annotations
 
+import contextlib
 import json
 import sys
 import tempfile
+import threading
 import time
 from collections.abc import Callable
 from pathlib import Path
@@ -19,7 +21,6 @@ import netCDF4
 import numpy as np
 
 import gibbsmin
-from gibbsmin.grid.solve import available_cores
 from gibbsmin.study import load_study, run_study
 from gibbsmin.study.planning import plan_study
 from gibbsmin.study.running import workers_for
@@ -106,7 +107,8 @@ WAYS: dict[str, Callable[[int, int, int, Path], Figures]] = {"slices": by_slices
 
 def stream(way: str, feeds: int, temperatures: int, pressures: int) -> Figures:
     """Write the map into a temporary folder and say what that took."""
-    start = _peak_memory()
+    memory = PeakMemory()
+    start = memory.mebibytes()
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
         begin = time.perf_counter()
@@ -120,23 +122,51 @@ def stream(way: str, feeds: int, temperatures: int, pressures: int) -> Figures:
         "species": len(reforming_gases().species),
         "seconds": seconds,
         "start MiB": start,
-        "peak MiB": _peak_memory(),
+        "peak MiB": memory.mebibytes(),
         "file MiB": size / 2**20,
         **found,
     }
 
 
-def _peak_memory() -> float:
-    """Largest resident memory so far [MiB], of this process and of as many of its largest child as there were.
+class PeakMemory:
+    """Largest resident memory of this process and of those it starts, watched from a thread.
 
-    Children of a study are as many as cores; what they share with each other is counted more than once.
+    A process' own peak comes from the kernel, so a coarse watch misses nothing but processes that live shorter
+    than its interval. What processes share is counted for each of them.
     """
-    import resource
 
-    unit = 2**20 if sys.platform == "darwin" else 2**10
-    own = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
-    largest_child = resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss
-    return (own + available_cores() * largest_child) / unit
+    INTERVAL = 0.1  # s
+
+    def __init__(self) -> None:
+        self._peaks: dict[str, float] = {}
+        threading.Thread(target=self._watch, daemon=True).start()
+
+    def mebibytes(self) -> float:
+        """Sum of the peaks so far."""
+        self._look()
+        return sum(self._peaks.values())
+
+    def _watch(self) -> None:
+        while True:
+            self._look()
+            time.sleep(self.INTERVAL)
+
+    def _look(self) -> None:
+        own = Path("/proc/self")
+        if not own.exists():  # no Linux: this process alone, as getrusage has it (in bytes on macOS)
+            import resource
+
+            unit = 2**20 if sys.platform == "darwin" else 2**10
+            self._peaks["self"] = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / unit
+            return
+        children = [
+            number for listing in own.glob("task/*/children") for number in listing.read_text().split()
+        ]
+        for process in ["self", *children]:
+            with contextlib.suppress(OSError, StopIteration):  # it has ended meanwhile
+                lines = Path(f"/proc/{process}/status").read_text().splitlines()
+                peak = next(line for line in lines if line.startswith("VmHWM:"))
+                self._peaks[process] = int(peak.split()[1]) / 2**10
 
 
 if __name__ == "__main__":
