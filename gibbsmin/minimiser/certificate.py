@@ -1,6 +1,7 @@
 """Proof of optimality: a bound on how far a composition lies above the true minimum.
 
-The dual of the minimisation is: maximise b.pi subject to ln sum_j exp(a_j.pi - c_j) <= 0. Every feasible pi bounds
+The dual of the minimisation is: maximise b.pi subject to ln sum_j exp(a_j.pi - c_j) <= 0 over the gas species and
+a_k.pi <= c_k for each pure condensed phase. Every feasible pi bounds
 the minimum from below, G_min / RT >= b.pi (weak duality; Boyd & Vandenberghe, Convex Optimization (2004), ch. 5).
 Any pi is made feasible by moving it against a vector w with w.a_j >= 1 for every species. So for any composition n
 
@@ -30,6 +31,7 @@ def optimality_gap(
     *,
     log_mole_fractions: Floats | None = None,
     excluded: NDArray[np.bool_] | None = None,
+    condensed: NDArray[np.bool_] | None = None,
 ) -> Floats:
     """Upper bound on (G(n) - G_min) / RT of one or many compositions.
 
@@ -41,6 +43,7 @@ def optimality_gap(
     amounts : (S,) or (N, S) mol, the composition to be judged.
     element_potentials : (E,) or (N, E); NaN for elements that are absent.
     log_mole_fractions : (N, S), where known more exactly than ln(n / sum n).
+    condensed : (S,) mask of pure condensed phases; log_mole_fractions are not used for them.
     excluded : (N, S), species that the balance forces to zero; without it, those that hold an absent element.
 
     Returns
@@ -64,18 +67,28 @@ def optimality_gap(
     level = np.where(possible, pi @ A - c, -np.inf)  # ln of the mole fraction that pi assigns to each species
     if log_mole_fractions is None:
         with np.errstate(divide="ignore", invalid="ignore"):
-            log_x = np.log(n / n.sum(axis=1, keepdims=True))
+            gas = n if condensed is None else np.where(condensed, 0.0, n)
+            log_x = np.log(n / gas.sum(axis=1, keepdims=True))
     else:
         log_x = np.broadcast_to(log_mole_fractions, n.shape)
+    is_gas = np.ones(n.shape[1], dtype=bool) if condensed is None else ~condensed
+    log_x = np.where(is_gas, log_x, 0.0)
     counted = possible & (n > 0.0)
     difference = np.subtract(log_x, level, where=counted, out=np.zeros(n.shape))
     above_dual = (n * difference).sum(axis=1)  # G(n) / RT - (A n).pi
     imbalance = ((n @ A.T - b) * pi).sum(axis=1)
-    highest = level.max(axis=1)
-    excess = highest + np.log(np.exp(level - highest[:, None]).sum(axis=1))
+    excess = np.maximum(_log_sum(level[:, is_gas]), level[:, ~is_gas].max(axis=1, initial=-np.inf))
     reach = b @ shift_weight(A)
     # a negative sum is rounding: no composition lies below the minimum
     return np.asarray(np.maximum(above_dual + imbalance + np.maximum(excess, 0.0) * reach, 0.0))
+
+
+def _log_sum(level: Floats) -> Floats:
+    """(n,) ln sum exp over the last axis of (n, s); -inf where there is nothing to sum."""
+    highest = level.max(axis=1, initial=-np.inf)
+    scale = np.where(np.isfinite(highest), highest, 0.0)
+    with np.errstate(divide="ignore"):
+        return np.asarray(scale + np.log(np.exp(level - scale[:, None]).sum(axis=1)))
 
 
 def shift_weight(A: Floats) -> Floats:

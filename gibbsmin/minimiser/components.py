@@ -157,6 +157,15 @@ class Components:
             m[point, component] = float(sum_of_terms)
         return m
 
+    def scaled_amounts(self, element_amounts: Amounts, positions: Indices) -> list[Fraction]:
+        """adj(B) b of one point, exactly: the amounts of some components times determinant over scale."""
+        b = [exact(value) for value in element_amounts]
+        rows = self._adjugate.tolist()
+        return [
+            sum((weight * value for weight, value in zip(rows[i], b, strict=True)), Fraction(0))
+            for i in positions
+        ]
+
     def exact_amounts(self, element_amounts: Amounts) -> list[Fraction]:
         """m = B^-1 b of one point, exactly."""
         b = [exact(value) for value in element_amounts]

@@ -7,32 +7,43 @@ together as long as they share their components.
 
 from __future__ import annotations
 
+from contextlib import suppress
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from gibbsmin.errors import ProblemError
 from gibbsmin.minimiser.components import Amounts, Floats, Indices, exact
 from gibbsmin.minimiser.newton import Batch, minimise_batches
+from gibbsmin.minimiser.phases import settle
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, Answers, Posed, alike
 from gibbsmin.minimiser.result import Minimum, Status
-from gibbsmin.minimiser.start import estimates
+from gibbsmin.minimiser.start import StartGroup, estimates
 from gibbsmin.minimiser.vertex import UnboundedError, nearest_balanced
 
 CHUNK = 16384
 """Points sorted and started together: enough for many of them to share their components."""
 
 
-def minimise(formula_matrix: ArrayLike, element_amounts: ArrayLike, potentials: ArrayLike) -> Minimum:
-    """Find the composition of least Gibbs energy of ideal-gas mixtures, and prove it.
+def minimise(
+    formula_matrix: ArrayLike,
+    element_amounts: ArrayLike,
+    potentials: ArrayLike,
+    *,
+    condensed: ArrayLike | None = None,
+) -> Minimum:
+    """Find the composition of least Gibbs energy of an ideal gas beside pure condensed phases, and prove it.
 
     Parameters
     ----------
     formula_matrix : (E, S) atoms of element e in species j; a row may hold charges. Any finite decimals.
     element_amounts : (E,) or (N, E) mol. Doubles are taken as exact numbers; an object array of
         :class:`fractions.Fraction` gives amounts that no double can hold (0.1 mol, exactly stoichiometric).
-    potentials : (S,) or (N, S) mu0 / RT + ln(p / p0) of each species at the temperature and pressure of the point.
+    potentials : (S,) or (N, S) mu0 / RT + ln(p / p0) of each species at the temperature and pressure of the point;
+        mu0 / RT of a pure condensed phase, or +inf where it is not to be considered.
+    condensed : (S,) mask, or indices, of the species that are pure condensed phases; none by default.
 
     Returns
     -------
@@ -55,12 +66,14 @@ def minimise(formula_matrix: ArrayLike, element_amounts: ArrayLike, potentials: 
     Source: the problem is that of White, Johnson & Dantzig, J. Chem. Phys. 28 (1958) 751.
     """
     A, b, c = _checked(formula_matrix, element_amounts, potentials)
+    is_condensed = _mask(condensed, A.shape[1])
     points = len(c)
     answers = Answers.blank(points, *A.shape)
+    problem = _Problem(A, is_condensed, b, c, answers)
     try:
         for first in range(0, points, CHUNK):
             chunk = np.arange(first, min(first + CHUNK, points))
-            _solve_chunk(A, b, c, chunk, answers)
+            problem.solve(chunk)
     except UnboundedError:
         raise ProblemError(
             "some combination of species can be made from nothing: check the signs of the formula matrix"
@@ -96,50 +109,134 @@ def _checked(
     return A, np.broadcast_to(b, (points, b.shape[1])), np.broadcast_to(c, (points, c.shape[1]))
 
 
-def _solve_chunk(A: Floats, b: Amounts, c: Floats, chunk: Indices, answers: Answers) -> None:
-    """Sort the points of a chunk by the elements they lack; each sort is then solved as a whole."""
-    floats = b[chunk].astype(np.float64)
-    finite = np.isfinite(floats).all(axis=1) & np.isfinite(c[chunk]).all(axis=1)
-    answers.status[chunk[~finite]] = Status.NOT_FINITE
-    empty = finite & ~floats.any(axis=1)
-    answers.status[chunk[empty]] = Status.EMPTY
-    chunk, floats = chunk[finite & ~empty], floats[finite & ~empty]
-    absent = (floats == 0.0) & (A >= 0.0).all(axis=1)
-    for pattern, points in alike(absent, chunk):
-        kept = np.flatnonzero(~(A[pattern] > 0.0).any(axis=0))
-        if kept.size:
-            _solve_alike(A, kept, b, c, points, answers)
+def _mask(condensed: ArrayLike | None, species: int) -> NDArray[np.bool_]:
+    if condensed is None:
+        return np.zeros(species, dtype=bool)
+    given = np.asarray(condensed)
+    if given.dtype == bool:
+        if given.shape != (species,):
+            raise ProblemError(f"condensed must be a mask of {species} species, not of shape {given.shape}")
+        return given
+    mask = np.zeros(species, dtype=bool)
+    try:
+        mask[given.astype(np.intp)] = True
+    except IndexError:
+        raise ProblemError(f"condensed names a species beyond the {species} of the formula matrix") from None
+    return mask
 
 
-def _solve_alike(A: Floats, kept: Indices, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
-    """Solve points with the same species that may be present; those whose balance excludes more are posed anew."""
-    for posed, members in Posed.of(A, kept, b[points]):
-        if members.size:
-            _solve_posed(posed, b, c, points[members], answers)
+@dataclass(frozen=True)
+class _Problem:
+    """All points: A (E, S), condensed (S,), b (N, E), c (N, S); and where their answers go.
 
+    `beside` marks a gas beside condensed phases (phases.py), whose proof is that of the whole.
+    """
 
-def _solve_posed(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
-    independent = b[np.ix_(points, posed.system.rows)]
-    costs = c[np.ix_(points, posed.kept)]
-    starts, impossible = estimates(posed.system, independent, costs)
-    for members in _same_amounts(b, points[impossible]):
-        _retry_nearest(posed, b, c, members, answers)
-    batches = []
-    for start in starts:
-        excluding = start.excluded.any(axis=1)
-        for pattern, members in alike(start.excluded[excluding], np.flatnonzero(excluding)):
-            _solve_alike(
-                posed.A, posed.kept[~pattern.astype(bool)], b, c, points[start.points[members]], answers
-            )
-        full = np.flatnonzero(~excluding)
-        if full.size:
-            at = start.points[full]
-            m = start.components.amounts(independent[at])
+    A: Floats
+    condensed: NDArray[np.bool_]
+    b: Amounts
+    c: Floats
+    answers: Answers
+    beside: bool = False
+
+    def solve(self, points: Indices) -> None:
+        """Sort points by the elements and phases they lack; each sort is then solved as a whole."""
+        floats, c = self.b[points].astype(np.float64), self.c[points]
+        out_of_question = np.isposinf(c) & self.condensed
+        finite = np.isfinite(floats).all(axis=1) & (np.isfinite(c) | out_of_question).all(axis=1)
+        self.answers.status[points[~finite]] = Status.NOT_FINITE
+        empty = finite & ~floats.any(axis=1)
+        self.answers.status[points[empty]] = Status.EMPTY
+        here = finite & ~empty
+        absent = (floats[here] == 0.0) & (self.A >= 0.0).all(axis=1)
+        for pattern, members in alike(np.hstack([absent, out_of_question[here]]), points[here]):
+            no_element, no_phase = pattern[: len(self.A)], pattern[len(self.A) :]
+            kept = np.flatnonzero(~(self.A[no_element] > 0.0).any(axis=0) & ~no_phase)
+            if kept.size:
+                self.solve_alike(kept, members)
+
+    def solve_alike(self, kept: Indices, points: Indices) -> None:
+        """Solve points with the same species that may be present."""
+        for posed, members in Posed.of(self.A, kept, self.b[points]):
+            if members.size:
+                self.solve_posed(posed, points[members])
+
+    def solve_posed(self, posed: Posed, points: Indices) -> None:
+        """Estimate all points; those whose balance excludes more species are posed anew without these."""
+        independent = self.b[np.ix_(points, posed.system.rows)]
+        costs = self.c[np.ix_(points, posed.kept)]
+        starts, impossible = estimates(posed.system, independent, costs)
+        for members in _same_amounts(self.b, points[impossible]):
+            self.retry_nearest(posed, members)
+        possible = []
+        for start in starts:
+            excluding = start.excluded.any(axis=1)
+            for pattern, members in alike(start.excluded[excluding], np.flatnonzero(excluding)):
+                self.solve_alike(posed.kept[~pattern.astype(bool)], points[start.points[members]])
+            if not excluding.all():
+                possible.append(start.take(np.flatnonzero(~excluding)))
+        if self.condensed[posed.kept].any():
+            self.solve_phases(posed, possible, independent, costs, points)
+        else:
+            self.solve_gas(posed, possible, independent, costs, points)
+
+    def solve_gas(
+        self, posed: Posed, starts: list[StartGroup], independent: Amounts, costs: Floats, points: Indices
+    ) -> None:
+        batches = []
+        for start in starts:
+            m = start.components.amounts(independent[start.points])
             batches.append(
-                Batch.begin(start.components, at, m, start.log_y[full], start.total[full], costs[at])
+                Batch.begin(start.components, start.points, m, start.log_y, start.total, costs[start.points])
             )
-    for batch in minimise_batches(batches, independent, costs):
-        posed.finish(batch, b[points], costs, points, answers)
+        for batch in minimise_batches(batches, independent, costs):
+            posed.finish(batch, self.b[points], costs, points, self.answers, beside=self.beside)
+
+    def solve_phases(
+        self, posed: Posed, starts: list[StartGroup], independent: Amounts, costs: Floats, points: Indices
+    ) -> None:
+        condensed = self.condensed[posed.kept]
+        for start in starts:
+            columns = start.components.columns
+            m = start.components.amounts(independent[start.points])
+            first = {
+                tuple(columns[pattern.astype(bool)].tolist()): start.points[members]
+                for pattern, members in alike((m > 0.0) & condensed[columns], np.arange(len(m)))
+            }
+            for at, found in settle(
+                posed, condensed, first, start.components, independent, costs, solve_gas_beside
+            ):
+                posed.finish_phases(condensed, found, self.b[points[at]], costs[at], points[at], self.answers)
+
+    def retry_nearest(self, posed: Posed, points: Indices) -> None:
+        """Points whose common element amounts lie just outside what the species can hold, by rounding."""
+        given = self.b[points[0]]
+        balanced = nearest_balanced(posed.system, given[posed.system.rows], BALANCE_TOLERANCE)
+        if balanced is None:
+            return
+        corrected = np.array([[exact(value) for value in given]], dtype=object)
+        corrected[0, posed.system.rows] = balanced
+        apart = Answers.blank(len(points), *posed.A.shape)
+        again = replace(self, b=corrected.repeat(len(points), axis=0), c=self.c[points], answers=apart)
+        again.solve_alike(posed.kept, np.arange(len(points)))
+        for name, values in vars(self.answers).items():
+            values[points] = getattr(apart, name)
+
+
+def solve_gas_beside(A: Floats, b: Amounts, c: Floats) -> Minimum:
+    """A gas beside condensed phases as phases.py poses it: species may hold nothing but phases, amounts may be boundless.
+
+    Parameters as those of minimise. The status says whether the iteration converged; gap is NaN.
+    """
+    answers = Answers.blank(len(c), *A.shape)
+    problem = _Problem(A, np.zeros(A.shape[1], dtype=bool), b, c, answers, beside=True)
+    try:
+        problem.solve(np.arange(len(c)))
+    except UnboundedError:  # of one point at least: each on its own then
+        for point in range(len(c)):
+            with suppress(UnboundedError):
+                problem.solve(np.array([point]))
+    return answers.minimum()
 
 
 def _same_amounts(b: Amounts, points: Indices) -> list[Indices]:
@@ -148,18 +245,3 @@ def _same_amounts(b: Amounts, points: Indices) -> list[Indices]:
     for point in points:
         groups.setdefault(tuple(b[point].tolist()), []).append(point)
     return [np.array(members) for members in groups.values()]
-
-
-def _retry_nearest(posed: Posed, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
-    """Points whose common element amounts lie just outside what the species can hold, by rounding."""
-    given = b[points[0]]
-    balanced = nearest_balanced(posed.system, given[posed.system.rows], BALANCE_TOLERANCE)
-    if balanced is None:
-        return
-    corrected = np.array([[exact(value) for value in given]], dtype=object)
-    corrected[0, posed.system.rows] = balanced
-    apart = Answers.blank(len(points), *posed.A.shape)
-    every = np.arange(len(points))
-    _solve_alike(posed.A, posed.kept, corrected.repeat(len(points), axis=0), c[points], every, apart)
-    for name, values in vars(answers).items():
-        values[points] = getattr(apart, name)

@@ -60,6 +60,9 @@ LONGEST_EXTENSION = 10
 TOTAL_CHANGE = 10.0
 """Largest factor by which one step changes N."""
 
+LOG_BOUNDLESS = np.log(1e8)
+"""A total that outgrows its estimate by this has no bound: a gas beside phases that may be used up below nothing."""
+
 BATCH = 1024
 """Points iterated side by side: their arrays stay in a core's second-level cache."""
 
@@ -81,7 +84,8 @@ class Batch:
     """Points with equal components on their way to the minimum.
 
     points (n,) the caller's indices; amounts (n, r) m [mol]; log_y (n, r); log_total (n,) ln(N / mol);
-    offsets (n, S) Delta; steps (n,) taken so far; bracket (n, 2) bounds of ln N in the nested form.
+    offsets (n, S) Delta; steps (n,) taken so far; bracket (n, 2) bounds of ln N in the nested
+    form; ceiling (n,) of ln N, beyond which a point is given up.
     """
 
     components: Components
@@ -92,6 +96,7 @@ class Batch:
     offsets: Floats
     steps: Indices
     bracket: Floats
+    ceiling: Floats
 
     @classmethod
     def begin(
@@ -108,6 +113,7 @@ class Batch:
             components.offsets(c),
             np.zeros(n, dtype=np.intp),
             np.tile([-np.inf, np.inf], (n, 1)),
+            np.log(total) + LOG_BOUNDLESS,
         )
 
     def take(self, index: Indices) -> Batch:
@@ -120,11 +126,12 @@ class Batch:
             self.offsets[index],
             self.steps[index],
             self.bracket[index],
+            self.ceiling[index],
         )
 
     @classmethod
     def joined(cls, batches: list[Batch]) -> Batch:
-        names = ("points", "amounts", "log_y", "log_total", "offsets", "steps", "bracket")
+        names = ("points", "amounts", "log_y", "log_total", "offsets", "steps", "bracket", "ceiling")
         return cls(
             batches[0].components,
             *(np.concatenate([getattr(batch, name) for batch in batches]) for name in names),
@@ -213,9 +220,8 @@ def _step(batch: Batch, sums: Sums, log_all: Floats) -> NDArray[np.bool_]:
     batch.log_y += length[:, None] * direction
     batch.log_total += log_ratio
     batch.steps += 1
-    done: NDArray[np.bool_] = (np.maximum(reach, np.abs(log_ratio)) < STEP_TOLERANCE) | (
-        batch.steps >= STEP_LIMIT
-    )
+    done: NDArray[np.bool_] = np.maximum(reach, np.abs(log_ratio)) < STEP_TOLERANCE
+    done |= (batch.steps >= STEP_LIMIT) | (batch.log_total > batch.ceiling)
     return done
 
 
@@ -343,6 +349,7 @@ def _exchanged(batch: Batch, choices: Indices, log_all: Floats, b: Amounts, c: F
             components.offsets(c[part.points]),
             part.steps,
             part.bracket,
+            part.ceiling,
         )
 
 

@@ -11,7 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.minimiser.certificate import optimality_gap
-from gibbsmin.minimiser.components import Amounts, Floats, FormulaSystem, Indices, formula_system
+from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices, formula_system
+from gibbsmin.minimiser.equilibria import Equilibria
 from gibbsmin.minimiser.newton import STEP_LIMIT, Batch
 from gibbsmin.minimiser.result import Minimum, Status
 
@@ -92,45 +93,99 @@ class Posed:
             posed.append((cls(A, kept, system), members[_consistent(system, b[members])]))
         return posed
 
-    def finish(self, batch: Batch, b: Amounts, c: Floats, points: Indices, answers: Answers) -> None:
-        """Fill in amounts, potentials and the proof of the points of a finished batch.
+    def finish(
+        self,
+        batch: Batch,
+        b: Amounts,
+        c: Floats,
+        points: Indices,
+        answers: Answers,
+        *,
+        beside: bool = False,
+    ) -> None:
+        """Fill in amounts, potentials and the proof of the points of a finished batch of gases.
 
-        b (N, E) and c (N, s) of all posed points, whose positions in `answers` are `points` (N,).
+        b (N, E) and c (N, s) of all posed points, whose positions in `answers` are `points` (N,). A gas `beside`
+        phases has no proof of its own, and counts as solved where the iteration converged.
         """
         log_x = batch.log_mole_fractions()
         amounts = np.exp(log_x + batch.log_total[:, None])
-        floats = b[batch.points].astype(np.float64)
         costs = c[batch.points]
+        pi = self.element_potentials(batch.components, batch.log_y + costs[:, batch.components.columns])
         at = points[batch.points]
+        answers.iterations[at] = batch.steps
+        no_phase = np.zeros(len(self.kept), dtype=bool)
+        ended = (batch.steps < STEP_LIMIT) & (batch.log_total <= batch.ceiling)
+        if beside:
+            answers.status[at] = np.where(ended, Status.SOLVED, Status.STEP_LIMIT)
+            self._fill(amounts, log_x, pi, ended, at, answers)
+            return
+        self._judge(no_phase, amounts, log_x, pi, b[batch.points], costs, at, answers)
+        answers.status[at[~ended]] = Status.STEP_LIMIT
+
+    def finish_phases(
+        self,
+        condensed: NDArray[np.bool_],
+        found: Equilibria,
+        b: Amounts,
+        c: Floats,
+        points: Indices,
+        answers: Answers,
+    ) -> None:
+        """Fill in the points of equilibria with condensed phases: b (n, E), c (n, s), positions (n,) in `answers`."""
+        pi = self.element_potentials(found.components, found.component_potentials)
+        amounts = np.where(condensed, np.maximum(found.amounts, 0.0), found.amounts)
+        answers.iterations[points] = found.steps
+        self._judge(condensed, amounts, found.log_activities, pi, b, c, points, answers)
+
+    def _judge(
+        self,
+        condensed: NDArray[np.bool_],
+        amounts: Floats,
+        log_x: Floats,
+        pi: Floats,
+        b: Amounts,
+        costs: Floats,
+        at: Indices,
+        answers: Answers,
+    ) -> None:
+        """Set gap, residual and status of points `at`; fill in the values of those that are proved."""
+        floats = b.astype(np.float64)
         inside = self.A[:, self.kept]
-        pi = self.element_potentials(batch, costs)
-        gap = optimality_gap(inside, floats, costs, amounts, np.nan_to_num(pi), log_mole_fractions=log_x)
+        gap = optimality_gap(
+            inside, floats, costs, amounts, np.nan_to_num(pi), log_mole_fractions=log_x, condensed=condensed
+        )
         turnover = np.maximum(amounts @ np.abs(inside).T, np.abs(floats))
         missed = np.abs(amounts @ inside.T - floats)
         residual = np.divide(missed, turnover, where=turnover > 0.0, out=np.zeros_like(missed)).max(axis=1)
         proved = (gap <= GAP_TOLERANCE * np.abs(floats).sum(axis=1)) & (residual <= BALANCE_TOLERANCE)
-        stopped = batch.steps >= STEP_LIMIT
-        answers.status[at] = np.where(
-            stopped, Status.STEP_LIMIT, np.where(proved, Status.SOLVED, Status.NOT_PROVED)
-        )
-        answers.iterations[at] = batch.steps
+        answers.status[at] = np.where(proved, Status.SOLVED, Status.NOT_PROVED)
         answers.gap[at] = gap
         answers.balance_residual[at] = residual
-        solved = proved & ~stopped
-        answers.amounts[at[solved]] = 0.0
-        answers.log_mole_fractions[at[solved]] = -np.inf
-        places = np.ix_(at[solved], self.kept)
-        answers.amounts[places] = amounts[solved]
-        answers.log_mole_fractions[places] = log_x[solved]
-        answers.element_potentials[at[solved]] = pi[solved]
+        self._fill(amounts, log_x, pi, proved, at, answers)
 
-    def element_potentials(self, batch: Batch, costs: Floats) -> Floats:
-        """(n, E) pi; NaN for absent elements, 0 for rows that depend on the others."""
-        columns = batch.components.columns
-        pi = np.full((len(costs), len(self.A)), np.nan)
+    def _fill(
+        self,
+        amounts: Floats,
+        log_x: Floats,
+        pi: Floats,
+        chosen: NDArray[np.bool_],
+        at: Indices,
+        answers: Answers,
+    ) -> None:
+        answers.amounts[at[chosen]] = 0.0
+        answers.log_mole_fractions[at[chosen]] = -np.inf
+        places = np.ix_(at[chosen], self.kept)
+        answers.amounts[places] = amounts[chosen]
+        answers.log_mole_fractions[places] = log_x[chosen]
+        answers.element_potentials[at[chosen]] = pi[chosen]
+
+    def element_potentials(self, components: Components, of_components: Floats) -> Floats:
+        """(n, E) pi from a_i.pi of the components (n, r); NaN for absent elements, 0 for rows that depend on others."""
+        pi = np.full((len(of_components), len(self.A)), np.nan)
         pi[:, self.A[:, self.kept].any(axis=1)] = 0.0
-        square = self.A[np.ix_(self.system.rows, self.kept[columns])]
-        pi[:, self.system.rows] = np.linalg.solve(square.T, (batch.log_y + costs[:, columns]).T).T
+        square = self.A[np.ix_(self.system.rows, self.kept[components.columns])]
+        pi[:, self.system.rows] = np.linalg.solve(square.T, of_components.T).T
         return pi
 
 

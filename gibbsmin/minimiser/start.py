@@ -15,6 +15,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices
 from gibbsmin.minimiser.vertex import PIVOT_SIZE, VertexGroup, optimal_vertices
@@ -32,7 +33,12 @@ class StartGroup:
     points: Indices
     log_y: Floats
     total: Floats
-    excluded: np.ndarray
+    excluded: NDArray[np.bool_]
+
+    def take(self, index: Indices) -> StartGroup:
+        return StartGroup(
+            self.components, self.points[index], self.log_y[index], self.total[index], self.excluded[index]
+        )
 
 
 def estimates(system: FormulaSystem, b: Amounts, c: Floats) -> tuple[list[StartGroup], Indices]:
@@ -53,7 +59,7 @@ def estimates(system: FormulaSystem, b: Amounts, c: Floats) -> tuple[list[StartG
     return groups, impossible
 
 
-def _fill_degenerate(vertex: VertexGroup, log_y: Floats, excluded: np.ndarray) -> None:
+def _fill_degenerate(vertex: VertexGroup, log_y: Floats, excluded: NDArray[np.bool_]) -> None:
     """Replace the -inf of components with zero amount by the estimate of the next level, in place."""
     empty = np.isneginf(log_y)
     for pattern in np.unique(empty[empty.any(axis=1)], axis=0):
