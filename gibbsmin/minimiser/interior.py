@@ -23,7 +23,7 @@ from gibbsmin.minimiser.certificate import shift_weight
 from gibbsmin.minimiser.components import Amounts, Components, Floats
 from gibbsmin.minimiser.posing import Posed
 
-FIRST_MU, LAST_MU, SHRINK = 1.0, 1e-10, 0.2
+FIRST_MU, LAST_MU, SHRINK = 1.0, 1e-12, 0.2
 """Barrier weights relative to the size of the feed, and the factor between one and the next."""
 
 STEPS_PER_MU = 40
@@ -63,11 +63,12 @@ def follow_path(
     """
     walk = _Walk(posed, condensed, components, b, c)
     mu = FIRST_MU
-    while True:
-        walk.climb(mu)
-        if mu <= LAST_MU:
-            return walk.inside(mu)
-        mu = max(mu * SHRINK, LAST_MU)
+    with np.errstate(all="ignore"):  # trial steps may leave the constraints; they are not taken
+        while True:
+            walk.climb(mu)
+            if mu <= LAST_MU:
+                return walk.inside(mu)
+            mu = max(mu * SHRINK, LAST_MU)
 
 
 class _Walk:
@@ -139,7 +140,7 @@ class _Walk:
         while length > np.finfo(np.float64).eps:
             log_y = self.log_y + length * direction
             after = self._barrier(log_y, log_all + length * change, mu)
-            if after >= before + SLOPE_PART * length * slope - NOISE * (abs(before) + abs(after)):
+            if after >= before + SLOPE_PART * length * slope - NOISE * abs(before):
                 self.log_y = log_y
                 return
             length *= 0.5
