@@ -58,6 +58,32 @@ results:
 cross-check: {sample size: 6}
 """
 
+REACTIONS = (
+    SMALL.replace("[2, 3, 4]", "[3]")
+    + """\
+reactions:
+  equations:
+    reforming: CH4 + H2O = CO + 3 H2
+    shift: CO + H2O = CO2 + H2
+  tolerance: {per cent of K: 5}
+  shortcuts:
+    straight line:
+      reaction: shift
+      constant enthalpy at: 700 degC
+  alone:
+    reforming only: [reforming]
+  measured:
+    laboratory:
+      reaction: shift
+      table: |
+        T [degC], K, u
+        500, 5.2, 0.2
+        600, 2.7, 0.1
+        700, 1.6, 0.08
+        800, 1.1, 0.06
+"""
+)
+
 LARGE = """\
 title: A map of ten thousand points
 feed:
@@ -84,6 +110,12 @@ def small_outcome() -> Outcome:
 @cache
 def large_outcome() -> Outcome:
     return _run(LARGE)
+
+
+@cache
+def reactions_outcome() -> Outcome:
+    """Two reactions with a shortcut, one against the mixture, and invented measured values."""
+    return _run(REACTIONS)
 
 
 def line_outcome() -> Outcome:

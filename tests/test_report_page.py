@@ -28,7 +28,14 @@ from gibbsmin.report.packing import RELATIVE_ERROR, packed, unpacked
 from gibbsmin.report.page import LIBRARY_FILE, LIBRARY_LICENSE, page_file
 from gibbsmin.report.results_part import chosen_points
 from gibbsmin.report.thinning import MOST_VALUES, thin
-from tests.report_cases import HOSTILE, SMALL, flawed_outcome, hostile_outcome, small_outcome
+from tests.report_cases import (
+    HOSTILE,
+    SMALL,
+    flawed_outcome,
+    hostile_outcome,
+    reactions_outcome,
+    small_outcome,
+)
 
 ROOT = Path(__file__).parents[1]
 
@@ -197,6 +204,24 @@ def test_no_cross_check_is_said(small: Outcome) -> None:
     assert "no independent cross-check" in page.visible
 
 
+def test_reactions_show_constants_shortcuts_and_windows() -> None:
+    outcome = reactions_outcome()
+    assert outcome.reactions is not None
+    page = Read(report_html(outcome))
+    rows = {row[0]: row for row in page.tables["Reactions; K at a standard pressure of 1 bar"]}
+    ln_K = outcome.dataset["ln_K"].sel(reaction="shift")
+    assert rows["reaction"][2:4] == ["ln K at 500 °C", "ln K at 900 °C"]
+    assert rows["shift"][1] == "CO + H₂O = CO₂ + H₂"
+    assert rows["shift"][2:4] == [number(float(ln_K[0])), number(float(ln_K[-1]))]
+    assert "K falls with temperature" in rows["shift"][4]
+    shortcuts = next(rows for caption, rows in page.tables.items() if caption.startswith("Shortcuts"))
+    error = outcome.dataset["shortcut_error_per_cent"].sel(shortcut="straight line").values
+    assert shortcuts[1][2] == number(float(error[np.argmax(np.abs(error))]), 3)
+    (window,) = outcome.reactions.shortcuts[0].windows
+    assert shortcuts[1][4].startswith(f"{window.lower - 273.15:.4g}"[:3])
+    assert "laboratory" in page.visible
+
+
 # --- safety and sameness
 
 
@@ -330,8 +355,18 @@ def test_run_writes_the_report_unless_told_not_to(
 
 def test_study_report_tells_cases_apart() -> None:
     cases = [
-        StudyCase("lean", 100, 0, 5, 0, 1e-13, {"H2 (mol/mol)": 0.5}, report="lean/report.html"),
-        StudyCase("rich", 100, 3, 5, 1, 2e-13, {"H2 (mol/mol)": 0.6}),
+        StudyCase(
+            "lean",
+            100,
+            0,
+            5,
+            0,
+            1e-13,
+            {"steam to carbon": 2.5},
+            {"H2 (mol/mol)": (0.4, 0.5)},
+            report="lean/report.html",
+        ),
+        StudyCase("rich", 100, 3, 5, 1, 2e-13, {"steam to carbon": 3}, {"H2 (mol/mol)": (0.6, 0.6)}),
         StudyCase(HOSTILE, 100, 0, failure=HOSTILE),
     ]
     text = study_report_html("Study of a test", cases, settings={"program": "gibbsmin"})
@@ -339,10 +374,12 @@ def test_study_report_tells_cases_apart() -> None:
     assert "2 of 3 cases ran" in page.visible
     assert "197 of 300 points solved and proved" in page.visible
     rows = page.tables["All 3 cases"]
-    assert rows[1] == ["lean", "100", "0", "0 of 5", number(1e-13, 2), "0.5"]
+    assert rows[1] == ["lean", "2.5", "100", "0", "0 of 5", number(1e-13, 2), "0.4 to 0.5"]
     assert "rich: 3 points not solved; 1 points differ in the cross-check" in page.visible
-    spread = page.tables["Lowest and highest value of each result over the cases"]
-    assert spread[1] == ["H2 (mol/mol)", "0.5", "lean", "0.6", "rich"]
+    spread = next(
+        rows for caption, rows in page.tables.items() if caption.startswith("Lowest and highest value")
+    )
+    assert spread[1][:5] == ["H₂ (mol/mol)", "0.4", "lean", "0.6", "rich"]
     assert [name for name, _ in page.elements].count("script") == 0
     assert not re.search(r"<img", text)
     assert "cases that need attention" in page.visible.lower()

@@ -7,6 +7,13 @@ bytes; every text from outside is escaped.
 from __future__ import annotations
 
 from gibbsmin.report.page import REPORT_FILE, report_html, write_report
-from gibbsmin.report.study_page import StudyCase, study_report_html
+from gibbsmin.report.study_page import StudyCase, study_report_html, study_results_html
 
-__all__ = ["REPORT_FILE", "StudyCase", "report_html", "study_report_html", "write_report"]
+__all__ = [
+    "REPORT_FILE",
+    "StudyCase",
+    "report_html",
+    "study_report_html",
+    "study_results_html",
+    "write_report",
+]

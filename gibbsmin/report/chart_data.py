@@ -16,6 +16,7 @@ from gibbsmin.report.boundaries import boundaries
 from gibbsmin.report.markup import pretty_name, pretty_words
 from gibbsmin.report.packing import packed
 from gibbsmin.report.quantities import quantities
+from gibbsmin.report.reactions_part import reaction_charts
 from gibbsmin.report.thinning import MOST_POINTS, Thinned, thin
 
 if TYPE_CHECKING:
@@ -34,6 +35,7 @@ _COLOURS = {  # one scale for each kind of quantity; all of them even in lightne
     "energy": ("cividis", (0.0, 0.84)),
     "property": ("cividis", (0.0, 0.84)),
     "evidence": ("bone_r", (0.08, 0.75)),
+    "trust": ("cividis", (0.0, 0.84)),
     "signed": ("PuOr_r", (0.06, 0.94)),
 }
 
@@ -71,11 +73,13 @@ class ChartData:
         fraction = dataset["mole_fraction"]
         ordered = fraction.sel(species=list(self.species)).transpose(*dataset["status"].dims, "species")
         wanted = [name for name in scenario.results.key_species if name in self.species]
+        key = key_species(whole, wanted)
+        reactions = outcome.reactions
         return {
             "axes": [_axis(axis, kept[axis.name]) for axis in scenario.axes],
             "ambient": scenario.ambient_pressure,
             "species": [{"name": name, "label": pretty_name(name)} for name in self.species],
-            "key": list(key_species(whole, wanted)),
+            "key": list(key),
             "fractions": packed(ordered.values),
             "dryTotal": _dry_total(dataset),
             "water": WATER,
@@ -88,11 +92,13 @@ class ChartData:
                     "group": each.group,
                     "kind": each.kind,
                     "unit": each.unit,
+                    "flags": list(each.flags),
                     "values": packed(each.values.transpose(*dataset["status"].dims).values),
                 }
-                for each in quantities(dataset)
+                for each in quantities(dataset, key)
             ],
             "boundaries": list(boundaries(whole, kept)),
+            "reactions": None if reactions is None else reaction_charts(reactions),
             "colours": _colour_scales(),
             "lineColours": {"light": list(LINE_COLOURS), "dark": list(_DARK_LINE_COLOURS)},
         }

@@ -15,6 +15,7 @@ from gibbsmin.report.chart_data import LEAST_SHOWN, ChartData
 from gibbsmin.report.evidence_part import evidence_part, method_part
 from gibbsmin.report.explore_part import explore_part
 from gibbsmin.report.markup import Markup, bullets, embedded_json, facts, pretty_name, tag
+from gibbsmin.report.reactions_part import reactions_part
 from gibbsmin.report.results_part import results_part
 from gibbsmin.report.thinning import MOST_POINTS
 
@@ -26,7 +27,17 @@ if TYPE_CHECKING:
 REPORT_FILE = "report.html"
 LIBRARY_FILE = "plotly-cartesian.min.js"
 LIBRARY_LICENSE = "plotly-LICENSE.txt"
-SCRIPTS = ("numbers.js", "units.js", "store.js", "drawing.js", "map.js", "cut.js", "point.js", "explore.js")
+SCRIPTS = (
+    "numbers.js",
+    "units.js",
+    "store.js",
+    "drawing.js",
+    "map.js",
+    "cut.js",
+    "point.js",
+    "reactions.js",
+    "explore.js",
+)
 # The browser itself refuses whatever would leave the page.
 POLICY = (
     "default-src 'none'; script-src 'unsafe-inline'; style-src 'unsafe-inline'; img-src data: blob:; "
@@ -62,6 +73,7 @@ def report_html(outcome: Outcome, *, most_points: int = MOST_POINTS) -> str:
     sections: list[tuple[str, str, list[Markup | None]]] = [
         ("explore", "Explore", explore_part(outcome, data)),
         ("results", "Results", results_part(outcome)),
+        *([("reactions", "Reactions", reactions_part(outcome))] if outcome.reactions is not None else []),
         ("scenario", "Scenario as understood", asked_part(outcome.scenario)),
         ("species", "Species", species_part(outcome.scenario)),
         ("method", "Method", method_part(outcome)),

@@ -7,8 +7,8 @@ that are added to the data set later need nothing here.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -18,18 +18,20 @@ from gibbsmin.outcome.summary import SHOWN_UNITS
 from gibbsmin.report.boundaries import is_boundary
 from gibbsmin.report.markup import pretty_name, pretty_words
 
-Kind = Literal["composition", "result", "energy", "property", "evidence"]
+Kind = Literal["composition", "result", "trust", "energy", "property", "evidence"]
 
 GROUPS: dict[Kind, str] = {
     "composition": "Composition",
     "result": "Wanted results",
+    "trust": "Trust in reactions alone",
     "energy": "Energy",
     "property": "Properties",
     "evidence": "Evidence",
 }
 _ENERGY = ("heat_duty", "heat_duty_per_feed", "enthalpy")
-_EVIDENCE = ("balance_residual", "iterations", "crosscheck_difference")
-_UNSHOWN = frozenset({"status", "gap", "crosscheck_status", "extrapolated", "feed_amount", "amount"})
+_EVIDENCE = ("balance_residual", "iterations", "crosscheck_difference", "status", "crosscheck_status")
+_TRUST = ("alone_reason", "alone_error", "condensed_activity")
+_UNSHOWN = frozenset({"gap", "extrapolated", "feed_amount", "amount"})
 _OWN_CHARTS = frozenset({"mole_fraction", "dry_mole_fraction", "element_potential"})
 _SHORT = {  # the data set's own long names say more than a table has room for
     "heat_duty": "heat duty",
@@ -42,7 +44,13 @@ _SHORT = {  # the data set's own long names say more than a table has room for
     "heat_capacity_equilibrium": "heat capacity, reacting",
     "balance_residual": "largest error of an element balance",
     "crosscheck_difference": "difference in the cross-check",
+    "crosscheck_status": "outcome of the cross-check",
+    "alone_reason": "verdict",
+    "alone_error": "error of the mole fraction of",
+    "condensed_activity": "largest activity of a condensed phase",
 }
+_BY_SPECIES = frozenset({"alone_mole_fraction"})  # its error says the same more plainly
+_FLAG_WORDS = {"within": "within tolerance", "k_error": "error of K"}
 _PLAIN_UNITS = {
     "kg mol-1": ("g/mol", 1e3),
     "kg m-3": ("kg/m³", 1.0),
@@ -60,6 +68,7 @@ class Quantity:
         label: for people.
         unit: of the values as shown, "" for a pure number.
         values: over the grid, in that unit; NaN where a point is not solved.
+        flags: words for the values 0, 1 ... of a result that is no measure but one of several verdicts.
     """
 
     name: str
@@ -68,10 +77,16 @@ class Quantity:
     group: str
     unit: str
     values: xr.DataArray
+    flags: tuple[str, ...] = ()
 
 
-def quantities(dataset: xr.Dataset) -> Iterator[Quantity]:
-    """Every result over the grid beside the mole fractions, which the page has anyway."""
+def quantities(dataset: xr.Dataset, key_species: Sequence[str] = ()) -> Iterator[Quantity]:
+    """Every result over the grid beside the mole fractions, which the page has anyway.
+
+    Args:
+        dataset: of a run.
+        key_species: for which results by species (errors of their mole fractions) are shown.
+    """
     grid = set(dataset["status"].dims)
     found = []
     for key, array in dataset.data_vars.items():
@@ -83,24 +98,41 @@ def quantities(dataset: xr.Dataset) -> Iterator[Quantity]:
             found.append(_quantity(name, _title(name, array), array, _kind(name, array)))
         elif len(further) == 1 and set(array.dims) == {*grid, *further}:
             found += list(_by_label(name, array, further[0]))
+        elif len(further) == 2 and "species" in further and name not in _BY_SPECIES:
+            (other,) = (dim for dim in further if dim != "species")
+            for each in key_species:
+                found += list(_by_label(name, array.sel(species=each), other, each))
     found.append(_gap(dataset))
     order = list(GROUPS)
     yield from sorted(found, key=lambda each: order.index(each.kind))
 
 
-def _by_label(name: str, array: xr.DataArray, dim: str) -> Iterator[Quantity]:
+def _by_label(name: str, array: xr.DataArray, dim: str, species: str = "") -> Iterator[Quantity]:
     title = _title(name, array)
-    for label in array[dim].values if dim in array.coords else range(array.sizes[dim]):
-        part = array.sel({dim: label}) if dim in array.coords else array.isel({dim: int(label)})
-        made = _quantity(f"{name}|{label}", f"{title}, {pretty_name(str(label))}", part, "property")
-        yield Quantity(
-            made.name, made.label, made.kind, title[:1].upper() + title[1:], made.unit, made.values
-        )
+    kind = _kind(name, array)
+    group = GROUPS[kind] if kind != "property" else title[:1].upper() + title[1:]
+    for position, label in enumerate(array[dim].values if dim in array.coords else range(array.sizes[dim])):
+        part = array.isel({dim: position})
+        words = f"{title} {pretty_name(species)}".rstrip() + f", {pretty_name(str(label))}"
+        made = _quantity("|".join(filter(None, (name, species, str(label)))), words, part, kind)
+        yield replace(made, group=group)
 
 
 def _quantity(name: str, label: str, array: xr.DataArray, kind: Kind) -> Quantity:
+    if "flag_meanings" in array.attrs:
+        return Quantity(name, label, kind, GROUPS[kind], "", *_verdicts(array))
     unit, factor = unit_shown(array)
     return Quantity(name, label, kind, GROUPS[kind], unit, array * factor)
+
+
+def _verdicts(array: xr.DataArray) -> tuple[xr.DataArray, tuple[str, ...]]:
+    """CF flags as positions 0, 1 ... in the list of their words."""
+    codes = np.asarray(array.attrs["flag_values"])
+    order = np.argsort(codes)
+    meanings = str(array.attrs["flag_meanings"]).split()
+    words = [_FLAG_WORDS.get(each) or each.replace("_", " ") for each in meanings]
+    positions = np.searchsorted(codes[order], array.values).astype(np.float64)
+    return array.copy(data=positions), tuple(words[int(i)] for i in order)
 
 
 def unit_shown(array: xr.DataArray) -> tuple[str, float]:
@@ -122,6 +154,8 @@ def _kind(name: str, array: xr.DataArray) -> Kind:
         return "result"
     if name in _ENERGY:
         return "energy"
+    if name in _TRUST:
+        return "trust"
     return "evidence" if name in _EVIDENCE else "property"
 
 

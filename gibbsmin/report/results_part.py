@@ -71,7 +71,7 @@ def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
     ]
     rows += [[pretty_name(names[i]), "mol/mol", *(_figure(column[i]) for column in columns)] for i in ordered]
     for each in quantities(dataset):
-        if each.kind in _SHOWN_KINDS:
+        if each.kind in _SHOWN_KINDS and not each.flags:
             values = each.values.transpose(*dataset["status"].dims).values
             rows.append([each.label, each.unit or "–", *(_figure(values[index]) for index in points)])
     where = _window_words(outcome.scenario, len(points))

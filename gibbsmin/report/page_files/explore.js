@@ -27,6 +27,7 @@ const state = {
 };
 
 let pending = false;
+let ready = false; // what lies further down waits until the page answers
 function draw() {
   if (pending) return;
   pending = true;
@@ -40,6 +41,7 @@ function drawNow() {
   drawMap(state);
   drawPoint(state);
   drawCut(state);
+  if (ready) drawReactions(state);
   for (const name of spanned) {
     const [slider, axis] = [element(`slider-${name}`), axisNamed[name]];
     const text = shownValue(axis, state.mark[axis.position], state, data.ambient);
@@ -132,7 +134,7 @@ function connectSliders() {
 }
 
 function indicesUnder(event) {
-  const found = event.points.find((point) => point.data.type === 'contour');
+  const found = event.points.find((point) => ['contour', 'heatmap'].includes(point.data.type));
   if (!found) return null;
   const [row, column] = found.pointNumber;
   const indices = [...state.mark];
@@ -224,11 +226,12 @@ function connectPrinting() {
 }
 
 function start() {
+  document.documentElement.classList.add('with-scripts');
   element('explorer').hidden = false;
   fillChoosers();
   connect('quantity', 'quantity', () => {
     const { low, high } = rangeOf(quantityNamed[state.quantity]);
-    element('scale').disabled = !(low >= 0 && high > 0);
+    element('scale').disabled = !(low >= 0 && high > 0) || quantityNamed[state.quantity].flags?.length > 0;
   });
   connect('scale', 'scale');
   connect('across', 'across', () => keepApart('across', 'up'));
@@ -247,6 +250,8 @@ function start() {
   connectPrinting();
   performance.mark('ready');
   document.documentElement.dataset.ready = 'yes';
+  ready = true;
+  setTimeout(() => drawReactions(state));
 }
 
 // A map over the same axis twice is no map: the other one takes the axis that was given up.

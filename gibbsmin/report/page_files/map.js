@@ -75,8 +75,8 @@ function drawMap(state) {
   const [across, up] = [axisNamed[state.across], axisNamed[state.up]];
   const [x, y] = [across, up].map((axis) => shownValues(axis, state, data.ambient));
   const values = slice(state, quantity);
-  const scale = bands(quantity, state.scale === 'log');
-  const traces = scale ? [filled(x, y, values, scale, quantity)] : [];
+  const scale = quantity.flags?.length ? {} : bands(quantity, state.scale === 'log');
+  const traces = scale ? [(quantity.flags?.length ? verdicts : filled)(x, y, values, scale, quantity)] : [];
   traces.push(...unsolvedMarks(x, y, values), ...boundaryLines(state, across, up, x, y));
   if (state.showChecked) traces.push(...checkedMarks(state, across, up));
   const mark = [x[state.mark[across.position]], y[state.mark[up.position]]];
@@ -116,6 +116,19 @@ function filled(x, y, values, scale, quantity) {
     colorbar: { thickness: 14, outlinewidth: 0, ticks: 'outside', ticklen: 3, tickmode: 'array',
       tickvals: shown, ticktext: shown.map(scale.text), tickcolor: colour('faint'), x: 1.01, xpad: 4,
       title: { text: plainText(quantity.unit || ''), side: 'top' } },
+  };
+}
+
+// Verdicts have no contours: each point's cell has the colour of its own.
+const VERDICT_COLOURS = ['#3b8f6b', '#e0a526', '#b4552d', '#6f5a96', '#8c8c8c', '#3a4f66', '#c9c4b6'];
+function verdicts(x, y, z, _, quantity) {
+  const count = quantity.flags.length;
+  const colours = quantity.flags.map((__, i) => VERDICT_COLOURS[i % VERDICT_COLOURS.length]);
+  return {
+    type: 'heatmap', x, y, z, hoverinfo: 'none', zmin: -0.5, zmax: count - 0.5, zsmooth: false,
+    colorscale: colours.flatMap((each, i) => [[i / count, each], [(i + 1) / count, each]]),
+    colorbar: { thickness: 14, outlinewidth: 0, tickmode: 'array', tickvals: colours.map((__, i) => i),
+      ticktext: quantity.flags.map(plainText), x: 1.01, xpad: 4 },
   };
 }
 
@@ -193,7 +206,7 @@ function mapWords(state, quantity) {
     .map((axis) => `${axis.title} ${shownValue(axis, state.mark[axisNamed[axis.name].position], state, data.ambient)}`);
   const formula = ['composition'].includes(quantity.kind);
   const name = formula ? quantity.label : quantity.label[0].toUpperCase() + quantity.label.slice(1);
-  const logarithmic = state.scale === 'log' ? ', logarithmic colours' : '';
+  const logarithmic = state.scale === 'log' && !quantity.flags?.length ? ', logarithmic colours' : '';
   const unsolved = slice(state, quantity).flat().filter((value) => value === null).length;
   const blank = unsolved ? ` Crosses: ${unsolved} points without a value.` : '';
   return `${withUnit(name, quantity.unit && `in ${quantity.unit}`)}${held.length ? ` at ${held.join(', ')}` : ''}${

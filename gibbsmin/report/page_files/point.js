@@ -33,7 +33,7 @@ function drawPoint(state) {
     const pair = document.createElement('div');
     pair.dataset.quantity = each.id;
     put(pair, 'dt', { textContent: each.label });
-    put(pair, 'dd', { textContent: withUnit(formatNumber(each.at(point)), each.unit) });
+    put(pair, 'dd', { textContent: valueWords(each, point) });
     return pair;
   }));
 }
@@ -54,7 +54,7 @@ function drawCard(state, pointer) {
   card.replaceChildren(
     put(null, 'p', { className: 'card-place', textContent: placeWords(state.hover, state) }),
     put(null, 'p', { className: 'card-value',
-      textContent: `${quantity.label}: ${withUnit(formatNumber(quantity.at(point)), quantity.unit)}` }),
+      textContent: `${quantity.label}: ${valueWords(quantity, point)}` }),
     list,
   );
   const left = pointer.clientX + 18 + card.offsetWidth > innerWidth ? pointer.clientX - 18 - card.offsetWidth

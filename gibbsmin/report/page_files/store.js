@@ -46,11 +46,18 @@ const quantities = [
   }))),
   ...data.quantities.map((each) => {
     const values = unpacked(each.values);
-    return { id: each.name, label: each.label, group: each.group, kind: each.kind, unit: each.unit,
+    return { id: each.name, label: each.label, group: each.group, kind: each.kind, unit: each.unit, flags: each.flags,
       at: (point) => values[point] };
   }),
 ];
 const quantityNamed = Object.fromEntries(quantities.map((each) => [each.id, each]));
+
+// The value of a quantity in words: a number with its unit, or the verdict that the number stands for.
+function valueWords(quantity, point) {
+  const value = quantity.at(point);
+  if (quantity.flags?.length) return quantity.flags[value] ?? 'not solved';
+  return withUnit(formatNumber(value), quantity.unit);
+}
 
 function withUnit(text, unit) {
   return unit ? `${text} ${unit}` : text;
