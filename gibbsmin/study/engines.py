@@ -140,7 +140,8 @@ class Cluster:
         def submit(i: int) -> Any:
             group, digest, *rest = packer.pack(pending[i])
             if digest not in groups:
-                groups[digest] = self._client.scatter(group, broadcast=True)
+                # As a task and not as scattered data, which nobody could make again if all workers were lost.
+                groups[digest] = self._client.submit(bytes, group, key=f"gibbsmin-{work.run_name}-{digest}")
             future = self._client.submit(
                 _solve_packed,
                 groups[digest],
