@@ -6,6 +6,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gibbsmin.grid.nodes import Floats, Indices
 from gibbsmin.grid.polish import SETTLED, Feed, Scattered, polish, prove
@@ -60,10 +61,11 @@ class Cloud:
     feed: Indices
     at_T: Indices  # noqa: N815
     at_p: Indices
+    condensed: NDArray[np.bool_]
 
     def potentials(self, index: Indices | slice) -> Floats:
-        """(n, S) g / RT + ln p of some points."""
-        return self.gibbs_RT[self.at_T[index]] + self.log_pressure[self.at_p[index], None]
+        """(n, S) g / RT of some points, plus ln p of the gases."""
+        return self.gibbs_RT[self.at_T[index]] + self.log_pressure[self.at_p[index], None] * ~self.condensed
 
     def log_size(self, index: Indices, elements: Indices) -> Floats:
         """(n,) logarithm of the sum of element amounts."""
@@ -116,7 +118,7 @@ def take_sample(cloud: Cloud) -> Sample | None:
     positive = (cloud.b > 0).all(axis=0)
     absent = (cloud.b == 0).all(axis=0)
     plain = positive | (absent & (cloud.A >= 0).all(axis=1))
-    if points < WORTHWHILE or not plain.all() or not np.isfinite(cloud.gibbs_RT).all():
+    if points < WORTHWHILE or not plain.all() or not np.isfinite(cloud.gibbs_RT).all() or cloud.condensed.any():
         return None
     size = min(points // SAMPLE_PART, LARGEST_SAMPLE)
     chosen = np.sort(np.random.default_rng(0).choice(points, size, replace=False))

@@ -39,6 +39,7 @@ def solve_grid(
     temperature: Floats,
     log_pressure: Floats,
     *,
+    condensed: NDArray[np.bool_] | None = None,
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> GridSolution:
@@ -51,6 +52,7 @@ def solve_grid(
     gibbs_RT : (nT, S) standard g / RT of each species at each temperature.
     temperature : (nT,) K.
     log_pressure : (nP,) ln(p / p0).
+    condensed : (S,) mask of pure condensed phases, whose gibbs_RT is +inf where they are not to be considered.
     threads : number of threads; all available cores by default.
     progress : called with the number of points done since the last call.
 
@@ -62,7 +64,7 @@ def solve_grid(
     T, T_order = np.unique(temperature, return_index=True)
     p, p_order = np.unique(log_pressure, return_index=True)
     distinct = (len(T), len(p)) == shape[1:]
-    if not (distinct and np.isfinite(gibbs_RT).all() and is_dense(T, p)):
+    if condensed is not None or not (distinct and np.isfinite(gibbs_RT).all() and is_dense(T, p)):
         feed, T_index, p_index = (index.ravel() for index in np.indices(shape))
         return solve_points(
             formula_matrix,
@@ -73,6 +75,7 @@ def solve_grid(
             feed,
             T_index,
             p_index,
+            condensed=condensed,
             threads=threads,
             progress=progress,
         ).reshaped(shape)
@@ -114,6 +117,7 @@ def solve_points(
     temperature_index: Indices,
     pressure_index: Indices,
     *,
+    condensed: NDArray[np.bool_] | None = None,
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> GridSolution:
@@ -130,6 +134,7 @@ def solve_points(
         feed_index,
         temperature_index,
         pressure_index,
+        np.zeros(formula_matrix.shape[1], dtype=bool) if condensed is None else condensed,
     )
     out = GridSolution.blank((len(feed_index),), *formula_matrix.shape)
     with _workers(threads) as pool:
@@ -145,7 +150,8 @@ def _from_nothing(cloud: Cloud, out: GridSolution) -> Iterator[Callable[[], int]
     for first in range(0, points, size):
 
         def task(index: Indices = np.arange(first, min(first + size, points))) -> int:  # noqa: B008
-            out.fill(index, minimise(cloud.A, cloud.b[cloud.feed[index]], cloud.potentials(index)))
+            b, c = cloud.b[cloud.feed[index]], cloud.potentials(index)
+            out.fill(index, minimise(cloud.A, b, c, condensed=cloud.condensed))
             return len(index)
 
         yield task
