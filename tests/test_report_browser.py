@@ -70,6 +70,40 @@ def opened(browser: Any, folder: Path) -> Iterator[Opener]:
     assert [url for page in pages for url in page.foreign_requests] == []
 
 
+CONTROLS = "#explorer select, #explorer input"
+REMEMBER = f"""() => {{
+  window.asOpened = [...document.querySelectorAll('{CONTROLS}')].map((each) => [each, each.value, each.checked]);
+}}"""
+RESTORE = """() => {
+  for (const [each, value, checked] of window.asOpened) {
+    if (each.value === value && each.checked === checked) continue;
+    each.value = value;
+    each.checked = checked;
+    each.dispatchEvent(new Event(each.type === 'range' ? 'input' : 'change'));
+  }
+  document.activeElement.blur();
+}"""
+
+
+@pytest.fixture(scope="module")
+def shared_page(browser: Any, folder: Path) -> Iterator[OpenedPage]:
+    page = OpenedPage(browser, write_report(small_outcome(), folder / "shared.html"))
+    page.run(REMEMBER)
+    yield page
+    page.close()
+    assert page.troubles == []
+    assert page.foreign_requests == []
+
+
+@pytest.fixture
+def small(shared_page: OpenedPage) -> Iterator[OpenedPage]:
+    """The report of the small outcome as if just opened: opening takes a second, setting the controls back does not."""
+    yield shared_page
+    shared_page.run(RESTORE)
+    shared_page.page.mouse.move(2, 2)
+    shared_page.settle()
+
+
 def number(text: str) -> float:
     """A number as the page prints it: 0.25, 1.5×10⁻⁴, 10⁻⁶, −3; a unit behind it is left out."""
     if power := re.match(r"(?:(−?[\d.]+)×)?10([⁻⁰¹²³⁴⁵⁶⁷⁸⁹]+)", text):
@@ -118,9 +152,8 @@ def choose(page: OpenedPage, chooser: str, value: str) -> None:
 # --- explore
 
 
-def test_charts_draw_and_start_with_the_middle_of_the_map(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_charts_draw_and_start_with_the_middle_of_the_map(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     assert page.page.locator("#map .contourlayer path").count() > 4
     assert page.page.locator("#cut .scatterlayer path.js-line").count() == 3  # one line for each key species
     dataset = outcome.dataset.isel(steam_to_carbon=1)
@@ -130,9 +163,8 @@ def test_charts_draw_and_start_with_the_middle_of_the_map(opened: Opener) -> Non
 
 
 @pytest.mark.parametrize(("column", "row"), [(1, 1), (4, 5), (7, 3)])
-def test_hover_shows_the_full_composition_of_that_point(opened: Opener, column: int, row: int) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_hover_shows_the_full_composition_of_that_point(small: OpenedPage, column: int, row: int) -> None:
+    outcome, page = small_outcome(), small
     page.page.mouse.move(*pixel_of(page, column, row))
     page.page.wait_for_selector("#hover-card:not([hidden])")
     point = outcome.dataset.isel(steam_to_carbon=1, temperature=column, pressure=row)
@@ -158,9 +190,8 @@ def test_hover_shows_the_full_composition_of_that_point(opened: Opener, column: 
     assert page.page.locator("#hover-card").is_hidden()
 
 
-def test_a_click_moves_the_mark_and_the_lines_follow(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_a_click_moves_the_mark_and_the_lines_follow(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     page.page.mouse.click(*pixel_of(page, 2, 5))
     page.settle()
     values = page.run("() => document.getElementById('cut').data[0].y")
@@ -180,9 +211,8 @@ def test_a_click_moves_the_mark_and_the_lines_follow(opened: Opener) -> None:
         ("gap", "gap"),
     ],
 )
-def test_the_chooser_changes_what_the_map_shows(opened: Opener, choice: str, kind: str) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_the_chooser_changes_what_the_map_shows(small: OpenedPage, choice: str, kind: str) -> None:
+    outcome, page = small_outcome(), small
     choose(page, "quantity", choice)
     dataset = outcome.dataset.isel(steam_to_carbon=1)
     field = {
@@ -198,8 +228,8 @@ def test_the_chooser_changes_what_the_map_shows(opened: Opener, choice: str, kin
     np.testing.assert_allclose(map_values(page), expected, rtol=3 * PACKED, atol=1e-37)
 
 
-def test_logarithmic_colours_show_decades(opened: Opener) -> None:
-    page = opened(small_outcome())
+def test_logarithmic_colours_show_decades(small: OpenedPage) -> None:
+    page = small
     choose(page, "quantity", "x|NH3")
     choose(page, "scale", "log")
     field = small_outcome().dataset["mole_fraction"].sel(species="NH3")
@@ -213,9 +243,8 @@ def test_logarithmic_colours_show_decades(opened: Opener) -> None:
     np.testing.assert_allclose(map_values(page), places, atol=1e-4)
 
 
-def test_sliders_work_by_keyboard_and_cut_the_map(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_sliders_work_by_keyboard_and_cut_the_map(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     page.page.focus("#slider-steam_to_carbon")
     page.page.keyboard.press("ArrowRight")
     page.settle()
@@ -232,9 +261,8 @@ def test_sliders_work_by_keyboard_and_cut_the_map(opened: Opener) -> None:
     assert "1 bar: H₂" in page.page.inner_text("#spoken")
 
 
-def test_a_further_axis_can_be_an_axis_of_the_map(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_a_further_axis_can_be_an_axis_of_the_map(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     choose(page, "up", "steam_to_carbon")
     expected = outcome.dataset["mole_fraction"].sel(species="H2").isel(pressure=3)
     np.testing.assert_allclose(
@@ -244,8 +272,8 @@ def test_a_further_axis_can_be_an_axis_of_the_map(opened: Opener) -> None:
     assert page.page.input_value("#up") != "steam_to_carbon"
 
 
-def test_species_are_shown_and_hidden(opened: Opener) -> None:
-    page = opened(small_outcome())
+def test_species_are_shown_and_hidden(small: OpenedPage) -> None:
+    page = small
     names = "() => document.getElementById('cut').data.map((trace) => trace.name)"
     assert page.run(names) == ["H₂", "CO", "CH₄"]
     page.page.uncheck("input[data-species='CO']")
@@ -256,9 +284,8 @@ def test_species_are_shown_and_hidden(opened: Opener) -> None:
     assert "CO," not in page.page.inner_text("#cut-caption")
 
 
-def test_lines_linear_dry_and_by_another_axis(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_lines_linear_dry_and_by_another_axis(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     scale = "() => document.getElementById('cut').layout.yaxis.type"
     assert page.run(scale) == "log"
     choose(page, "line-scale", "linear")
@@ -275,8 +302,8 @@ def test_lines_linear_dry_and_by_another_axis(opened: Opener) -> None:
     np.testing.assert_allclose(lines, expected.transpose("steam_to_carbon", "pressure"), rtol=PACKED)
 
 
-def test_units_switch_in_charts_controls_and_tables(opened: Opener) -> None:
-    page = opened(small_outcome())
+def test_units_switch_in_charts_controls_and_tables(small: OpenedPage) -> None:
+    page = small
     choose(page, "temperature-unit", "K")
     choose(page, "pressure-unit", "kPa")
     x = page.run("() => document.getElementById('map').data[0].x")
@@ -309,9 +336,8 @@ def test_unsolved_points_boundaries_and_activities_are_shown(opened: Opener) -> 
     assert "not solved" in page.page.inner_text("#point-species")
 
 
-def test_checked_points_appear_on_request(opened: Opener) -> None:
-    outcome = small_outcome()
-    page = opened(outcome)
+def test_checked_points_appear_on_request(small: OpenedPage) -> None:
+    outcome, page = small_outcome(), small
     page.page.check("#show-checked")
     page.settle()
     shown = page.run(
@@ -395,26 +421,30 @@ def test_no_serious_finding_of_axe(opened: Opener, scheme: str) -> None:
     page = opened(flawed_outcome(), color_scheme=scheme)
     for details in page.page.locator("details").all():
         details.evaluate("(each) => { each.open = true; }")
-    response = axe.Axe().run(page.page).response
-    assert len(response["passes"]) > 20
+    # Only contrast can differ between the schemes.
+    options = {} if scheme == "light" else {"runOnly": ["color-contrast"]}
+    response = axe.Axe().run(page.page, options=options).response
+    assert len(response["passes"]) >= (20 if scheme == "light" else 1)
     serious = [each for each in response["violations"] if each["impact"] in ("serious", "critical")]
     assert [(each["id"], each["nodes"][0]["html"]) for each in serious] == []
 
 
-def test_dark_and_light_differ_and_charts_follow(opened: Opener) -> None:
-    page = opened(small_outcome())
+def test_dark_and_light_differ_and_charts_follow(small: OpenedPage) -> None:
+    page = small
     background = "() => getComputedStyle(document.body).backgroundColor"
     ink = "() => document.getElementById('map').layout.font.color"
     light = page.run(background), page.run(ink)
     page.page.emulate_media(color_scheme="dark")
     page.settle()
     dark = page.run(background), page.run(ink)
+    page.page.emulate_media(color_scheme="light")
     assert light[0] != dark[0]
     assert light[1] != dark[1]
 
 
-def test_every_control_is_reached_by_the_tab_key(opened: Opener) -> None:
-    page = opened(small_outcome())
+def test_every_control_is_reached_by_the_tab_key(small: OpenedPage) -> None:
+    page = small
+    page.run("() => { document.activeElement.blur(); scrollTo(0, 0); }")
     wanted = set(
         page.run(
             "() => [...document.querySelectorAll('#explorer select, #explorer input, #explorer button')]"
