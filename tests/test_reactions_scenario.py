@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from pathlib import Path
 
 import pytest
@@ -145,15 +146,21 @@ def test_files_are_found_beside_the_scenario(tmp_path: Path) -> None:
         ("standard pressure: 1 atm", "standard pressure: -1 bar", "-1 bar", "not above vacuum"),
         ("unit of K: atm", "unit of K: hogshead", "hogshead", "no unit of an equilibrium constant"),
         ("per cent of K: 3", "per cent of K: 0", "0, kelvin", "expected more than 0"),
-        ("constant enthalpy at: 700 degC", "constant enthalpy at: 700", "700\n", "has no unit"),
+        ("constant enthalpy at: 700 degC", "constant enthalpy at: 700 degrees", "700 degrees",
+         "is not a unit of temperature"),
         ("constant enthalpy at: 700 degC", "correlate: x", "correlate", "unknown key 'correlate'"),
-        ("      reaction: reforming\n      constant enthalpy at: 700 degC", "      reaction: reforming", "tangent", "needs one of"),
-        ("      constant enthalpy at: 700 degC", "      constant enthalpy at: 700 degC\n      correlation: ln K = 1/T", "tangent", "found 'constant enthalpy at' and 'correlation'"),
+        ("      reaction: reforming\n      constant enthalpy at: 700 degC", "      reaction: reforming", "tangent",
+         "needs one of"),
+        ("      constant enthalpy at: 700 degC",
+         "      constant enthalpy at: 700 degC\n      correlation: ln K = 1/T", "tangent",
+         "found 'constant enthalpy at' and 'correlation'"),
         ("      K: 12\n      enthalpy: -38 kJ/mol", "      K: 12", "given", "give K and enthalpy, or neither"),
         ("      K: 12\n", "      K: -12\n", "-12", "K must be a number above zero"),
-        ("-38 kJ/mol", "-38", "-38", "expected a number with one of the units J/mol"),
-        ("through: [700 degC, 900 degC]\n    two", "through: [700 degC]\n    two", "[700 degC]", "needs two temperatures"),
-        ("through: [700 degC, 900 degC]\n    two", "through: [700 degC, 700 degC]\n    two", "[700 degC, 700", "two different temperatures"),
+        ("-38 kJ/mol", "-38 kJ", "-38 kJ", "expected a number with one of the units J/mol"),
+        ("through: [700 degC, 900 degC]\n    two", "through: [700 degC]\n    two", "[700 degC]",
+         "needs two temperatures"),
+        ("through: [700 degC, 900 degC]\n    two", "through: [700 degC, 700 degC]\n    two", "[700 degC, 700",
+         "two different temperatures"),
         ("K: [12.1, 1440]", "K: [12.1]", "[12.1]", "needs two values of K"),
         ("unit: atm^2", "unit: atm^3", "[12.1", "does not fit: moles of gas change by 2"),
         ("ln K = 4577.8/T - 4.33", "ln K = 4577.8/T - tan(T)", "ln K = 4577", "is no term of a correlation"),
@@ -164,7 +171,8 @@ def test_files_are_found_beside_the_scenario(tmp_path: Path) -> None:
         ("400, 12.6, 0.4", "400, 0, 0.4", "400, 0", "K = 0 is not above zero"),
         ("400, 12.6, 0.4", "400, 12.6", "400, 12.6\n", "2 cells, but the heading has 3 columns"),
         ("T [degC], K, u\n", "T, K, u\n", "T, K, u", "the unit of T is missing"),
-        ("360, 19.2, 0.6\n        400, 12.6, 0.4\n        460", "400, 19.2, 0.6\n        400, 12.6, 0.4\n        400", "bench", "all values are at 673.15 K"),
+        ("360, 19.2, 0.6\n        400, 12.6, 0.4\n        460",
+         "400, 19.2, 0.6\n        400, 12.6, 0.4\n        400", "400, 19.2", "all values are at 673.15 K"),
         ("    basis: dry\n", "", "sample, T", "say whether the analyses are wet or dry"),
         ("tube, 816.85, 10, 73.5", "tube, 816.85, 10, -73.5", "tube, 816", "H2: -73.5 per cent is impossible"),
         ("tube, 816.85, 10, 73.5", "tube, 816.85, 10, 63.5", "tube, 816", "the shares add up to 90"),
@@ -208,3 +216,10 @@ def test_all_faults_are_told_at_once() -> None:
     assert [each.line for each in caught.value.faults] == sorted(
         each.line or 0 for each in caught.value.faults
     )
+
+
+def test_faults_of_reactions_come_with_those_of_other_sections() -> None:
+    text = SOUND.replace("CO + 3 H2", "CO + 2 H2").replace("N2: 0.05 mol", "N2: 0.05 moll")
+    with pytest.raises(ScenarioError) as caught:
+        parse_scenario(text)
+    assert len(caught.value.faults) == 2

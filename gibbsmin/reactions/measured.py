@@ -125,6 +125,7 @@ def _faults(
             Fault(
                 f"{len(T)} values are too few: Delta H and Delta S with an uncertainty take at least {FEWEST}",
                 where[0].file if where else "",
+                where[0].line if where else None,
             )
         )
     elif len(np.unique(T)) < 2:
@@ -132,6 +133,7 @@ def _faults(
             Fault(
                 f"all values are at {T[0]:g} K; without a second temperature there is no Delta H",
                 where[0].file if where else "",
+                where[0].line if where else None,
             )
         )
     return faults

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from fractions import Fraction
 from os import PathLike
 from pathlib import Path
@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 from gibbsmin.errors import Fault, ScenarioError
 from gibbsmin.scenario.axes import check_feeds, read_axis, read_further_axes, streams_set_by_axes
 from gibbsmin.scenario.feed import Feed, read_feed
-from gibbsmin.scenario.model import Scenario
+from gibbsmin.scenario.model import Axis, FurtherAxis, Scenario, SpeciesChoice
 from gibbsmin.scenario.reading import Reading
 from gibbsmin.scenario.species_choice import add_own_species, check_names, choose_species
 from gibbsmin.scenario.structure import check_structure
@@ -20,6 +20,7 @@ from gibbsmin.scenario.wanted import read_cross_check, read_output, read_results
 from gibbsmin.strict_yaml import Document, parse
 
 if TYPE_CHECKING:
+    from gibbsmin.reactions.wanted import ReactionsWanted
     from gibbsmin.species import SpeciesLibrary
 
 LARGEST_FILE = 10_000_000
@@ -127,23 +128,16 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
     if not feed.sound or not feed.streams:
         check_names(reading, wanted_species)
         read_results(reading, wanted_results, None, None, pressure)
+        _reactions(reading, data, None, None, temperature, (), folder)
         return None
     _check_feed(reading, feed)
     if further_axes is not None and not reading.faults:
         check_feeds(reading, further_axes, feed)
     choice = choose_species(reading, wanted_species, feed, temperature)
     results = read_results(reading, wanted_results, feed, choice, pressure)
+    reactions = _reactions(reading, data, choice, feed, temperature, further_axes or (), folder)
     if choice is None or reading.faults or temperature is None or pressure is None or further_axes is None:
         return None
-    reactions = None
-    if "reactions" in data:
-        from gibbsmin.scenario.reactions import read_reactions  # scenarios without reactions need none of it
-
-        reactions = read_reactions(
-            reading, data["reactions"], choice, feed, temperature, further_axes, folder
-        )
-        if reactions is None:
-            return None
     return Scenario(
         title=data["title"],
         notes=data.get("notes", ""),
@@ -166,6 +160,23 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
         positions=reading.document.positions,
         reactions=reactions,
     )
+
+
+def _reactions(
+    reading: Reading,
+    data: Mapping[str, Any],
+    choice: SpeciesChoice | None,
+    feed: Feed | None,
+    temperature: Axis | None,
+    further_axes: Sequence[FurtherAxis],
+    folder: Path,
+) -> ReactionsWanted | None:
+    """What the file asks about reactions; choice, feed and axis are None where they have faults of their own."""
+    if "reactions" not in data:
+        return None
+    from gibbsmin.scenario.reactions import read_reactions  # scenarios without reactions need none of it
+
+    return read_reactions(reading, data["reactions"], choice, feed, temperature, further_axes, folder)
 
 
 def _check_feed(reading: Reading, feed: Feed) -> None:

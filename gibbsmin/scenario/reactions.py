@@ -40,13 +40,16 @@ SECTION = "reactions"
 def read_reactions(
     reading: Reading,
     data: Mapping[str, Any],
-    choice: SpeciesChoice,
-    feed: Feed,
-    temperature: Axis,
+    choice: SpeciesChoice | None,
+    feed: Feed | None,
+    temperature: Axis | None,
     further_axes: Sequence[FurtherAxis],
     folder: Path,
 ) -> ReactionsWanted | None:
-    """What the section asks for; faults are recorded, so the value counts only when there are none."""
+    """What the section asks for; faults are recorded, so the value counts only when there are none.
+
+    `choice`, `feed` and `temperature` are None where they have faults of their own; what needs them is then not checked.
+    """
     reader = _Reader(reading, choice, feed, temperature, bool(further_axes), folder)
     return reader.read(data)
 
@@ -55,9 +58,9 @@ class _Reader:
     def __init__(
         self,
         reading: Reading,
-        choice: SpeciesChoice,
-        feed: Feed,
-        temperature: Axis,
+        choice: SpeciesChoice | None,
+        feed: Feed | None,
+        temperature: Axis | None,
         feed_varies: bool,
         folder: Path,
     ) -> None:
@@ -107,7 +110,7 @@ class _Reader:
             if reaction is None:
                 continue
             self.reactions[name] = reaction
-            if self.choice.extrapolate:
+            if self.choice is None or self.choice.extrapolate or self.temperature is None:
                 continue
             limits = self._tried(lambda reaction=reaction: validity(reaction), path)  # type: ignore[misc]
             low, high = self.temperature.values[0], self.temperature.values[-1]
@@ -286,19 +289,19 @@ class _Reader:
 
     def _subsets(self, data: Mapping[str, Any]) -> list[Subset]:
         found = []
-        names = [each.name for each in self.choice.species]
         for name, members in data.items():
             path = (SECTION, "alone", name)
             reactions = [self._reaction(each, (*path, i)) for i, each in enumerate(members)]
             sound = [each for each in reactions if each is not None]
             if len(sound) != len(members):
                 continue
-            if self._unfit(sound, names, path):
+            if self.choice is not None and self._unfit(sound, self.choice.species, path):
                 continue
             found.append(Subset(name, tuple(sound)))
         return found
 
-    def _unfit(self, reactions: Sequence[Reaction], names: Sequence[str], path: YamlPath) -> bool:
+    def _unfit(self, reactions: Sequence[Reaction], gases: Sequence[Species], path: YamlPath) -> bool:
+        names = [each.name for each in gases]
         for each in reactions:
             condensed = [one.name for one in each.species if one.state != "g"]
             if condensed:
@@ -313,7 +316,7 @@ class _Reader:
                     path, f"{each.name}: {', '.join(missing)} is not among the gases of this scenario"
                 )
                 return True
-        redundant = coverage(self.choice.species, reactions).redundant
+        redundant = coverage(gases, reactions).redundant
         if redundant:
             self.reading.fault(path, f"the reactions depend on each other: {redundant[0]}; leave one out")
         return bool(redundant)
@@ -357,7 +360,8 @@ class _Reader:
         found = self._tried(read, path)
         analyses, species = found if found is not None else ([], {})
         known = [each for each in reactions if each is not None]
-        self._tried(lambda: checked_analyses(analyses, known, species), path)
+        if self.feed is not None:
+            self._tried(lambda: checked_analyses(analyses, known, species), path)
         for each in known:
             self._inside_data(each, [one.temperature for one in analyses], path)
         return analyses, known, species
@@ -371,7 +375,7 @@ class _Reader:
         """The feed that goes with the analyses: its own, or the scenario's where that does not vary."""
         if "feed" in data:
             return {name: float(amount) for name, amount in data["feed"].items()}
-        if self.feed_varies:
+        if self.feed_varies or self.feed is None:
             return None
         total: dict[str, float] = {}
         for stream in self.feed.streams.values():
