@@ -60,7 +60,9 @@ class ChartData:
         kept = [i for i in order if largest[i] > LEAST_SHOWN][:MOST_SPECIES] or order[:1]
         self.species = tuple(names[i] for i in kept)
         rest = [i for i in range(len(names)) if i not in set(kept)]
-        self.left_out = tuple(names[i] for i in rest)
+        # Pure condensed phases have an amount but no mole fraction, so there is none that could be small.
+        gases = {each.name for each in outcome.scenario.species if each.state == "g"}
+        self.left_out = tuple(names[i] for i in rest if names[i] in gases)
         self.least = float(max((largest[i] for i in rest), default=0.0))
         self.thinned: Thinned = thin(dataset["status"].shape, len(kept), most_points)
 

@@ -2,7 +2,8 @@
 const CARD_SPECIES = 6;
 
 function abundance(point) {
-  return species.map((each) => [each, moleFraction(point, each.index)]).sort((a, b) => b[1] - a[1]);
+  // A point without a solution has no order; its species stay as they are listed.
+  return species.map((each) => [each, moleFraction(point, each.index)]).sort((a, b) => (b[1] - a[1]) || 0);
 }
 
 function placeWords(indices, state) {
