@@ -14,6 +14,7 @@ from gibbsmin.grid.polish import SETTLED, Feed, Rectangle, polish, prove
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Amounts, Components
+from gibbsmin.minimiser.minimise import solve_gas_beside
 from gibbsmin.minimiser.nearby import abundant_components, minimise_near, pose_like
 from gibbsmin.minimiser.posing import Posed
 
@@ -78,11 +79,18 @@ def _axes(temperature: Floats, log_pressure: Floats) -> tuple[Axis, Axis]:
 
 
 def solve_nodes(
-    A: Floats, b: Amounts, gibbs_RT: Floats, temperature: Floats, log_pressure: Floats
+    A: Floats,
+    b: Amounts,
+    gibbs_RT: Floats,
+    temperature: Floats,
+    log_pressure: Floats,
+    *,
+    beside: bool = False,
 ) -> Nodes | None:
     """Solve the nodes of a map, level by level; None where one of them cannot be solved.
 
-    Parameters: b (E,) mol; gibbs_RT (nT, S); temperature (nT,) K and log_pressure (nP,), both ascending.
+    Parameters: b (E,) mol; gibbs_RT (nT, S); temperature (nT,) K and log_pressure (nP,), both ascending; `beside`
+    marks a gas beside condensed phases.
     """
     T_axis, p_axis = _axes(temperature, log_pressure)
     levels = [(T_axis, p_axis)]
@@ -91,19 +99,22 @@ def solve_nodes(
     nodes: Nodes | None = None
     for T_level, p_level in reversed(levels):
         g = gibbs_RT[np.searchsorted(np.log(temperature), T_level.node_positions)]
-        nodes = (
-            _first_nodes(A, b, g, T_level, p_level) if nodes is None else _refined(nodes, g, T_level, p_level)
-        )
+        if nodes is None:
+            nodes = _first_nodes(A, b, g, T_level, p_level, beside)
+        else:
+            nodes = _refined(nodes, g, T_level, p_level, beside)
         if nodes is None:
             return None
     return nodes
 
 
-def _first_nodes(A: Floats, b: Amounts, g: Floats, T_axis: Axis, p_axis: Axis) -> Nodes | None:
+def _first_nodes(A: Floats, b: Amounts, g: Floats, T_axis: Axis, p_axis: Axis, beside: bool) -> Nodes | None:
     """Nodes of the coarsest level, solved from nothing."""
     potentials = g[:, None, :] + p_axis.node_positions[:, None]
-    found = minimise(A, b, potentials.reshape(-1, A.shape[1]))
-    if not found.solved.all():
+    c = potentials.reshape(-1, A.shape[1])
+    found = solve_gas_beside(A, np.repeat(b[None, :], len(c), axis=0), c) if beside else minimise(A, b, c)
+    present = np.isfinite(found.log_mole_fractions)
+    if not (found.solved.all() and (present == present[0]).all()):
         return None
     shape = (T_axis.size, p_axis.size)
     posed = pose_like(A, b, found.log_mole_fractions[0])
@@ -111,7 +122,7 @@ def _first_nodes(A: Floats, b: Amounts, g: Floats, T_axis: Axis, p_axis: Axis) -
     return Nodes(posed, b, T_axis, p_axis, log_x, np.log(found.amounts.sum(axis=1)).reshape(shape))
 
 
-def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nodes | None:
+def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis, beside: bool) -> Nodes | None:
     """Nodes of the next level, polished from estimates of the coarser one."""
     shape = (T_axis.size, p_axis.size)
     g = gibbs_RT[:, coarse.posed.kept]
@@ -137,6 +148,7 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nod
                 tile.components,
                 log_y.T[left],
                 total[left],
+                beside=beside,
             )
             if not found.solved.all():
                 return None
@@ -148,17 +160,27 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis) -> Nod
 
 def tiles(nodes: Nodes, n_T: int, n_p: int) -> Iterator[Tile]:
     """Cut a map into tiles of similar points; each gets components that suit the node nearest to its middle."""
+    components: Components | None = None
+    for T_part, p_part in rectangles(n_T, n_p):
+        components = components_at(nodes, T_part, p_part, components)
+        yield Tile(T_part, p_part, components)
+
+
+def rectangles(n_T: int, n_p: int) -> Iterator[tuple[slice, slice]]:
+    """The parts of a map that are solved as one, by ranges of temperature and pressure."""
     parts = -(-n_p // PRESSURES)
     edges = [n_p * part // parts for part in range(parts + 1)]
     height = max(1, CHUNK * parts // n_p)
     for p_first, p_last in pairwise(edges):
-        near_p = nodes.pressures.nearest_node((p_first + p_last - 1) // 2)
-        components: Components | None = None
         for T_first in range(0, n_T, height):
-            T_last = min(T_first + height, n_T)
-            near_T = nodes.temperatures.nearest_node((T_first + T_last - 1) // 2)
-            components = abundant_components(nodes.posed, nodes.log_x[near_T, near_p], components)
-            yield Tile(slice(T_first, T_last), slice(p_first, p_last), components)
+            yield slice(T_first, min(T_first + height, n_T)), slice(p_first, p_last)
+
+
+def components_at(nodes: Nodes, T_part: slice, p_part: slice, known: Components | None) -> Components:
+    """Components that suit the node nearest to the middle of a rectangle."""
+    near_T = nodes.temperatures.nearest_node((T_part.start + T_part.stop - 1) // 2)
+    near_p = nodes.pressures.nearest_node((p_part.start + p_part.stop - 1) // 2)
+    return abundant_components(nodes.posed, nodes.log_x[near_T, near_p], known)
 
 
 def estimate(nodes: Nodes, tile: Tile) -> tuple[Floats, Floats]:

@@ -118,7 +118,12 @@ def take_sample(cloud: Cloud) -> Sample | None:
     positive = (cloud.b > 0).all(axis=0)
     absent = (cloud.b == 0).all(axis=0)
     plain = positive | (absent & (cloud.A >= 0).all(axis=1))
-    if points < WORTHWHILE or not plain.all() or not np.isfinite(cloud.gibbs_RT).all() or cloud.condensed.any():
+    if (
+        points < WORTHWHILE
+        or not plain.all()
+        or not np.isfinite(cloud.gibbs_RT).all()
+        or cloud.condensed.any()
+    ):
         return None
     size = min(points // SAMPLE_PART, LARGEST_SAMPLE)
     chosen = np.sort(np.random.default_rng(0).choice(points, size, replace=False))

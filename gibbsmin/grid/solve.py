@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
 from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
+from gibbsmin.grid.phase_map import phase_tasks
 from gibbsmin.grid.scattered import Cloud, take_sample, tasks
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
@@ -64,7 +65,8 @@ def solve_grid(
     T, T_order = np.unique(temperature, return_index=True)
     p, p_order = np.unique(log_pressure, return_index=True)
     distinct = (len(T), len(p)) == shape[1:]
-    if condensed is not None or not (distinct and np.isfinite(gibbs_RT).all() and is_dense(T, p)):
+    is_map = distinct and np.isfinite(gibbs_RT).all() and is_dense(T, p)
+    if not is_map:
         feed, T_index, p_index = (index.ravel() for index in np.indices(shape))
         return solve_points(
             formula_matrix,
@@ -83,7 +85,11 @@ def solve_grid(
     out = GridSolution.blank(shape, *formula_matrix.shape)
     with _workers(threads) as pool:
         for feed, b in enumerate(element_amounts):
-            _run(pool, _map_tasks(formula_matrix, b, g, T, p, out.part(feed)), progress)
+            if condensed is None:
+                work = _map_tasks(formula_matrix, b, g, T, p, out.part(feed))
+            else:
+                work = _phase_map_tasks(formula_matrix, condensed, b, g, T, p, out.part(feed))
+            _run(pool, work, progress)
     if (np.diff(T_order) > 0).all() and (np.diff(p_order) > 0).all():
         return out
     return out.part((slice(None), *np.ix_(np.argsort(T_order), np.argsort(p_order))))
@@ -98,11 +104,36 @@ def _map_tasks(
         for tile in tiles(nodes, len(T), len(p)):
             yield lambda tile=tile: solve_tile(nodes, tile, g, p, out)  # type: ignore[misc]
         return
-    for row in range(len(T)):
+    yield from _rows(A, np.zeros(A.shape[1], dtype=bool), b, g, p, out)
 
-        def task(row: int = row) -> int:
-            out.fill(row, minimise(A, b, g[row] + p[:, None]))
-            return len(p)
+
+def _phase_map_tasks(
+    A: Floats,
+    condensed: NDArray[np.bool_],
+    b: Amounts,
+    g: Floats,
+    T: Floats,
+    p: Floats,
+    out: GridSolution,
+) -> Iterator[Callable[[], int]]:
+    """The same with condensed phases."""
+    work = phase_tasks(A, condensed, b, g, T, p, out)
+    yield from _rows(A, condensed, b, g, p, out) if work is None else work
+
+
+def _rows(
+    A: Floats, condensed: NDArray[np.bool_], b: Amounts, g: Floats, p: Floats, out: GridSolution
+) -> Iterator[Callable[[], int]]:
+    """Rows of temperature from nothing, some together."""
+    height = max(1, SMALLEST_TASK // len(p))
+    for first in range(0, len(g), height):
+
+        def task(rows: slice = slice(first, min(first + height, len(g)))) -> int:  # noqa: B008
+            c = g[rows][:, None, :] + p[:, None] * ~condensed
+            found = minimise(A, b, c.reshape(-1, c.shape[-1]), condensed=condensed)
+            row, column = np.divmod(np.arange(len(found.status)), len(p))
+            out.fill((row + rows.start, column), found)
+            return len(found.status)
 
         yield task
 
