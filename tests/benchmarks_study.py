@@ -125,7 +125,9 @@ def main() -> None:
             points = sum(pool.map(plain_maps, parts))
             plain = time.perf_counter() - begun
         plain_cpu = cpu_seconds() - before
-        print(f"plain maps: {plain:.2f} s, {plain_cpu:.2f} s of processor, {plain / points * 1e6:.3f} us a point")
+        print(
+            f"plain maps: {plain:.2f} s, {plain_cpu:.2f} s of processor, {plain / points * 1e6:.3f} us a point"
+        )
         memory = peak_memory()
         for composition, checks in (("key species", 0), ("key species", 1), ("all", 0)):
             file = write_study(folder, cases, side, composition, checks)

@@ -55,7 +55,8 @@ def test_cases_of_one_map_share_their_axes(tmp_path: Path) -> None:
 
 def test_rows_of_a_table_with_units_and_names(tmp_path: Path) -> None:
     (tmp_path / "wells.csv").write_text(
-        "case,steam,feed / raw gas / amounts / CO2 [kmol]\nEast,60,0.002\nWest,0.07 kmol,0.003\n", encoding="utf-8"
+        "case,steam,feed / raw gas / amounts / CO2 [kmol]\nEast,60,0.002\nWest,0.07 kmol,0.003\n",
+        encoding="utf-8",
     )
     study = study_of(tmp_path, "variations:\n  - rows of: wells.csv\n", HEAD.partition("  carbon dioxide")[0])
     assert [case.name for case in study.cases] == ["East", "West"]
@@ -103,7 +104,9 @@ def test_samples_fill_their_ranges_evenly_and_repeat_with_their_seed(method: str
     assert sorted(np.floor((first[:, 0] - 40) / 40 * 64).astype(int).tolist()) == list(range(64))
     assert first[:, 1].min() >= 3
     assert first[:, 1].max() <= 8
-    assert abs(first[:, 1].mean() - 5.07) < 0.05  # 5 + (phi(2) - phi(3)) / (Phi(3) - Phi(-2)), normal cut at -2, +3
+    assert (
+        abs(first[:, 1].mean() - 5.07) < 0.05
+    )  # 5 + (phi(2) - phi(3)) / (Phi(3) - Phi(-2)), normal cut at -2, +3
 
 
 def test_scenario_files_and_folders_as_they_are(tmp_path: Path) -> None:
@@ -180,7 +183,10 @@ def test_a_place_that_the_scenario_lacks(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("study", "fault"),
     [
-        ("title: Nothing\n", "study.yaml:1: there are no cases: give 'scenarios', or 'base' and 'variations'"),
+        (
+            "title: Nothing\n",
+            "study.yaml:1: there are no cases: give 'scenarios', or 'base' and 'variations'",
+        ),
         ("title: Half\nbase: base.yaml\n", "study.yaml:2: 'base' needs 'variations' beside it"),
         ("title: Gone\nscenarios: [gone.yaml]\n", "study.yaml:2: there is no scenario file 'gone.yaml'"),
         ("title: Twice\nscenarios: [base.yaml, base.yaml]\n", "there are two cases called 'base'"),
@@ -195,8 +201,14 @@ def test_files_that_make_no_study(study: str, fault: str, tmp_path: Path) -> Non
     ("given", "fault"),
     [
         ("{from: 2, to: 1}", "'from' (2) must be below 'to' (1)"),
-        ("{distribution: logarithmic, from: 0, to: 1}", "a logarithmic distribution starts above zero, not at 0"),
-        ("{distribution: triangular, from: 0, most likely: 3, to: 1}", "'most likely' (3) lies outside 0 to 1"),
+        (
+            "{distribution: logarithmic, from: 0, to: 1}",
+            "a logarithmic distribution starts above zero, not at 0",
+        ),
+        (
+            "{distribution: triangular, from: 0, most likely: 3, to: 1}",
+            "'most likely' (3) lies outside 0 to 1",
+        ),
         ("{distribution: uniform, from: 0, to: 1, mean: 2}", "a uniform distribution takes no 'mean'"),
         (
             "{distribution: normal, mean: 0, standard deviation: 1, from: 50, to: 60}",
@@ -205,7 +217,9 @@ def test_files_that_make_no_study(study: str, fault: str, tmp_path: Path) -> Non
     ],
 )
 def test_distributions_that_cannot_be(given: str, fault: str, tmp_path: Path) -> None:
-    sample = f"variations:\n  - sample: {{method: latin hypercube, size: 4, quantities: {{steam: {given}}}}}\n"
+    sample = (
+        f"variations:\n  - sample: {{method: latin hypercube, size: 4, quantities: {{steam: {given}}}}}\n"
+    )
     assert faults_of(tmp_path, HEAD + sample) == [f"study.yaml:7: {fault}"]
 
 
@@ -251,4 +265,4 @@ def test_case_digests_are_those_of_the_scenario_they_solve(tmp_path: Path) -> No
     data = parse(SCENARIO).data
     data["feed"]["steam"]["amounts"]["H2O"] = "40 mol"
     data["feed"]["raw gas"]["amounts"]["CO2"] = "1 mol"
-    assert parse_scenario(json.dumps(data, indent=1)).digest == study.cases[0].digest
+    assert parse_scenario(json.dumps(data)).digest == study.cases[0].digest

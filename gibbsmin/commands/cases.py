@@ -30,7 +30,9 @@ def add_cases(parser: argparse.ArgumentParser) -> None:
         "--most", type=int, default=DEFAULT_SHOWN, metavar="N", help="cases to list; default: %(default)s"
     )
     parser.add_argument("--csv", metavar="FILE", help="write the whole ranking as a table")
-    parser.add_argument("--figure", metavar="FILE", help="draw the comparison; the ending says how (png, svg)")
+    parser.add_argument(
+        "--figure", metavar="FILE", help="draw the comparison; the ending says how (png, svg)"
+    )
     parser.set_defaults(command=_cases)
 
 
@@ -68,7 +70,8 @@ def _listed(ranking: pd.DataFrame, by: str, most: int) -> list[str]:
         cells.append([str(i), *(f"{value:.6g}" if isinstance(value, float) else str(value) for value in row)])
     widths = [max(len(row[k]) for row in cells) for k in range(len(cells[0]))]
     lines = [
-        "  ".join(cell.rjust(width) for cell, width in zip(row, widths, strict=True)).rstrip() for row in cells
+        "  ".join(cell.rjust(width) for cell, width in zip(row, widths, strict=True)).rstrip()
+        for row in cells
     ]
     if len(ranked) > len(shown):
         lines.append(f"and {len(ranked) - len(shown)} more")

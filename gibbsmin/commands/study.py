@@ -15,7 +15,9 @@ if TYPE_CHECKING:
 
 def add_study(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
-        "study", metavar="FILE", help="a study file, or the name of a shipped example where no file is called so"
+        "study",
+        metavar="FILE",
+        help="a study file, or the name of a shipped example where no file is called so",
     )
     parser.add_argument(
         "--out",
@@ -23,7 +25,9 @@ def add_study(parser: argparse.ArgumentParser) -> None:
         help="where to keep it; what an earlier run of the same study has finished there is kept. "
         "Default: the study's name with -results, here",
     )
-    parser.add_argument("--dry-run", action="store_true", help="say what would be computed, and compute nothing")
+    parser.add_argument(
+        "--dry-run", action="store_true", help="say what would be computed, and compute nothing"
+    )
     place = parser.add_mutually_exclusive_group()
     place.add_argument(
         "--workers", type=_count, metavar="N", help="processes on this machine; default: its cores"
@@ -97,9 +101,13 @@ def _described(plan: Plan, folder: Path, workers: int | None) -> list[str]:
     ]
     for group in plan.groups:
         layout = group.layout
-        sizes = " x ".join(f"{size} {axis.title}" for axis, size in zip(layout.axes, layout.shape, strict=True))
+        sizes = " x ".join(
+            f"{size} {axis.title}" for axis, size in zip(layout.axes, layout.shape, strict=True)
+        )
         cases = len(plan.cases_of(group))
-        lines.append(f"  {group.path or 'all cases'}: {cases:,} cases of {sizes}, {len(layout.species)} gases")
+        lines.append(
+            f"  {group.path or 'all cases'}: {cases:,} cases of {sizes}, {len(layout.species)} gases"
+        )
         lines.append(f"    kept: {', '.join(array.name for array in group.arrays)}")
     lines += [
         f"varied: {', '.join(study.quantities) or 'nothing; the scenarios are taken as they are'}",

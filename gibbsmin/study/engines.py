@@ -22,7 +22,7 @@ from multiprocessing.connection import wait as wait_for
 from pathlib import Path
 from typing import Any, Protocol
 
-from gibbsmin.errors import MissingPackageError
+from gibbsmin.errors import MissingPackageError, StudyRefusedError
 from gibbsmin.study.model import Case
 from gibbsmin.study.solving import CaseSolver, Chunk, Group, Receipt, solve_case, solve_chunk
 from gibbsmin.study.trail import MOST_DEATHS
@@ -180,12 +180,18 @@ class Cluster:
 
 
 def connect(address: str) -> Any:
-    """A Dask client of the scheduler at an address. Raises MissingPackageError, OSError (no answer)."""
+    """A Dask client of the scheduler at an address.
+
+    Raises MissingPackageError, or StudyRefusedError where no scheduler answers.
+    """
     try:
         import distributed
     except ImportError as error:
         raise MissingPackageError("distributed", "running a study on a cluster") from error
-    client: Any = distributed.Client(address, timeout="10s", set_as_default=False)  # type: ignore[no-untyped-call]
+    try:
+        client: Any = distributed.Client(address, timeout="10s", set_as_default=False)  # type: ignore[no-untyped-call]
+    except (OSError, ValueError) as error:
+        raise StudyRefusedError(address, f"no Dask scheduler answers there ({error})") from error
     return client
 
 

@@ -147,7 +147,9 @@ def rank_cases(
     ]
     table = pd.DataFrame(rows)
     quantities = results.summary.set_index("case")[list(results.quantity_columns)]
-    table = table.join(quantities, on="case", rsuffix=" (varied)")
+    # An axis that is varied itself stands under the quantity's name already.
+    table = table.drop(columns=[name for name in quantities if name in table and name != by])
+    table = table.join(quantities.drop(columns=by, errors="ignore"), on="case")
     order = table[by].to_numpy() * (1.0 if smallest else -1.0)
     return table.iloc[np.argsort(order, kind="stable")].reset_index(drop=True)
 

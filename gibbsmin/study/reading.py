@@ -203,7 +203,7 @@ class _StudyReader:
                     except PlaceFault as fault:
                         where = f"{name!r} goes to '{BETWEEN_KEYS.join(place)}', but {fault}"
                         raise ScenarioError([Fault(where, variant.file, variant.line)]) from fault
-            text = json.dumps(data, indent=1, ensure_ascii=False)
+            text = json.dumps(data, ensure_ascii=False)
             # Positions stay those of the base file, where a reader looks for what a value belongs to.
             whole = Document(data, document.file, document.positions, document.key_positions, document.faults)
             return self._built(whole, text, home)

@@ -6,7 +6,8 @@ import errno
 import json
 import secrets
 import shutil
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from os import PathLike
 from pathlib import Path
@@ -101,7 +102,7 @@ def run_study(
     check_study_folder(home, study.title, overwrite)
     plan = plan_study(study)
     tell = tell or (lambda line: None)
-    with _folder(home), folder_lock(home):
+    with _client(cluster) as client, _folder(home), folder_lock(home):
         check_study_folder(home, study.title, overwrite)
         found = examine(plan, home)
         if words := found.in_words():
@@ -113,14 +114,9 @@ def run_study(
         described = write_metadata(plan, home)
         write_whole(home / STUDY_FILE, [study.text.encode()])
         receipts = dict(found.receipts)
-        client = connect(cluster) if isinstance(cluster, str) else cluster
-        try:
-            engine = _engine(client, workers, sum(chunk.points for _, chunk in left), len(left))
-            work = Work(home, secrets.token_hex(8), solver)
-            _compute(engine, left, work, receipts, len(plan.chunks), progress)
-        finally:
-            if client is not None and client is not cluster:
-                client.close()
+        engine = _engine(client, workers, sum(chunk.points for _, chunk in left), len(left))
+        work = Work(home, secrets.token_hex(8), solver)
+        _compute(engine, left, work, receipts, len(plan.chunks), progress)
         write_summary(plan, receipts, home)
         write_manifest(plan, receipts, described, home)
         forget_unfinished(plan, home, Found.complete(receipts, len(plan.chunks)))
@@ -167,6 +163,19 @@ def _engine(client: Any, workers: int | None, points: int, chunks: int) -> Engin
 def workers_for(plan: Plan, workers: int | None) -> int:
     """Processes that a run on this machine would use beside its own; 0 for none."""
     return _engine(None, workers, plan.points, len(plan.chunks)).workers
+
+
+@contextmanager
+def _client(cluster: Any) -> Iterator[Any]:
+    """The Dask client meant by an address (closed at the end) or by itself; None for this machine."""
+    if not isinstance(cluster, str):
+        yield cluster
+        return
+    client = connect(cluster)
+    try:
+        yield client
+    finally:
+        client.close()
 
 
 class _folder:  # noqa: N801  used like a function

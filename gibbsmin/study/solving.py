@@ -179,8 +179,10 @@ class _Block:
         cases, points = len(chunk.cases), layout.points
         self.layout = layout
         self.species = species_needed(group)
-        self._columns = list(self.species)
+        self._kept = list(layout.kept_species)
         self.amounts = np.full((cases, points, len(self.species)), np.nan)
+        # By species first, as the files have them.
+        self.fractions = np.full((cases, len(self._kept), points), np.nan)
         self.gas = np.full((cases, points), np.nan)
         self.gap = np.full((cases, points), np.nan)
         self.status = np.full((cases, points), NOT_COMPUTED, dtype=np.int8)
@@ -203,9 +205,14 @@ class _Block:
         amounts = solution.amounts.reshape(points, -1)
         gas = amounts.sum(axis=-1).reshape(feeds, -1)
         np.divide(gas, factor, out=self.gas[i].reshape(gas.shape))
-        wanted = amounts if len(self.species) == amounts.shape[-1] else amounts[:, self._columns]
-        wanted = wanted.reshape(feeds, -1, len(self.species))
-        np.divide(wanted, factor[..., None], out=self.amounts[i].reshape(wanted.shape))
+        by_species = amounts.T
+        with np.errstate(invalid="ignore", divide="ignore"):
+            for k, species in enumerate(self._kept):
+                np.divide(by_species[species], gas.ravel(), out=self.fractions[i, k])
+        for k, species in enumerate(self.species):
+            np.divide(
+                by_species[species].reshape(gas.shape), factor, out=self.amounts[i, :, k].reshape(gas.shape)
+            )
         gap = solution.gap.reshape(feeds, -1)
         np.divide(gap, factor, out=self.gap[i].reshape(gap.shape))
         self.status[i] = solution.status.ravel()
@@ -229,7 +236,7 @@ class _Block:
 
 
 def species_needed(group: Group) -> tuple[int, ...]:
-    """Indices of the species whose amounts a chunk must hold on to."""
+    """Indices of the species whose amounts the derived results of a chunk need."""
     layout = group.layout
     if group.further:
         return tuple(range(len(layout.species)))
@@ -241,8 +248,7 @@ def species_needed(group: Group) -> tuple[int, ...]:
         names.update((choice.product, choice.reactant))
     for ratio in wanted.ratios:
         names.update((*ratio.numerator, *ratio.denominator))
-    asked = {k for k, each in enumerate(layout.species) if each.name in names}
-    return tuple(sorted(asked.union(layout.kept_species)))
+    return tuple(k for k, each in enumerate(layout.species) if each.name in names)
 
 
 def _values(chunk: Chunk, block: _Block, table: ThermoTable) -> Iterator[tuple[str, NDArray[Any]]]:
@@ -254,7 +260,7 @@ def _values(chunk: Chunk, block: _Block, table: ThermoTable) -> Iterator[tuple[s
     yield from block.extra.items()
     with np.errstate(invalid="ignore", divide="ignore"):
         if layout.kept_species:
-            yield "mole_fraction", _kept_amounts(block, layout) / block.gas[..., None]
+            yield "mole_fraction", np.moveaxis(block.fractions, 1, 2)
         if group.derived:
             dataset = _block_dataset(chunk, block, table)
             found = derived_results(dataset, layout, group.further, table, _fed_enthalpy(chunk))
@@ -263,12 +269,6 @@ def _values(chunk: Chunk, block: _Block, table: ThermoTable) -> Iterator[tuple[s
                 values = array.transpose(*(dim for dim in dims if dim in array.dims)).values
                 sizes = [n if dim in array.dims else 1 for dim, n in zip(dims, shape, strict=True)]
                 yield name, np.broadcast_to(values.reshape(sizes), shape).reshape(len(chunk.cases), -1)
-
-
-def _kept_amounts(block: _Block, layout: Layout) -> FloatArray:
-    if block.species == layout.kept_species:
-        return block.amounts
-    return block.amounts[..., [block.species.index(k) for k in layout.kept_species]]
 
 
 def derived_results(
