@@ -213,13 +213,15 @@ class _Reader:
         reference = float(T.si)
         if way == "constant heat capacity at":
             return self._tried(lambda: ConstantHeatCapacity.from_data(reaction, reference, name=name), place)
-        given = [key for key in ("K", "enthalpy") if key in entry]
+        given = [key for key in ("K", "enthalpy") if (*path, key) in self.reading.document.positions]
         if not given:
             return self._tried(lambda: ConstantEnthalpy.from_data(reaction, reference, name=name), place)
         if len(given) == 1:
             self.reading.fault(
                 path, f"{given[0]!r} is given alone; give K and enthalpy, or neither", of_key=True
             )
+            return None
+        if not {"K", "enthalpy"} <= entry.keys():  # a fault of structure, told already
             return None
         ln_K = self._constants([entry["K"]], [reference], reaction, unit, (*path, "K"))
         enthalpy = self._energy(entry["enthalpy"], (*path, "enthalpy"))
