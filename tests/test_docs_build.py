@@ -13,6 +13,8 @@ from types import ModuleType
 import pytest
 import yaml
 
+from tests.report_cases import needed
+
 ROOT = Path(__file__).parents[1]
 DOCS = ROOT / "gibbsmin" / "docs"
 
@@ -30,7 +32,7 @@ def module(name: str) -> ModuleType:
 @pytest.fixture(scope="module")
 def built(tmp_path_factory: pytest.TempPathFactory) -> Path:
     for package in ("sphinx", "myst_parser", "furo", "latex2mathml"):
-        pytest.importorskip(package, reason=f"{package} is not installed (extra 'docs')")
+        needed(package, "docs")
     folder = tmp_path_factory.mktemp("pages")
     command = [
         sys.executable,

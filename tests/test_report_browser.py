@@ -15,9 +15,10 @@ from typing import Any
 
 import numpy as np
 import pytest
+import xarray as xr
 
 from gibbsmin.outcome import Outcome
-from gibbsmin.report import write_report
+from gibbsmin.report import REPORT_FILE, write_report
 from gibbsmin.report.packing import RELATIVE_ERROR
 from tests.report_cases import (
     HOSTILE,
@@ -26,6 +27,7 @@ from tests.report_cases import (
     hostile_outcome,
     large_outcome,
     line_outcome,
+    needed,
     point_outcome,
     reactions_outcome,
     small_outcome,
@@ -86,8 +88,17 @@ RESTORE = """() => {
 
 
 @pytest.fixture(scope="module")
-def shared_page(browser: Any, folder: Path) -> Iterator[OpenedPage]:
-    page = OpenedPage(browser, write_report(small_outcome(), folder / "shared.html"))
+def saved(folder: Path) -> Path:
+    """A folder of results as a run leaves it, report included."""
+    return small_outcome().save(
+        folder / "ostrand-results",
+        further_files=lambda draft: write_report(small_outcome(), draft / REPORT_FILE),
+    )
+
+
+@pytest.fixture(scope="module")
+def shared_page(browser: Any, saved: Path) -> Iterator[OpenedPage]:
+    page = OpenedPage(browser, saved / REPORT_FILE)
     page.run(REMEMBER)
     yield page
     page.close()
@@ -163,11 +174,14 @@ def test_charts_draw_and_start_with_the_middle_of_the_map(small: OpenedPage) -> 
 
 
 @pytest.mark.parametrize(("column", "row"), [(1, 1), (4, 5), (7, 3)])
-def test_hover_shows_the_full_composition_of_that_point(small: OpenedPage, column: int, row: int) -> None:
-    outcome, page = small_outcome(), small
+def test_hover_shows_the_full_composition_of_that_point(
+    small: OpenedPage, saved: Path, column: int, row: int
+) -> None:
+    page = small
     page.page.mouse.move(*pixel_of(page, column, row))
     page.page.wait_for_selector("#hover-card:not([hidden])")
-    point = outcome.dataset.isel(steam_to_carbon=1, temperature=column, pressure=row)
+    with xr.open_dataset(saved / "results.nc") as dataset:
+        point = dataset.isel(steam_to_carbon=1, temperature=column, pressure=row).load()
     expected = {
         str(name): float(point["mole_fraction"].sel(species=name)) for name in point["species"].values
     }
@@ -199,6 +213,31 @@ def test_a_click_moves_the_mark_and_the_lines_follow(small: OpenedPage) -> None:
     np.testing.assert_allclose(values, line.values, rtol=PACKED)
     assert page.page.input_value("#slider-pressure") == "5"
     assert page.page.inner_text("#slider-temperature-value") == "600 °C"
+
+
+def test_dragging_zooms_and_the_button_shows_the_whole_range_again(small: OpenedPage) -> None:
+    page = small
+    span = "() => document.getElementById('map').layout.xaxis.range"
+    whole = page.run(span)
+    page.page.mouse.move(*pixel_of(page, 2, 2))
+    page.page.mouse.down()
+    page.page.mouse.move(*pixel_of(page, 6, 5), steps=4)
+    page.page.mouse.up()
+    page.settle()
+    assert whole[0] < page.run(span)[0] < page.run(span)[1] < whole[1]
+    page.page.click("button[data-chart='map'][data-do='reset']")
+    page.settle()
+    assert page.run(span) == whole
+    page.page.mouse.move(*pixel_of(page, 3, 3))  # the new chart answers the pointer as well
+    page.page.wait_for_selector("#hover-card:not([hidden])")
+
+
+def test_a_picture_can_be_saved(small: OpenedPage, tmp_path: Path) -> None:
+    with small.page.expect_download() as download:
+        small.page.click("button[data-chart='cut'][data-do='save']")
+    assert download.value.suggested_filename == "cut-chart.svg"
+    download.value.save_as(tmp_path / "cut.svg")
+    assert "CH₄" in (tmp_path / "cut.svg").read_text(encoding="utf-8")
 
 
 @pytest.mark.parametrize(
@@ -415,9 +454,7 @@ def test_hostile_text_stays_text(opened: Opener) -> None:
 
 @pytest.mark.parametrize("scheme", ["light", "dark"])
 def test_no_serious_finding_of_axe(opened: Opener, scheme: str) -> None:
-    axe = pytest.importorskip(
-        "axe_playwright_python.sync_playwright", reason="axe-playwright-python is not installed"
-    )
+    axe = needed("axe_playwright_python.sync_playwright", "test")
     page = opened(flawed_outcome(), color_scheme=scheme)
     for details in page.page.locator("details").all():
         details.evaluate("(each) => { each.open = true; }")

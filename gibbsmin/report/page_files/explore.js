@@ -172,8 +172,7 @@ function connectButtons() {
         Plotly.downloadImage(chart, { format: 'svg', filename: `${button.dataset.chart}-chart` });
         return;
       }
-      chart.layout.uirevision = null; // forget what was zoomed into
-      Plotly.purge(chart);
+      Plotly.purge(chart); // and with it what was zoomed into
       drawNow();
       if (button.dataset.chart === 'map') connectMap();
     });
