@@ -221,10 +221,11 @@ def _take_valid(
     feed = nodes.feed(own_tile.components)
     polished = polish(feed, points, log_y, log_total, longest=SETTLED, settled=SETTLED)
     potentials = np.empty((len(problem.components.columns), len(log_total)))
-    reduced = feed.to_potentials @ (polished.log_y + points.potentials(feed.components))
-    potentials[problem.gas_rows] = each.to_component_potentials @ reduced
     potentials[problem.phase_rows] = np.repeat(g[:, each.phases].T, len(lnp), axis=1)
-    good, total_amount, held, gap, residual = _judged(each, polished, points, potentials, g, lnp)
+    with np.errstate(all="ignore"):  # points that are not usable may hold anything
+        reduced = feed.to_potentials @ (polished.log_y + points.potentials(feed.components))
+        potentials[problem.gas_rows] = each.to_component_potentials @ reduced
+        good, total_amount, held, gap, residual = _judged(each, polished, points, potentials, g, lnp)
     good &= left
     if not good.any():
         return

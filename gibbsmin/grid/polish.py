@@ -276,25 +276,26 @@ def prove(polished: Polished, points: Points) -> Proved:
     feed = polished.feed
     components, posed = feed.components, feed.posed
     r = len(feed.m)
-    total_amount = np.exp(polished.log_total)
-    table = feed.to_balances @ polished.y
-    total = table[0]
-    potentials = polished.log_y + points.potentials(components)
-    terms = (1.0 + np.abs(components.C).sum(axis=0).max()) * points.largest_potential()
-    terms += components.largest @ np.abs(polished.log_y)
-    uncertainty = polished.second_reach**2 + ROUNDING * terms
-    missed = total_amount * (feed.component_formulas @ table[1 : 1 + r]) - feed.b
-    turnover = np.broadcast_to(np.maximum(np.abs(feed.b), TINY), missed.shape).copy()
-    turnover[feed.signed_rows] = np.maximum(total_amount * table[1 + r :], TINY)
-    residual = (np.abs(missed) / turnover).max(axis=0)
-    pi = np.full(missed.shape, np.nan)
-    pi[posed.A[:, posed.kept].any(axis=1)] = 0.0
-    pi[posed.system.rows] = feed.to_potentials @ potentials
-    log_sum = np.log(total)
-    above_dual = total_amount * total * (uncertainty - log_sum)
-    excess = np.maximum(log_sum + uncertainty, 0.0)
-    imbalance = np.abs(missed[posed.system.rows] * pi[posed.system.rows]).sum(axis=0)
-    gap = np.maximum(above_dual + imbalance + excess * feed.shift_reach, 0.0)
-    good = polished.usable & (polished.first_reach * polished.second_reach < LAST_ERROR)
-    good &= (residual <= BALANCE_TOLERANCE) & (gap <= GAP_TOLERANCE * np.abs(feed.b).sum(axis=0))
+    with np.errstate(all="ignore"):  # points that are not usable may hold anything
+        total_amount = np.exp(polished.log_total)
+        table = feed.to_balances @ polished.y
+        total = table[0]
+        potentials = polished.log_y + points.potentials(components)
+        terms = (1.0 + np.abs(components.C).sum(axis=0).max()) * points.largest_potential()
+        terms += components.largest @ np.abs(polished.log_y)
+        uncertainty = polished.second_reach**2 + ROUNDING * terms
+        missed = total_amount * (feed.component_formulas @ table[1 : 1 + r]) - feed.b
+        turnover = np.broadcast_to(np.maximum(np.abs(feed.b), TINY), missed.shape).copy()
+        turnover[feed.signed_rows] = np.maximum(total_amount * table[1 + r :], TINY)
+        residual = (np.abs(missed) / turnover).max(axis=0)
+        pi = np.full(missed.shape, np.nan)
+        pi[posed.A[:, posed.kept].any(axis=1)] = 0.0
+        pi[posed.system.rows] = feed.to_potentials @ potentials
+        log_sum = np.log(total)
+        above_dual = total_amount * total * (uncertainty - log_sum)
+        excess = np.maximum(log_sum + uncertainty, 0.0)
+        imbalance = np.abs(missed[posed.system.rows] * pi[posed.system.rows]).sum(axis=0)
+        gap = np.maximum(above_dual + imbalance + excess * feed.shift_reach, 0.0)
+        good = polished.usable & (polished.first_reach * polished.second_reach < LAST_ERROR)
+        good &= (residual <= BALANCE_TOLERANCE) & (gap <= GAP_TOLERANCE * np.abs(feed.b).sum(axis=0))
     return Proved(total_amount, pi, gap, residual, good)

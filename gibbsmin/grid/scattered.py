@@ -13,7 +13,7 @@ from gibbsmin.grid.polish import SETTLED, Feed, Scattered, polish, prove
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Amounts, Components
-from gibbsmin.minimiser.nearby import abundant_components, minimise_near, pose_like
+from gibbsmin.minimiser.nearby import abundant_components, pose_like
 from gibbsmin.minimiser.posing import Posed
 
 WORTHWHILE = 1000
@@ -31,7 +31,10 @@ LONGEST = 1.0
 MOST_STEPS = 6
 
 STRAGGLERS = 0.03
-"""Part of a chunk that finishes on its own rather than make the others wait."""
+"""Part of a chunk that is left over rather than make the others wait."""
+
+LEFT_OVER = np.int8(-1)
+"""Mark of points that are still to be solved, from nothing: together, that costs less than each from its neighbour."""
 
 NEIGHBOURS = 16
 """Sampled points that a slope rests on."""
@@ -226,11 +229,10 @@ def _solve_chunk(
     out.gap[index] = proved.gap
     out.balance_residual[index] = proved.balance_residual
     out.iterations[index] = polished.steps
-    out.status[index] = Status.SOLVED
-    left = np.flatnonzero(~proved.good)
-    if left.size:
-        c = cloud.potentials(index[left])[:, posed.kept]
-        out.fill(
-            index[left], minimise_near(posed, b[left], c, components, start[:-1, left].T, start[-1, left])
-        )
-    return len(index)
+    out.status[index] = np.where(proved.good, Status.SOLVED, LEFT_OVER)
+    return int(proved.good.sum())
+
+
+def left_over(out: GridSolution) -> Indices:
+    """Points that polishing did not settle."""
+    return np.flatnonzero(out.status == LEFT_OVER)

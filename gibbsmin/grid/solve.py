@@ -10,15 +10,16 @@ import os
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
+from functools import cache
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from threadpoolctl import threadpool_limits
+from threadpoolctl import ThreadpoolController
 
 from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
 from gibbsmin.grid.phase_map import phase_tasks
-from gibbsmin.grid.scattered import Cloud, take_sample, tasks
+from gibbsmin.grid.scattered import Cloud, left_over, take_sample, tasks
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 
@@ -83,7 +84,7 @@ def solve_grid(
         ).reshaped(shape)
     g = gibbs_RT[T_order]
     out = GridSolution.blank(shape, *formula_matrix.shape)
-    with _workers(threads) as pool:
+    with _workers(threads, out.status.size) as pool:
         for feed, b in enumerate(element_amounts):
             if condensed is None:
                 work = _map_tasks(formula_matrix, b, g, T, p, out.part(feed))
@@ -168,19 +169,21 @@ def solve_points(
         np.zeros(formula_matrix.shape[1], dtype=bool) if condensed is None else condensed,
     )
     out = GridSolution.blank((len(feed_index),), *formula_matrix.shape)
-    with _workers(threads) as pool:
+    with _workers(threads, len(feed_index)) as pool:
         sample = take_sample(cloud)
-        work = _from_nothing(cloud, out) if sample is None else tasks(cloud, sample, out)
-        _run(pool, work, progress)
+        rest = np.arange(len(feed_index))
+        if sample is not None:
+            _run(pool, tasks(cloud, sample, out), progress)
+            rest = left_over(out)
+        _run(pool, _from_nothing(cloud, rest, out), progress)
     return out
 
 
-def _from_nothing(cloud: Cloud, out: GridSolution) -> Iterator[Callable[[], int]]:
-    points = len(cloud.feed)
-    size = int(np.clip(points // TASKS, SMALLEST_TASK, LARGEST_TASK))
-    for first in range(0, points, size):
+def _from_nothing(cloud: Cloud, points: Indices, out: GridSolution) -> Iterator[Callable[[], int]]:
+    size = int(np.clip(len(points) // TASKS, SMALLEST_TASK, LARGEST_TASK))
+    for first in range(0, len(points), size):
 
-        def task(index: Indices = np.arange(first, min(first + size, points))) -> int:  # noqa: B008
+        def task(index: Indices = points[first : first + size]) -> int:
             b, c = cloud.b[cloud.feed[index]], cloud.potentials(index)
             out.fill(index, minimise(cloud.A, b, c, condensed=cloud.condensed))
             return len(index)
@@ -188,12 +191,18 @@ def _from_nothing(cloud: Cloud, out: GridSolution) -> Iterator[Callable[[], int]
         yield task
 
 
+@cache
+def _linear_algebra() -> ThreadpoolController:
+    """Finding the libraries once is enough: it costs as much as solving a point."""
+    return ThreadpoolController()
+
+
 @contextmanager
-def _workers(threads: int | None) -> Iterator[ThreadPoolExecutor | None]:
-    """A pool of threads, or None for one thread, while the linear algebra keeps to one thread."""
+def _workers(threads: int | None, points: int) -> Iterator[ThreadPoolExecutor | None]:
+    """A pool of threads, or None where one is enough, while the linear algebra keeps to one thread."""
     count = threads or available_cores()
-    with threadpool_limits(1, user_api="blas"):
-        if count == 1:
+    with _linear_algebra().limit(limits=1, user_api="blas"):
+        if count == 1 or points < SMALLEST_TASK:
             yield None
         else:
             with ThreadPoolExecutor(count) as pool:

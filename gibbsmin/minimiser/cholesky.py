@@ -8,10 +8,11 @@ is quicker.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 
-from gibbsmin.minimiser.components import Floats
+from gibbsmin.minimiser.components import Floats, Indices
 
 FEW = 12
 """Below this many systems the library's solver costs less than the loop."""
@@ -75,7 +76,7 @@ def solve_packed(packed: Floats, first: Floats, second: Floats) -> tuple[Floats,
         return factors.solve(first), factors.solve(second)
     scale = 1.0 / np.sqrt(diagonal(packed))
     matrix = np.empty((r, r, n))
-    rows, columns = np.tril_indices(r)
+    rows, columns = _lower_triangle(r)
     matrix[rows, columns] = packed
     matrix[columns, rows] = packed
     matrix *= scale[:, None] * scale
@@ -83,6 +84,11 @@ def solve_packed(packed: Floats, first: Floats, second: Floats) -> tuple[Floats,
     solution = np.linalg.solve(matrix.transpose(2, 0, 1), right.transpose(2, 0, 1)).transpose(1, 2, 0)
     solution = solution * scale[:, None]
     return solution[:, 0], solution[:, 1]
+
+
+@cache
+def _lower_triangle(size: int) -> tuple[Indices, Indices]:
+    return np.tril_indices(size)
 
 
 def diagonal(packed: Floats) -> Floats:

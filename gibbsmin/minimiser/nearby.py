@@ -24,7 +24,14 @@ def abundant_components(posed: Posed, log_x: Floats, known: Components | None = 
 
 
 def minimise_near(
-    posed: Posed, b: Amounts, c: Floats, components: Components, log_y: Floats, log_total: Floats
+    posed: Posed,
+    b: Amounts,
+    c: Floats,
+    components: Components,
+    log_y: Floats,
+    log_total: Floats,
+    *,
+    beside: bool = False,
 ) -> Minimum:
     """Solve points from estimates of their own.
 
@@ -36,6 +43,7 @@ def minimise_near(
     components : of the estimates.
     log_y : (n, r) ln mole fractions of the components.
     log_total : (n,) ln(N / mol).
+    beside : whether the gas is one beside condensed phases, as phases.py poses it.
 
     Returns
     -------
@@ -48,5 +56,5 @@ def minimise_near(
     batch = Batch.begin(components, points, m, log_y.copy(), np.exp(log_total), c)
     answers = Answers.blank(len(c), *posed.A.shape)
     for finished in minimise_batches([batch], independent, c):
-        posed.finish(finished, of_each, c, points, answers)
+        posed.finish(finished, of_each, c, points, answers, beside=beside)
     return answers.minimum()
