@@ -16,6 +16,7 @@ import gibbsmin
 from gibbsmin.errors import StudyRefusedError
 from gibbsmin.study import StudyResults, load_study, open_study, run_study
 from gibbsmin.study.planning import plan_study
+from gibbsmin.study.running import workers_for
 from gibbsmin.study.shards import ArrayPlan, shard
 from tests.study_cases import SCENARIO, STUDY, write_study
 
@@ -275,6 +276,21 @@ def test_memory_and_disk_are_told_before_the_start(results: StudyResults) -> Non
     )
     assert stored <= plan.disk_bytes
     assert plan.memory_bytes(2) > plan.memory_bytes(0)
+
+
+def test_a_study_that_does_not_fit_the_memory_is_refused_with_the_numbers(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    plan = plan_study(load_study(write_study(tmp_path)))
+    monkeypatch.setattr("gibbsmin.study.running.physical_memory", lambda: 4_000_000_000)
+    assert workers_for(plan, 64, plan.chunks) == 6  # as asked, but no more than chunks
+    monkeypatch.setattr("gibbsmin.study.running.SMALL_STUDY", 0)
+    monkeypatch.setattr("gibbsmin.study.running.available_cores", lambda: 64)
+    monkeypatch.setattr("gibbsmin.study.running.physical_memory", lambda: plan.memory_bytes(3))
+    assert workers_for(plan, None, plan.chunks) == 3
+    monkeypatch.setattr("gibbsmin.study.running.physical_memory", lambda: 100_000_000)
+    with pytest.raises(StudyRefusedError, match=r"takes 0\.24 GB of memory, and this machine has 0\.1 GB"):
+        run_study(tmp_path / "study.yaml", tmp_path / "out")
 
 
 @pytest.mark.parametrize("content", [None, "{}", "no json"])

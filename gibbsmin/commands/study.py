@@ -90,7 +90,7 @@ def _described(plan: Plan, folder: Path, workers: int | None) -> list[str]:
     from gibbsmin.study.store import examine
 
     study = plan.study
-    processes = workers_for(plan, workers)
+    processes = workers_for(plan, workers, plan.chunks)
     existing = next(place for place in (folder, *folder.parents) if place.exists())
     free = shutil.disk_usage(existing).free
     found = examine(plan, folder)

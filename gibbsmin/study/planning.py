@@ -18,7 +18,14 @@ from gibbsmin.outcome.wanted import named_results, variable_name
 from gibbsmin.solving import Conditions, solve, thermo_table
 from gibbsmin.study.model import Case, Layout, Study
 from gibbsmin.study.shards import ArrayPlan, cases_per_part
-from gibbsmin.study.solving import NOT_COMPUTED, Chunk, Group, derived_results, feed_atoms
+from gibbsmin.study.solving import (
+    NOT_COMPUTED,
+    Chunk,
+    Group,
+    derived_results,
+    feed_atoms,
+    species_needed,
+)
 
 FloatArray = NDArray[np.float64]
 
@@ -26,12 +33,12 @@ FORM = 1
 """Of the store; raised when the meaning of its files changes, so that older chunks are computed again."""
 
 VALUES_PER_CHUNK = 5_000_000
-"""Doubles of the full composition of a chunk: 40 MB, of which a worker holds some three copies."""
+"""Doubles of the full composition of a chunk: 40 MB, more than a worker holds on to unless all of it is kept."""
 
 MOST_CASES_PER_CHUNK = 16
 """So that small studies still spread over cores, and little is lost when a run is cut off."""
 
-BYTES_OF_A_PROCESS = 260_000_000
+BYTES_OF_A_PROCESS = 240_000_000
 """Measured: resident memory of a worker with all its libraries, Cantera among them, before the first chunk."""
 
 BYTES_PER_CASE = 4_000
@@ -68,15 +75,21 @@ class Plan:
 
     @property
     def worker_bytes(self) -> int:
-        """Memory of a worker with the largest chunk: its block, the solver's map of one case, what is written."""
+        """Memory of a worker with the largest chunk.
+
+        What it holds on to of the chunk, the solver's map of one case twice over, results being derived, and files
+        being written.
+        """
         largest = 0
         for chunk in self.chunks:
             layout = chunk.group.layout
-            width = len(layout.species) + len(thermo_table(layout.species, layout.extrapolate).elements) + 4
-            block = chunk.points * width * 8
-            one_case = 2 * layout.points * width * 8
-            derived = 3 * len(chunk.group.derived) * chunk.points * 8
-            largest = max(largest, block + one_case + derived + 2 * chunk.bytes)
+            elements = len({name for each in layout.feed_species for name in each.composition}) + 1
+            held = len(species_needed(chunk.group)) + len(layout.kept_species) + 3 + elements
+            if chunk.group.further:
+                held += len(layout.species)
+            block = chunk.points * (held + 4 * len(chunk.group.derived)) * 8
+            one_case = 2 * layout.points * (len(layout.species) + elements + 4) * 8
+            largest = max(largest, block + one_case + chunk.bytes)
         return BYTES_OF_A_PROCESS + largest
 
     def memory_bytes(self, workers: int) -> int:

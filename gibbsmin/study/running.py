@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import errno
 import json
+import os
 import secrets
 import shutil
 from collections.abc import Callable, Iterator, Sequence
@@ -110,11 +111,12 @@ def run_study(
         forget_unfinished(plan, home, found)
         left = [(i, chunk) for i, chunk in enumerate(plan.chunks) if i not in found.receipts]
         _check_disk(home, [chunk for _, chunk in left])
+        workers = workers if client is not None else workers_for(plan, workers, [chunk for _, chunk in left])
         _report_finished(plan, found, progress)
         described = write_metadata(plan, home)
         write_whole(home / STUDY_FILE, [study.text.encode()])
         receipts = dict(found.receipts)
-        engine = _engine(client, workers, sum(chunk.points for _, chunk in left), len(left))
+        engine = Cluster(client) if client is not None else Processes(workers) if workers else ThisProcess()
         work = Work(home, secrets.token_hex(8), solver)
         _compute(engine, left, work, receipts, len(plan.chunks), progress)
         write_summary(plan, receipts, home)
@@ -151,18 +153,34 @@ def _compute(
         raise StudyStoppedError(reason, len(receipts), chunks) from error
 
 
-def _engine(client: Any, workers: int | None, points: int, chunks: int) -> Engine:
-    if client is not None:
-        return Cluster(client)
-    if workers is None:
-        workers = 1 if points < SMALL_STUDY else available_cores()
-    workers = min(workers, chunks)
-    return Processes(workers) if workers > 1 else ThisProcess()
+def workers_for(plan: Plan, wanted: int | None, chunks: Sequence[Chunk]) -> int:
+    """Processes of this machine beside its own that compute these chunks; 0 for none.
+
+    As many as are wanted, or as it has cores and memory for.
+
+    Raises StudyRefusedError, with the numbers, when not even one chunk fits into the memory.
+    """
+    memory = physical_memory()
+    if memory is not None and plan.memory_bytes(0) > memory:
+        raise StudyRefusedError(
+            plan.study.title,
+            f"the largest chunk takes {plan.memory_bytes(0) / 1e9:.3g} GB of memory, and this machine has "
+            f"{memory / 1e9:.3g} GB; make its maps smaller, or its further axes into cases",
+        )
+    if wanted is None:
+        wanted = 1 if sum(chunk.points for chunk in chunks) < SMALL_STUDY else available_cores()
+        while memory is not None and wanted > 1 and plan.memory_bytes(wanted) > memory:
+            wanted -= 1
+    count = min(wanted, len(chunks))
+    return count if count > 1 else 0
 
 
-def workers_for(plan: Plan, workers: int | None) -> int:
-    """Processes that a run on this machine would use beside its own; 0 for none."""
-    return _engine(None, workers, plan.points, len(plan.chunks)).workers
+def physical_memory() -> int | None:
+    """Bytes of memory of this machine, or None where the system does not say."""
+    try:
+        return os.sysconf("SC_PHYS_PAGES") * os.sysconf("SC_PAGE_SIZE")
+    except (AttributeError, ValueError, OSError):
+        return None
 
 
 @contextmanager

@@ -23,6 +23,7 @@ from gibbsmin.grid import GridSolution, solve_grid
 from gibbsmin.outcome import composition, energy
 from gibbsmin.outcome.wanted import named_results
 from gibbsmin.solving import composition_matrix, thermo_table
+from gibbsmin.study.rows import checked_points, largest, rows_of
 from gibbsmin.study.shards import ArrayPlan, shard, write_whole
 from gibbsmin.study.trail import Trail
 
@@ -145,7 +146,7 @@ def solve_chunk(
     table = thermo_table(layout.species, layout.extrapolate)
     trail = Trail.of(home, chunk.group.path, chunk.number, run_name)
     deadly = trail.deadly_cases()
-    block = _Block(chunk, table)
+    block = Block(chunk, table)
     with trail:
         for i, case in enumerate(chunk.cases):
             begun = time.perf_counter()
@@ -160,7 +161,7 @@ def solve_chunk(
             block.seconds[i] = time.perf_counter() - begun
         trail.begin(None)
         values = dict(_values(chunk, block, table))
-    rows = _rows(chunk, block, values, table)
+    rows = rows_of(chunk, block, values, table)
     files = {}
     for array in group.arrays:
         path = "/".join(filter(None, [STORE, group.path, array.file_of(chunk.number)]))
@@ -171,7 +172,7 @@ def solve_chunk(
     return receipt
 
 
-class _Block:
+class Block:
     """Solver results of the cases of a chunk, (B, points, ...), reduced to what is stored or derived from."""
 
     def __init__(self, chunk: Chunk, table: ThermoTable) -> None:
@@ -218,8 +219,8 @@ class _Block:
         self.status[i] = solution.status.ravel()
         balance = solution.balance_residual.ravel()
         with np.errstate(invalid="ignore", divide="ignore"):
-            self.largest_gap[i] = _largest(gap / gas)
-        self.largest_balance[i] = _largest(balance)
+            self.largest_gap[i] = largest(gap / gas)
+        self.largest_balance[i] = largest(balance)
         further: dict[str, NDArray[Any]] = {
             "element_potential": solution.element_potentials,
             "balance_residual": balance,
@@ -227,7 +228,7 @@ class _Block:
         }
         for name, values in self.extra.items():
             values[i] = further[name].reshape(values.shape[1:])
-        for point in _checked_points(case, points, self._checked_points):
+        for point in checked_points(case, points, self._checked_points):
             if self.status[i, point] == 0:
                 self.checked.append((i, int(point), amounts[point] / gas.ravel()[point]))
 
@@ -251,7 +252,7 @@ def species_needed(group: Group) -> tuple[int, ...]:
     return tuple(k for k, each in enumerate(layout.species) if each.name in names)
 
 
-def _values(chunk: Chunk, block: _Block, table: ThermoTable) -> Iterator[tuple[str, NDArray[Any]]]:
+def _values(chunk: Chunk, block: Block, table: ThermoTable) -> Iterator[tuple[str, NDArray[Any]]]:
     """Every stored variable, (B, points) or (B, points, extras)."""
     group, layout = chunk.group, chunk.group.layout
     yield "gas_amount", block.gas
@@ -293,7 +294,7 @@ def _axis_dims(layout: Layout) -> tuple[str, ...]:
     return tuple(f"{axis.name} point" for axis in layout.axes)
 
 
-def _block_dataset(chunk: Chunk, block: _Block, table: ThermoTable) -> xr.Dataset:
+def _block_dataset(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset:
     """As much of the data set of `gibbsmin.equilibrium` as derived results need, with a dimension "case" more."""
     layout, cases = chunk.group.layout, chunk.cases
     axes = _axis_dims(layout)
@@ -336,115 +337,3 @@ def _fed_enthalpy(chunk: Chunk) -> xr.DataArray | None:
     if len(parts) < len(chunk.cases):
         return None
     return xr.DataArray(np.stack(parts), dims=("case", *_axis_dims(chunk.group.layout)[:-2]))
-
-
-# --- one row a case
-
-
-def _rows(
-    chunk: Chunk, block: _Block, values: Mapping[str, NDArray[Any]], table: ThermoTable
-) -> Iterator[dict[str, Any]]:
-    layout = chunk.group.layout
-    unsolved = (block.status != 0).sum(axis=1)
-    checks = _cross_checks(chunk, block, table)
-    ranges: dict[str, NDArray[Any]] = {}
-    if "mole_fraction" in values:
-        names = [layout.species[k].name for k in layout.kept_species]
-        for name in layout.results.key_species:
-            ranges[f"mole fraction {name}"] = values["mole_fraction"][..., names.index(name)]
-    ranges.update({name: values[name] for name in chunk.group.derived})
-    for i, case in enumerate(chunk.cases):
-        failure = block.failures.get(i, "")
-        bad = int(unsolved[i])
-        row: dict[str, Any] = {
-            "number": case.number,
-            "case": case.name,
-            "title": case.title,
-            "status": "failed" if failure else "solved" if bad == 0 else "partly solved",
-            "failure": failure,
-            "points": layout.points,
-            "unsolved points": bad,
-            "largest gap per mol of gas": _or_none(block.largest_gap[i]),
-            "largest balance residual": _or_none(block.largest_balance[i]),
-            "data extrapolated": bool(layout.extrapolate and table.extrapolated(case.temperature).any()),
-            **checks[i],
-            "seconds": round(float(block.seconds[i]), 6),
-        }
-        for name, array in ranges.items():
-            row[f"{name} lowest"] = _or_none(-_largest(-array[i]))
-            row[f"{name} highest"] = _or_none(_largest(array[i]))
-        yield row
-
-
-def _largest(values: NDArray[Any]) -> float:
-    """Largest finite value, NaN if there is none."""
-    largest = values.max()
-    if np.isfinite(largest):
-        return float(largest)
-    finite = values[np.isfinite(values)]
-    return float(finite.max()) if finite.size else float("nan")
-
-
-def _or_none(value: float) -> float | None:
-    return float(value) if np.isfinite(value) else None
-
-
-def _cross_checks(chunk: Chunk, block: _Block, table: ThermoTable) -> list[dict[str, Any]]:
-    """For each case: how many points were solved again, and how far the answers differ."""
-    found: list[list[Any]] = [[] for _ in chunk.cases]
-    if block.checked:
-        from gibbsmin.comparison import Comparison
-
-        points = _chosen_points(chunk, block, table)
-        compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
-        for k, (i, _, _) in enumerate(block.checked):
-            found[i].append(compare.at((k,)))
-    statuses = {
-        "confirmed": "confirmed",
-        "differing": "differs",
-        "no independent answer": "no independent answer",
-    }
-    return [
-        {
-            "checked points": len(points),
-            **{name: sum(point.status == status for point in points) for name, status in statuses.items()},
-            "largest relative difference": _or_none(
-                _largest(np.array([point.relative for point in points])) if points else float("nan")
-            ),
-        }
-        for points in found
-    ]
-
-
-def _checked_points(case: Case, points: int, count: int) -> NDArray[np.intp]:
-    """Points to check: random, but those of a case do not depend on anything else."""
-    generator = np.random.default_rng(int(case.digest[:16], 16))
-    return np.sort(generator.choice(points, size=min(count, points), replace=False))
-
-
-def _chosen_points(chunk: Chunk, block: _Block, table: ThermoTable) -> xr.Dataset:
-    """A data set of scattered points, as the comparison takes it."""
-    layout = chunk.group.layout
-    cases = [chunk.cases[i] for i, _, _ in block.checked]
-    places = [np.unravel_index(point, layout.shape) for _, point, _ in block.checked]
-    at = tuple(np.array([(i, point) for i, point, _ in block.checked]).T)
-    pairs = list(zip(cases, places, strict=True))
-    return xr.Dataset(
-        {
-            "mole_fraction": (("point", "species"), np.stack([part for _, _, part in block.checked])),
-            "gap": ("point", block.gap[at]),
-            "gas_amount": ("point", block.gas[at]),
-            "status": ("point", block.status[at]),
-            "feed_amount": (
-                ("point", "feed_species"),
-                np.stack([case.feed[place[:-2]] for case, place in pairs]),
-            ),
-        },
-        {
-            "temperature": ("point", [case.temperature[place[-2]] for case, place in pairs]),
-            "pressure": ("point", [case.pressure[place[-1]] for case, place in pairs]),
-            "species": [each.name for each in layout.species],
-            "feed_species": [each.name for each in layout.feed_species],
-            "feed_atoms": (("feed_species", "element"), feed_atoms(layout.feed_species, table)),
-        },
-    )

@@ -1,0 +1,129 @@
+"""What the summary says of each case, and the points of it that an independent program solves again."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from gibbsmin.solving import composition_matrix
+
+if TYPE_CHECKING:
+    from gibbsmin.species import ThermoTable
+    from gibbsmin.study.model import Case
+    from gibbsmin.study.solving import Block, Chunk
+
+
+def rows_of(
+    chunk: Chunk, block: Block, values: Mapping[str, NDArray[Any]], table: ThermoTable
+) -> Iterator[dict[str, Any]]:
+    layout = chunk.group.layout
+    unsolved = (block.status != 0).sum(axis=1)
+    checks = _cross_checks(chunk, block, table)
+    ranges: dict[str, NDArray[Any]] = {}
+    if "mole_fraction" in values:
+        names = [layout.species[k].name for k in layout.kept_species]
+        for name in layout.results.key_species:
+            ranges[f"mole fraction {name}"] = values["mole_fraction"][..., names.index(name)]
+    ranges.update({name: values[name] for name in chunk.group.derived})
+    for i, case in enumerate(chunk.cases):
+        failure = block.failures.get(i, "")
+        bad = int(unsolved[i])
+        row: dict[str, Any] = {
+            "number": case.number,
+            "case": case.name,
+            "title": case.title,
+            "status": "failed" if failure else "solved" if bad == 0 else "partly solved",
+            "failure": failure,
+            "points": layout.points,
+            "unsolved points": bad,
+            "largest gap per mol of gas": _or_none(block.largest_gap[i]),
+            "largest balance residual": _or_none(block.largest_balance[i]),
+            "data extrapolated": bool(layout.extrapolate and table.extrapolated(case.temperature).any()),
+            **checks[i],
+            "seconds": round(float(block.seconds[i]), 6),
+        }
+        for name, array in ranges.items():
+            row[f"{name} lowest"] = _or_none(-largest(-array[i]))
+            row[f"{name} highest"] = _or_none(largest(array[i]))
+        yield row
+
+
+def largest(values: NDArray[Any]) -> float:
+    """Largest finite value, NaN if there is none."""
+    top = values.max()
+    if np.isfinite(top):
+        return float(top)
+    finite = values[np.isfinite(values)]
+    return float(finite.max()) if finite.size else float("nan")
+
+
+def _or_none(value: float) -> float | None:
+    return float(value) if np.isfinite(value) else None
+
+
+def _cross_checks(chunk: Chunk, block: Block, table: ThermoTable) -> list[dict[str, Any]]:
+    """For each case: how many points were solved again, and how far the answers differ."""
+    found: list[list[Any]] = [[] for _ in chunk.cases]
+    if block.checked:
+        from gibbsmin.comparison import Comparison
+
+        points = _chosen_points(chunk, block, table)
+        compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
+        for k, (i, _, _) in enumerate(block.checked):
+            found[i].append(compare.at((k,)))
+    statuses = {
+        "confirmed": "confirmed",
+        "differing": "differs",
+        "no independent answer": "no independent answer",
+    }
+    return [
+        {
+            "checked points": len(points),
+            **{name: sum(point.status == status for point in points) for name, status in statuses.items()},
+            "largest relative difference": _or_none(
+                largest(np.array([point.relative for point in points])) if points else float("nan")
+            ),
+        }
+        for points in found
+    ]
+
+
+def checked_points(case: Case, points: int, count: int) -> NDArray[np.intp]:
+    """Points to check: random, but those of a case do not depend on anything else."""
+    generator = np.random.default_rng(int(case.digest[:16], 16))
+    return np.sort(generator.choice(points, size=min(count, points), replace=False))
+
+
+def _chosen_points(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset:
+    """A data set of scattered points, as the comparison takes it."""
+    layout = chunk.group.layout
+    cases = [chunk.cases[i] for i, _, _ in block.checked]
+    places = [np.unravel_index(point, layout.shape) for _, point, _ in block.checked]
+    at = tuple(np.array([(i, point) for i, point, _ in block.checked]).T)
+    pairs = list(zip(cases, places, strict=True))
+    return xr.Dataset(
+        {
+            "mole_fraction": (("point", "species"), np.stack([part for _, _, part in block.checked])),
+            "gap": ("point", block.gap[at]),
+            "gas_amount": ("point", block.gas[at]),
+            "status": ("point", block.status[at]),
+            "feed_amount": (
+                ("point", "feed_species"),
+                np.stack([case.feed[place[:-2]] for case, place in pairs]),
+            ),
+        },
+        {
+            "temperature": ("point", [case.temperature[place[-2]] for case, place in pairs]),
+            "pressure": ("point", [case.pressure[place[-1]] for case, place in pairs]),
+            "species": [each.name for each in layout.species],
+            "feed_species": [each.name for each in layout.feed_species],
+            "feed_atoms": (
+                ("feed_species", "element"),
+                composition_matrix(layout.feed_species, table.elements, []),
+            ),
+        },
+    )
