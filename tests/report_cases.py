@@ -19,7 +19,7 @@ import xarray as xr
 import gibbsmin
 from gibbsmin.outcome import Outcome
 
-HOSTILE = "<script>document.title='taken over'</script><img src=x onerror=\"document.title='taken over'\">"
+HOSTILE = "<script>document.title='taken over'</script><img src=x onerror=\"document.title='taken over'\"><b>bold</b>"
 
 # A small map with three axes of several values; 'Ostrand' and all figures are made up.
 SMALL = """\
