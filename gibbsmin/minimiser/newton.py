@@ -67,7 +67,12 @@ BATCH = 1024
 """Points iterated side by side: their arrays stay in a core's second-level cache."""
 
 JOINT_STEPS = 60
+"""Steps of the joint form before the nested form takes over."""
+
 STEP_LIMIT = 1000
+
+SURE_OF_SIGN = 10.0
+"""ln sum y bounds N only if it exceeds this multiple of the change that the balances still ask for."""
 
 EXPONENT_LIMIT = 300.0
 """Beyond this the sums are scaled down to keep them finite."""
@@ -271,13 +276,15 @@ def _ratio_of_totals(batch: Batch, sums: Sums, to_target: Floats, to_balance: Fl
 def _nested_ratio(batch: Batch, sums: Sums, direction: Floats, by_balance: Floats, index: Indices) -> Floats:
     """Keep N until the balances hold, then take a bracketed Newton step on ln sum y."""
     ratio = np.ones(len(index))
-    settled = np.abs(direction) @ batch.components.largest < NESTED_TOLERANCE
+    reach = np.abs(direction) @ batch.components.largest
+    settled = reach < NESTED_TOLERANCE
     at = index[settled]
     excess = np.log(sums.total[at]) + sums.shift[at]
     log_total = batch.log_total[at]
     bracket = batch.bracket[at]
-    bracket[:, 0] = np.where(excess > 0.0, np.maximum(bracket[:, 0], log_total), bracket[:, 0])
-    bracket[:, 1] = np.where(excess <= 0.0, np.minimum(bracket[:, 1], log_total), bracket[:, 1])
+    sure = np.abs(excess) > SURE_OF_SIGN * reach[settled]
+    bracket[:, 0] = np.where(sure & (excess > 0.0), np.maximum(bracket[:, 0], log_total), bracket[:, 0])
+    bracket[:, 1] = np.where(sure & (excess < 0.0), np.minimum(bracket[:, 1], log_total), bracket[:, 1])
     batch.bracket[at] = bracket
     new = log_total + excess * sums.total[at] / by_balance[settled]
     outside = (new <= bracket[:, 0]) | (new >= bracket[:, 1])
