@@ -16,8 +16,8 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from gibbsmin import errors
-    from gibbsmin.minimiser import minimise
+    from gibbsmin import errors, reactions
+    from gibbsmin.minimiser import Status, minimise
     from gibbsmin.outcome import Outcome
     from gibbsmin.running import run
     from gibbsmin.scenario import load_scenario
@@ -29,6 +29,7 @@ if TYPE_CHECKING:
 
 _HOME_OF = {
     "Outcome": "gibbsmin.outcome",
+    "Status": "gibbsmin.minimiser",
     "equilibrium": "gibbsmin.solving",
     "load_scenario": "gibbsmin.scenario",
     "load_study": "gibbsmin.study",
@@ -43,6 +44,7 @@ _GIVE_DATASETS = frozenset({"equilibrium", "run"})
 
 __all__ = [
     "Outcome",
+    "Status",
     "__version__",
     "equilibrium",
     "errors",
@@ -50,6 +52,7 @@ __all__ = [
     "load_study",
     "minimise",
     "open_study",
+    "reactions",
     "run",
     "run_study",
     "standard_library",
@@ -60,8 +63,8 @@ def __getattr__(name: str) -> Any:
     value: Any
     if name == "__version__":
         value = _installed_version()
-    elif name == "errors":
-        value = import_module("gibbsmin.errors")
+    elif name in ("errors", "reactions"):
+        value = import_module(f"gibbsmin.{name}")
     elif name in _HOME_OF:
         value = getattr(import_module(_HOME_OF[name]), name)
         if name in _GIVE_DATASETS:
