@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import random
 from fractions import Fraction
 
 import pytest
 
 from gibbsmin.errors import ReactionError
 from gibbsmin.reactions import coverage, read_reaction
-from gibbsmin.reactions.exact import null_space, rank, weights_in, whole
+from gibbsmin.reactions.exact import Span, null_space, rank, weights_in, whole
 from gibbsmin.species import Species, standard_library
 
 LIBRARY = standard_library()
@@ -120,3 +121,17 @@ def test_abundant_species_become_components() -> None:
 def test_species_outside_the_list_is_refused() -> None:
     with pytest.raises(ReactionError, match="CO2 is not among the species of the mixture"):
         coverage(species("CO H2O H2"), [read_reaction("CO + H2O = CO2 + H2")])
+
+
+def test_span_grows_by_rank() -> None:
+    """Vectors added one by one against the rank of all of them together, on seeded matrices of low rank."""
+    rng = random.Random(7)
+    for _ in range(60):
+        size, count = rng.randint(1, 7), rng.randint(1, 9)
+        rows = [[Fraction(rng.randint(-2, 2), rng.randint(1, 3)) for _ in range(size)] for _ in range(count)]
+        rows += [[a + 2 * b for a, b in zip(rows[0], rows[-1], strict=True)]]
+        span = Span()
+        added = [span.add(row) for row in rows]
+        for last in range(len(rows)):
+            assert added[last] == (rank(rows[: last + 1]) > rank(rows[:last]))
+        assert len(span) == rank(rows) == sum(added)

@@ -56,7 +56,7 @@ def full_mixture(scenario: Scenario, conditions: Conditions, dataset: xr.Dataset
         [np.asarray(exact[name], dtype=object).ravel() for name in scenario.feed_species], axis=-1
     )
     shape = (len(feed), len(T), len(p))
-    # Condensed phases that take part themselves are rows of the data set beside the gases.
+    # Condensed phases that take part follow the gases in the table.
     table = conditions.table
     gases = [j for j, each in enumerate(table.species) if each.state == "g"]
     amounts = dataset["amount"].values.reshape(*shape, -1)
@@ -78,7 +78,15 @@ def full_mixture(scenario: Scenario, conditions: Conditions, dataset: xr.Dataset
         activity,
         which,
         tuple(condensed),
+        _formed(dataset, shape),
     )
+
+
+def _formed(dataset: xr.Dataset, shape: tuple[int, int, int]) -> Any:
+    """Where a condensed phase is there; None for a mixture of gases alone."""
+    if "phase_amount" not in dataset:
+        return None
+    return (dataset["phase_amount"] > 0).any("phase").values.reshape(shape)
 
 
 def add_reactions(dataset: xr.Dataset, results: ReactionResults | None) -> xr.Dataset:

@@ -23,7 +23,7 @@ from numpy.typing import NDArray
 
 from gibbsmin.errors import ReactionError
 from gibbsmin.reactions.equation import Reaction
-from gibbsmin.reactions.independence import coverage
+from gibbsmin.reactions.independence import coverage, split_redundant
 from gibbsmin.reactions.subset import Composition, MapConditions, Subset, as_gases, solve_subset
 
 if TYPE_CHECKING:
@@ -88,6 +88,7 @@ class FullMixture:
         activity: (F, nT, nP) largest activity of any condensed phase that was looked at, 0 where none was.
         most_active: (F, nT, nP) its number in `condensed`, -1 where there is none.
         condensed: the condensed substances looked at.
+        formed: (F, nT, nP) whether a condensed phase is there, in a mixture that lets them form; else None.
     """
 
     conditions: MapConditions
@@ -95,6 +96,13 @@ class FullMixture:
     activity: Array
     most_active: NDArray[np.intp]
     condensed: tuple[Species, ...] = ()
+    formed: Booleans | None = None
+
+    @property
+    def condensing(self) -> Booleans:
+        """(F, nT, nP) where a condensed phase is there, or would form if it were let."""
+        beyond = self.activity > 1
+        return beyond if self.formed is None else beyond | self.formed
 
 
 @dataclass(frozen=True)
@@ -322,7 +330,7 @@ def _comparison(
     reason = np.full(solved.shape, Reason.WITHIN, dtype=np.int8)
     reason[beyond] = Reason.K_ERROR
     reason[beyond & beyond_with_exact] = Reason.NEGLECTED_REACTIONS
-    reason[full.activity > 1] = Reason.CONDENSED_PHASE
+    reason[full.condensing] = Reason.CONDENSED_PHASE
     reason[~solved] = Reason.NOT_SOLVED
     converted = {name: conversion_of(full.conditions, found, name) for name in judged.conversions}
     return Comparison(
@@ -384,6 +392,7 @@ def _candidates(
         if all(one.state == "g" for one in each.species) and each.stoichiometry.keys() <= inside
     ]
     # Each known reaction stands for itself, so dependence counts against the subset alone.
-    fresh = [each for each in named if len(coverage(listed, [*subset.reactions, each]).redundant) == 0]
+    names = [each.name for each in listed]
+    fresh = [each for each in named if not split_redundant([*subset.reactions, each], names)[1]]
     covered = coverage(listed, [*subset.reactions, *fresh], abundance=list(abundance[worth]))
     return [*fresh, *covered.missing][:MOST_CANDIDATES]

@@ -42,6 +42,38 @@ def rank(rows: Sequence[Sequence[Fraction]]) -> int:
     return len(reduced(rows)[1])
 
 
+class Span:
+    """The span of vectors added one by one, as an echelon form with its pivots."""
+
+    def __init__(self, vectors: Sequence[Sequence[Fraction]] = ()) -> None:
+        self._by_pivot: dict[int, dict[int, Fraction]] = {}
+        for vector in vectors:
+            self.add(vector)
+
+    def __len__(self) -> int:
+        """Its dimension."""
+        return len(self._by_pivot)
+
+    def add(self, vector: Sequence[Fraction]) -> bool:
+        """Whether the vector was independent of those before it; it then belongs to the span."""
+        rest = {column: value for column, value in enumerate(vector) if value}
+        while rest:
+            pivot = min(rest)
+            row = self._by_pivot.get(pivot)
+            if row is None:
+                head = rest[pivot]
+                self._by_pivot[pivot] = {column: value / head for column, value in rest.items()}
+                return True
+            factor = rest[pivot]
+            for column, value in row.items():
+                changed = rest.get(column, Fraction(0)) - factor * value
+                if changed:
+                    rest[column] = changed
+                else:
+                    rest.pop(column, None)
+        return False
+
+
 def null_space(rows: Sequence[Sequence[Fraction]], columns: int) -> list[Row]:
     """A basis of the vectors x with M x = 0, one for each column without a pivot, which has a 1 there."""
     echelon, pivots = reduced(rows)

@@ -13,7 +13,7 @@ from fractions import Fraction
 from typing import TYPE_CHECKING
 
 from gibbsmin.reactions.equation import Reaction, element_rows, reaction_of
-from gibbsmin.reactions.exact import rank, reduced, weights_in, whole
+from gibbsmin.reactions.exact import Span, reduced, weights_in, whole
 
 if TYPE_CHECKING:
     from gibbsmin.species import Species
@@ -119,9 +119,34 @@ def coverage(
     """
     names = [each.name for each in species]
     basis = _formation_reactions(species, abundance)
+    independent, redundant = split_redundant(reactions, names)
+    span = Span([each.over(names) for each in independent])
+    missing = [each for each in basis if span.add(each.over(names))]
+    can_change = {name for each in basis for name in each.stoichiometry}
+    changed = {name for each in reactions for name in each.stoichiometry}
+    return Coverage(
+        tuple(species),
+        len(basis),
+        basis,
+        tuple(reactions),
+        independent,
+        redundant,
+        tuple(name for name in names if name in can_change and name not in changed),
+        tuple(name for name in names if name not in can_change),
+        tuple(missing) if reactions else (),
+    )
+
+
+def split_redundant(
+    reactions: Sequence[Reaction], names: Sequence[str]
+) -> tuple[tuple[Reaction, ...], tuple[Redundant, ...]]:
+    """The reactions that are independent of those before them, and the others as combinations.
+
+    Raises ReactionError for a species that is not among `names`.
+    """
     independent: list[Reaction] = []
-    rows: list[list[Fraction]] = []
     redundant: list[Redundant] = []
+    rows: list[list[Fraction]] = []
     for each in reactions:
         row = each.over(names)
         weights = weights_in(rows, row)
@@ -131,26 +156,7 @@ def coverage(
         else:
             by_name = {r.name: w for r, w in zip(independent, weights, strict=True) if w}
             redundant.append(Redundant(each, by_name))
-    missing: list[Reaction] = []
-    extended = list(rows)
-    for each in basis:
-        row = each.over(names)
-        if rank([*extended, row]) > len(extended):
-            missing.append(each)
-            extended.append(row)
-    can_change = {name for each in basis for name in each.stoichiometry}
-    changed = {name for each in reactions for name in each.stoichiometry}
-    return Coverage(
-        tuple(species),
-        len(basis),
-        basis,
-        tuple(reactions),
-        tuple(independent),
-        tuple(redundant),
-        tuple(name for name in names if name in can_change and name not in changed),
-        tuple(name for name in names if name not in can_change),
-        tuple(missing) if reactions else (),
-    )
+    return tuple(independent), tuple(redundant)
 
 
 def _formation_reactions(

@@ -398,16 +398,20 @@ def _named(name: str, equation: str) -> str:
 
 
 def _condensed_line(full: FullMixture, place: Place) -> list[str]:
-    if not full.condensed or not (full.activity > 1).any():
+    condensing = full.condensing
+    if not full.condensed or not condensing.any():
         return []
-    index = np.unravel_index(int(np.argmax(full.activity)), full.activity.shape)
+    index = np.unravel_index(int(np.argmax(np.where(condensing, full.activity, 0.0))), condensing.shape)
     which = full.condensed[int(full.most_active[index])].name
-    share = 100 * float((full.activity > 1).mean())
     at = place((int(index[0]), int(index[1]), int(index[2])))
-    return [
-        f"Condensed phase: on {share:.0f} % of the map a condensed phase would form; by the potentials of the gas the "
-        f"activity of {which} reaches {full.activity[index]:.3g} (at {at})"
-    ]
+    if full.formed is not None and full.formed.any():
+        how = f"is there or would form; the most active one is {which} (at {at})"
+    else:
+        how = (
+            f"would form; by the potentials of the gas the activity of {which} reaches {full.activity[index]:.3g} "
+            f"(at {at})"
+        )
+    return [f"Condensed phase: on {_per_cent(float(condensing.mean()))} of the map one {how}"]
 
 
 def _spans(T: Array, within: NDArray[np.bool_]) -> list[Window]:

@@ -24,7 +24,8 @@ from gibbsmin.decimal_amounts import element_amounts, element_amounts_of_fractio
 from gibbsmin.errors import ReactionError
 from gibbsmin.grid import solve_grid
 from gibbsmin.reactions.equation import Reaction, element_rows
-from gibbsmin.reactions.exact import Row, null_space, rank, weights_in, whole
+from gibbsmin.reactions.exact import Row, Span, null_space, whole
+from gibbsmin.reactions.independence import split_redundant
 
 if TYPE_CHECKING:
     from gibbsmin.reactions.shortcuts import Shortcut
@@ -82,18 +83,20 @@ def conserved_rows(species: Sequence[Species], reactions: Sequence[Reaction]) ->
         ReactionError: the reactions depend on each other, or one has a species that is not in the list.
     """
     names = [each.name for each in species]
+    _, redundant = split_redundant(reactions, names)
+    for each in redundant:
+        raise ReactionError(
+            each.reaction.name,
+            f"it is no new reaction beside {', '.join(each.weights)}; leave one of them out",
+        )
     stoichiometry = [each.over(names) for each in reactions]
-    for count, each in enumerate(reactions):
-        weights = weights_in(stoichiometry[:count], stoichiometry[count])
-        if weights is not None:
-            by = ", ".join(r.name for r, w in zip(reactions, weights, strict=False) if w)
-            raise ReactionError(each.name, f"it is no new reaction beside {by}; leave one of them out")
     rows: list[Row] = []
+    span = Span()
     conserved = null_space(stoichiometry, len(names)) if stoichiometry else _identity(len(names))
     for row in [*element_rows(species)[1], *conserved]:
         if len(rows) == len(names) - len(reactions):
             break
-        if rank([*rows, row]) > len(rows):
+        if span.add(row):
             rows.append(whole(row))
     return rows
 

@@ -12,7 +12,7 @@ from gibbsmin.reactions.against_mixture import MixtureTolerance
 from gibbsmin.reactions.approach import Analysis, checked_analyses
 from gibbsmin.reactions.constant_units import ConstantUnit
 from gibbsmin.reactions.equation import Reaction, read_reaction
-from gibbsmin.reactions.independence import coverage
+from gibbsmin.reactions.independence import split_redundant
 from gibbsmin.reactions.measured import MeasuredConstants
 from gibbsmin.reactions.shortcut_error import Tolerance
 from gibbsmin.reactions.shortcuts import ConstantEnthalpy, ConstantHeatCapacity, Correlation, Shortcut
@@ -318,7 +318,7 @@ class _Reader:
                     path, f"{each.name}: {', '.join(missing)} is not among the gases of this scenario"
                 )
                 return True
-        redundant = coverage(gases, reactions).redundant
+        _, redundant = split_redundant(reactions, names)
         if redundant:
             self.reading.fault(path, f"the reactions depend on each other: {redundant[0]}; leave one out")
         return bool(redundant)
