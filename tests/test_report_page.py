@@ -21,13 +21,14 @@ import pytest
 from gibbsmin.cli import main
 from gibbsmin.figures.labels import number
 from gibbsmin.outcome import Outcome
-from gibbsmin.report import StudyCase, report_html, study_report_html
+from gibbsmin.report import StudyCase, report_html, study_report_html, study_results_html
 from gibbsmin.report.chart_data import ChartData
 from gibbsmin.report.markup import Markup, embedded_json, paragraphs, pretty_name, pretty_words, tag
 from gibbsmin.report.packing import RELATIVE_ERROR, packed, unpacked
 from gibbsmin.report.page import LIBRARY_FILE, LIBRARY_LICENSE, page_file
 from gibbsmin.report.results_part import chosen_points
 from gibbsmin.report.thinning import MOST_VALUES, thin
+from gibbsmin.study.results import open_study
 from tests.report_cases import (
     HOSTILE,
     SMALL,
@@ -36,6 +37,7 @@ from tests.report_cases import (
     reactions_outcome,
     small_outcome,
 )
+from tests.study_cases import write_study
 
 ROOT = Path(__file__).parents[1]
 
@@ -351,6 +353,32 @@ def test_run_writes_the_report_unless_told_not_to(
     command = ["run", "ostrand.yaml", "--no-figures", "--crosscheck", "none", "--no-report", "--overwrite"]
     assert main(command) == 0
     assert not Path("ostrand-results/report.html").exists()
+
+
+def test_a_study_leaves_a_report_unless_told_not_to(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    write_study(tmp_path)
+    assert main(["study", "study.yaml", "--workers", "1"]) == 0
+    report = Path("study-results/report.html")
+    text = report.read_text(encoding="utf-8")
+    page = Read(text)
+    results = open_study("study-results")
+    rows = page.tables["All 12 cases"]
+    heading, first = rows[0], rows[1]
+    told = dict(zip(heading, first, strict=True))
+    case = results.summary.iloc[0]
+    assert told["case"] == case["case"]
+    assert [told[name] for name in results.quantity_columns] == [
+        number(case[n], 6) for n in results.quantity_columns
+    ]
+    low, high = case["conversion of CO lowest"], case["conversion of CO highest"]
+    assert told["conversion of CO"] == f"{number(low)} to {number(high)}"
+    assert "180 of 180 points solved and proved" in page.visible
+    assert results.manifest["species data SHA-256"]["all"] in page.visible
+    report.unlink()
+    assert main(["study", "study.yaml", "--no-report"]) == 0
+    assert not report.exists()
+    assert study_results_html(results) == text
 
 
 def test_study_report_tells_cases_apart() -> None:

@@ -36,6 +36,7 @@ def add_study(parser: argparse.ArgumentParser) -> None:
         "--cluster", metavar="ADDRESS", help="of a Dask scheduler (tcp://host:port) to compute there instead"
     )
     parser.add_argument("--overwrite", action="store_true", help="replace another study in FOLDER")
+    parser.add_argument("--no-report", action="store_true", help="leave out report.html")
     parser.set_defaults(command=_study)
 
 
@@ -79,8 +80,15 @@ def _study(options: argparse.Namespace) -> int:
             progress=progress,
             tell=say,
         )
+    kept = ["results.zarr", "summary.parquet", "manifest.json"]
+    if not options.no_report:
+        from gibbsmin.report import REPORT_FILE, study_results_html
+        from gibbsmin.study.shards import write_whole
+
+        write_whole(folder / REPORT_FILE, [study_results_html(run.results).encode("utf-8")])
+        kept.append(REPORT_FILE)
     print(run.results.in_words())
-    print(f"\nkept in {folder}: results.zarr, summary.parquet, manifest.json")
+    print(f"\nkept in {folder}: {', '.join(kept)}")
     return 0 if run.all_solved and run.all_confirmed else 1
 
 
