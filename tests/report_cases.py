@@ -149,7 +149,7 @@ def flawed_outcome() -> Outcome:
             each[hit] = np.nan
     dataset["status"][hit] = 4
     grid = dataset["status"].dims
-    dataset["activity"] = xr.Variable(
+    dataset["phase_activity"] = xr.Variable(
         (*grid, "phase"),
         np.stack([dataset["gas_amount"].values * 0 + 0.5, dataset["mole_fraction"].values[..., 0]], axis=-1),
         {"units": "1", "long_name": "activity"},

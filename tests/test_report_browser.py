@@ -367,7 +367,7 @@ def test_unsolved_points_boundaries_and_activities_are_shown(opened: Opener) -> 
     pressures = small_outcome().dataset["pressure"].values
     np.testing.assert_allclose(curve["x"], 900.0 + 50.0 * np.log10(pressures / 1e5) - 273.15)
     np.testing.assert_allclose(curve["y"], pressures / 1e5, rtol=1e-9)
-    choose(page, "quantity", "activity|C(graphite)")
+    choose(page, "quantity", "phase_activity|C(graphite)")
     assert "Practically 0.5 everywhere" in page.page.inner_text("#map")
     page.page.focus("#slider-temperature")
     page.page.keyboard.press("Home")
@@ -448,7 +448,7 @@ def test_hostile_text_stays_text(opened: Opener) -> None:
     page.page.mouse.move(*pixel_of(page, 2, 2))
     page.page.wait_for_selector("#hover-card:not([hidden])")
     flawed = opened(flawed_outcome())
-    choose(flawed, "quantity", f"activity|{HOSTILE}")
+    choose(flawed, "quantity", f"phase_activity|{HOSTILE}")
     assert HOSTILE in flawed.page.inner_text("#map-caption")
 
 

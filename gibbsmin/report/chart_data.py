@@ -31,6 +31,7 @@ _DARK_LINE_COLOURS = ("#5a9ff0", "#f08d4f", "#35c49c", "#e6a3ca", "#e7e9ec", "#f
 _COLOURS = {  # one scale for each kind of quantity; all of them even in lightness and safe for colour-blind eyes
     # Cut off where white writing on it would fade.
     "composition": ("viridis", (0.04, 0.86)),
+    "phase": ("viridis", (0.04, 0.86)),
     "result": ("cividis", (0.0, 0.84)),
     "energy": ("cividis", (0.0, 0.84)),
     "property": ("cividis", (0.0, 0.84)),

@@ -12,6 +12,7 @@ from gibbsmin.figures.labels import number
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE
 from gibbsmin.report.histogram import decade_histogram
 from gibbsmin.report.markup import Markup, bullets, joined, pretty_name, table, tag
+from gibbsmin.report.quantities import gap_per_mol
 from gibbsmin.report.quantity_text import place
 
 if TYPE_CHECKING:
@@ -65,10 +66,10 @@ def method_part(outcome: Outcome) -> list[Markup | None]:
 
 def evidence_part(outcome: Outcome) -> list[Markup | None]:
     dataset = outcome.dataset
-    gap = (dataset["gap"] / dataset["gas_amount"]).values.ravel()
+    gap = gap_per_mol(dataset).values.ravel()
     balance = dataset["balance_residual"].values.ravel()
     pictures = [
-        decade_histogram(gap, "Optimality gap: bound on (G − Gmin)/RT per mol of gas"),
+        decade_histogram(gap, "Optimality gap: bound on (G − Gmin)/RT per mol"),
         decade_histogram(balance, "Largest relative error of an element balance", BALANCE_TOLERANCE),
     ]
     return [

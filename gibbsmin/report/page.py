@@ -170,9 +170,17 @@ def _header(outcome: Outcome) -> Markup:
         "header",
         tag("p", "Equilibrium report", class_="kicker"),
         tag("h1", scenario.title),
-        tag("p", f"Feed of {_listed(names)}; {len(scenario.species)} gases at equilibrium.", class_="lead"),
+        tag("p", f"Feed of {_listed(names)}; {_taking_part(outcome)} at equilibrium.", class_="lead"),
         tag("ul", marks, class_="marks"),
     )
+
+
+def _taking_part(outcome: Outcome) -> str:
+    gases = f"{len(outcome.scenario.species)} gases"
+    if "phase_takes_part" not in outcome.dataset.coords:
+        return gases
+    phases = int(outcome.dataset["phase_takes_part"].sum())
+    return f"{gases} and {phases} condensed phases" if phases else gases
 
 
 def mark(good: bool | None, text: str) -> Markup:

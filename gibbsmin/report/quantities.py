@@ -18,10 +18,11 @@ from gibbsmin.outcome.summary import SHOWN_UNITS
 from gibbsmin.report.boundaries import is_boundary
 from gibbsmin.report.markup import pretty_name, pretty_words
 
-Kind = Literal["composition", "result", "trust", "energy", "property", "evidence"]
+Kind = Literal["composition", "phase", "result", "trust", "energy", "property", "evidence"]
 
 GROUPS: dict[Kind, str] = {
     "composition": "Composition",
+    "phase": "Condensed phases",
     "result": "Wanted results",
     "trust": "Trust in reactions alone",
     "energy": "Energy",
@@ -154,13 +155,23 @@ def _kind(name: str, array: xr.DataArray) -> Kind:
         return "result"
     if name in _ENERGY:
         return "energy"
+    if name.startswith("phase_"):
+        return "phase"
     if name in _TRUST:
         return "trust"
     return "evidence" if name in _EVIDENCE else "property"
 
 
+def gap_per_mol(dataset: xr.Dataset) -> xr.DataArray:
+    """The optimality gap per mol of gas and condensed phases [1], over the grid."""
+    amount = dataset["gas_amount"]
+    if "phase_amount" in dataset:
+        amount = amount + dataset["phase_amount"].sum("phase", skipna=False)
+    return (dataset["gap"] / amount).transpose(*dataset["status"].dims)
+
+
 def _gap(dataset: xr.Dataset) -> Quantity:
     """The gap per mol of gas: a number that compares between feeds."""
-    values = (dataset["gap"] / dataset["gas_amount"]).transpose(*dataset["status"].dims)
-    label = "optimality gap per mol of gas"
+    values = gap_per_mol(dataset)
+    label = "optimality gap per mol"
     return Quantity("gap", label, "evidence", GROUPS["evidence"], "", values)

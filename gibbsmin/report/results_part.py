@@ -23,7 +23,7 @@ if TYPE_CHECKING:
 _MOST_SPECIES = 16
 _LEAST_FRACTION = 1e-6  # a species below it at all chosen points is left to the charts
 _MOST_POINTS = 9
-_SHOWN_KINDS = ("result", "energy", "property")
+_SHOWN_KINDS = ("phase", "result", "energy", "property")
 
 
 def results_part(outcome: Outcome) -> list[Markup | None]:

@@ -29,7 +29,7 @@ function drawPoint(state) {
     return row;
   });
   document.getElementById('point-species').replaceChildren(...rows);
-  const results = quantities.filter((each) => ['result', 'energy'].includes(each.kind) || each.id === 'gap');
+  const results = quantities.filter((each) => ['phase', 'result', 'energy'].includes(each.kind) || each.id === 'gap');
   document.getElementById('point-results').replaceChildren(...results.map((each) => {
     const pair = document.createElement('div');
     pair.dataset.quantity = each.id;
