@@ -104,21 +104,23 @@ def test_the_scenario_of_the_first_page_is_sound() -> None:
     assert yaml.safe_load(block)["title"] == scenario.title
 
 
-def test_measured_figures_become_tables(tmp_path: Path) -> None:
-    tables = module("measured_tables")
-    assert "No measured figures" in tables.tables(tmp_path)
-    content = {
-        "machine": {"cores": 2},
-        "points": 99_911,
-        "rows": [{"species": 30, "ratio": 101.25}, {"species": 60, "ratio": None, "note": "a|b"}],
-    }
-    (tmp_path / "dense_map.json").write_text(json.dumps(content), encoding="utf-8")
-    text = tables.tables(tmp_path)
-    assert "## Dense map" in text
-    assert "| points | 99,911 |" in text
-    assert "| species | ratio | note |" in text
-    assert "| 30 | 101 |  |" in text
-    assert "| 60 |  | a\\|b |" in text
+def test_measured_figures_are_those_of_the_benchmarks(tmp_path: Path) -> None:
+    measured = module("measured_figures")
+    assert "No measured figures" in measured.figures(tmp_path)
+    assert "--into" in benchmark_help()
+    (tmp_path / "tables.md").write_text(
+        "### Dense map\n\n| a | b |\n|---|---|\n| 1 | 2 |\n", encoding="utf-8"
+    )
+    (tmp_path / "dense_map.svg").write_text("<svg xmlns='http://www.w3.org/2000/svg'/>", encoding="utf-8")
+    text = measured.figures(tmp_path)
+    assert "\n## Dense map\n" in text
+    assert "| 1 | 2 |" in text
+    assert f"![dense map]({tmp_path.name}/dense_map.svg)" in text
+
+
+def benchmark_help() -> str:
+    """The option that the page names must exist."""
+    return (ROOT / "tests" / "benchmarks" / "__main__.py").read_text(encoding="utf-8")
 
 
 def test_the_wheel_leaves_the_sources_of_pages_out() -> None:

@@ -14,7 +14,7 @@ HERE = Path(__file__).parent
 ROOT = HERE.parents[1]
 sys.path[:0] = [str(HERE), str(ROOT)]
 
-import measured_tables  # noqa: E402
+import measured_figures  # noqa: E402
 import schema_reference  # noqa: E402
 
 import gibbsmin  # noqa: E402
@@ -49,7 +49,7 @@ def _fill_in(app: Any, page: str, source: list[str]) -> None:
     if page in schema_reference.SCHEMAS:
         source[0] += schema_reference.reference(ROOT / schema_reference.SCHEMAS[page])
     elif page == "accuracy-and-speed":
-        source[0] += measured_tables.tables(HERE / "measured")
+        source[0] += measured_figures.figures(HERE / "measured")
 
 
 def setup(app: Any) -> dict[str, bool]:
