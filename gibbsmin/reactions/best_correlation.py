@@ -91,7 +91,7 @@ class BestFit:
         return "".join(parts)
 
     def __str__(self) -> str:
-        basis = "at 1 bar" if self.unit == "1" else f"in {self.unit}"
+        basis = self.correlation.unit.in_words(self.correlation.reaction.gas_change)
         kelvin = "" if math.isnan(self.largest_kelvin) else f", {self.largest_kelvin:.2g} K"
         return (
             f"{self.correlation.describe()}\n"

@@ -100,6 +100,13 @@ class ConstantUnit:
         base = f"({self.base})" if "/" in self.base and gas_change != 1 else self.base
         return base if gas_change == 1 else f"{base}^{gas_change}"
 
+    def in_words(self, gas_change: Fraction) -> str:
+        """`in atm^2`, `at 1 bar`, or `without unit`, after "K"."""
+        symbol = self.symbol(gas_change)
+        if symbol != "1":
+            return f"in {symbol}"
+        return "at 1 bar" if gas_change else "without unit"
+
     def log_factor(self, gas_change: Fraction, T: ArrayLike) -> Array:
         """ln K - ln K_given [1], where ln K is at 1 bar; shape of T [K]."""
         T = np.asarray(T, dtype=np.float64)

@@ -259,7 +259,7 @@ def measured_text(summary: MeasuredSummary, unit: TemperatureUnit = KELVIN) -> s
     weights = "weighted by the stated uncertainties" if fit.stated else "all values alike"
     lines = [
         f"{data.reaction.equation}; {len(data)} values from {unit.show(low)} to {unit.show(high)} {unit.symbol}, "
-        f"K {_basis(summary)}, {weights}",
+        f"K {data.unit.in_words(data.reaction.gas_change)}, {weights}",
         "",
         f"Second law, at the mean temperature {second.mean_temperature:.1f} K (value +- standard error, 95 % interval)",
         f"  Delta H  kJ/mol     {_kilo(second.enthalpy)}   species data {data_H / 1e3:.5g}",
@@ -439,13 +439,6 @@ def _kilo(estimate: object) -> str:
             estimate.value / 1e3, estimate.standard_error / 1e3, estimate.lower / 1e3, estimate.upper / 1e3
         )
     )
-
-
-def _basis(summary: MeasuredSummary) -> str:
-    symbol = summary.data.unit.symbol(summary.data.reaction.gas_change)
-    if symbol != "1":
-        return f"in {symbol}"
-    return "at 1 bar" if summary.data.reaction.gas_change else "without unit"
 
 
 def _curvature(summary: MeasuredSummary) -> str:

@@ -97,7 +97,8 @@ class ConstantEnthalpy:
     def describe(self) -> str:
         return (
             f"ln K = {self.ln_K_ref:.6g} - (Delta H/R) (1/T - 1/{self.reference:g} K), "
-            f"Delta H = {self.enthalpy_R * GAS_CONSTANT / 1e3:.5g} kJ/mol; K at 1 bar"
+            f"Delta H = {self.enthalpy_R * GAS_CONSTANT / 1e3:.5g} kJ/mol; "
+            f"K {ConstantUnit().in_words(self.reaction.gas_change)}"
         )
 
 
@@ -143,7 +144,8 @@ class ConstantHeatCapacity:
         return (
             f"ln K from {self.ln_K_ref:.6g} at {self.reference:g} K with "
             f"Delta H = {self.enthalpy_R * GAS_CONSTANT / 1e3:.5g} kJ/mol there and "
-            f"Delta Cp = {self.heat_capacity_R * GAS_CONSTANT:.4g} J/(mol K); K at 1 bar"
+            f"Delta Cp = {self.heat_capacity_R * GAS_CONSTANT:.4g} J/(mol K); "
+            f"K {ConstantUnit().in_words(self.reaction.gas_change)}"
         )
 
 
@@ -212,9 +214,8 @@ class Correlation:
 
     def describe(self) -> str:
         left = "log10 K" if self.decadic else "ln K"
-        unit = self.unit.symbol(self.reaction.gas_change)
-        basis = "K at 1 bar" if unit == "1" else f"K in {unit}"
-        return f"{left} = {sum_text(self.coefficients)}; T in K, {basis}"
+        basis = self.unit.in_words(self.reaction.gas_change)
+        return f"{left} = {sum_text(self.coefficients)}; T in K, K {basis}"
 
 
 def sum_text(coefficients: Mapping[str, float]) -> str:
