@@ -47,7 +47,7 @@ function drawConstants(state) {
   measured.forEach((each, i) => {
     const x = inverse(each.lineTemperature);
     const own = look(each.of, i);
-    traces.push({ type: 'scatter', mode: 'lines', x: [...x, ...x.toReversed()], y: [...each.high, ...each.low.toReversed()],
+    traces.push({ type: 'scatter', mode: 'lines', x: [...x, ...x.slice().reverse()], y: [...each.high, ...each.low.slice().reverse()],
       fill: 'toself', fillcolor: `${own}44`, line: { width: 0 }, hoverinfo: 'skip', showlegend: false });
     traces.push({ type: 'scatter', mode: 'markers', name: plainText(each.name), x: inverse(each.temperature),
       y: each.values, customdata: words(each.temperature), hovertemplate: hover,
