@@ -18,6 +18,7 @@ import numpy as np
 import xarray as xr
 
 from gibbsmin.comparison import THRESHOLD, CheckedPoint, CheckStatus, Comparison
+from gibbsmin.outcome.composition import amount_at_equilibrium
 
 if TYPE_CHECKING:
     from gibbsmin.species import ThermoTable
@@ -170,7 +171,7 @@ def choose_points(dataset: xr.Dataset, extent: Extent, sample_size: int, seed: i
     else:
         ends = [np.unique([0, size - 1]) for size in status.shape]
         corners = np.ravel_multi_index(np.meshgrid(*ends, indexing="ij"), status.shape).ravel()
-        gap = (dataset["gap"].values / dataset["gas_amount"].values).ravel()[solved]
+        gap = (dataset["gap"].values / amount_at_equilibrium(dataset).values).ravel()[solved]
         widest = solved[np.argsort(-gap, kind="stable")[: max(1, sample_size // 4)]]
         certain = np.union1d(corners[np.isin(corners, solved)], widest)
         others = np.setdiff1d(solved, certain)

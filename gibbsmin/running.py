@@ -55,7 +55,10 @@ def run(
         raise MissingPackageError("pyarrow", "writing a Parquet table")
     conditions = scenario_conditions(scenario)
     dataset = solve(conditions, extrapolate=scenario.extrapolate, threads=threads, progress=progress)
-    dataset = add_derived(dataset, conditions.table, scenario.results, fed_enthalpy(scenario))
+    phase_table = thermo_table(conditions.phases, scenario.extrapolate) if conditions.phases else None
+    dataset = add_derived(
+        dataset, conditions.gas_table, scenario.results, fed_enthalpy(scenario), phase_table
+    )
     wanted = scenario.cross_check
     check = cross_check(
         dataset,
@@ -80,7 +83,7 @@ def run(
 
 def scenario_conditions(scenario: Scenario) -> Conditions:
     """The conditions of a scenario's grid, with its exact feed amounts carried to exact element amounts."""
-    table = thermo_table(scenario.species, scenario.extrapolate)
+    table = thermo_table([*scenario.species, *scenario.choice.condensed], scenario.extrapolate)
     feed_species = tuple(scenario.feed_species.values())
     exact = scenario.exact_feed_amounts()
     shape = scenario.feed_shape
@@ -103,6 +106,7 @@ def scenario_conditions(scenario: Scenario) -> Conditions:
         pressure=Labelled(("pressure",), scenario.pressure.array),
         coordinates={axis.name: _coordinate(axis) for axis in scenario.further_axes},
         amount_unit=scenario.amount_unit,
+        held_back=scenario.choice.held_back,
     )
 
 

@@ -19,6 +19,7 @@ from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.decimal_amounts import element_amounts
 from gibbsmin.errors import ConditionsError
 from gibbsmin.grid import solve_grid, solve_points
+from gibbsmin.grid.solution import GridSolution
 from gibbsmin.labelled import Labelled, count, joint_sizes, read_number
 from gibbsmin.outcome.assembling import RESULT_NAMES, assemble
 from gibbsmin.species import ThermoTable, standard_library
@@ -27,6 +28,7 @@ if TYPE_CHECKING:
     from gibbsmin.species import Species, SpeciesLibrary
 
     Number = float | ArrayLike | xr.DataArray
+    PhaseNames = str | Sequence[str | Species] | None
 
 FloatArray = NDArray[np.float64]
 Progress = Callable[[int], None]
@@ -39,7 +41,7 @@ class Conditions:
     """What is to be solved, checked and in arrays.
 
     Attributes:
-        table: thermodynamic functions of the S gases that take part.
+        table: thermodynamic functions of the S gases, then the K pure condensed phases, that take part.
         feed_species: the J species of the feed.
         feed: amounts [`amount_unit`], dimensions (*feed dimensions, "feed_species").
         feed_composition: atoms per molecule of the feed's species [1], (J, E).
@@ -49,6 +51,7 @@ class Conditions:
         temperature: K. pressure: Pa.
         coordinates: further coordinates for the data set.
         amount_unit: "mol", or for a rate "mol/h".
+        held_back: condensed phases that may not form, but whose activity is wanted.
     """
 
     table: ThermoTable
@@ -61,6 +64,25 @@ class Conditions:
     pressure: Labelled
     coordinates: Mapping[str, xr.Variable]
     amount_unit: str = "mol"
+    held_back: tuple[Species, ...] = ()
+
+    @property
+    def gases(self) -> tuple[Species, ...]:
+        return tuple(each for each in self.table.species if each.state == "g")
+
+    @property
+    def phases(self) -> tuple[Species, ...]:
+        """The pure condensed phases that take part."""
+        return tuple(each for each in self.table.species if each.state != "g")
+
+    @property
+    def gas_table(self) -> ThermoTable:
+        """Thermodynamic functions of the gases alone."""
+        return self.table if not self.phases else thermo_table(self.gases, self.table.extrapolate)
+
+    @staticmethod
+    def table_of(species: Sequence[Species], extrapolate: bool) -> ThermoTable:
+        return thermo_table(species, extrapolate)
 
     @property
     def feed_sizes(self) -> dict[str, int]:
@@ -86,12 +108,14 @@ def equilibrium(
     pressure: Number,
     *,
     species: Sequence[str | Species] | None = None,
+    condensed: PhaseNames = None,
+    held_back: PhaseNames = None,
     library: SpeciesLibrary | None = None,
     extrapolate: bool = False,
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> xr.Dataset:
-    """Equilibrium composition of an ideal-gas mixture at given temperatures and pressures.
+    """Equilibrium composition of an ideal gas, with pure condensed phases if wanted, at temperatures and pressures.
 
     Plain 1-D arrays of temperature and pressure span a grid with dimensions `temperature` and `pressure`.
     `xarray.DataArray` arguments, feed amounts included, are broadcast by dimension name: what shares a
@@ -106,6 +130,11 @@ def equilibrium(
         temperature: K.
         pressure: Pa, absolute.
         species: the gases that may form; default all neutral gases of the feed's elements.
+        condensed: pure solids and liquids that may form beside the gas: a name ("graphite"), a list of them, or
+            "all", meaning every one in the library made of the feed's elements. A formula that a gas has too
+            means the condensed substance. It goes through its crystal forms and liquid by its data, and is absent
+            where these end. Default none.
+        held_back: condensed phases, named likewise, that may not form but whose activity is to be told.
         library: where names are looked up; default the library that comes with the package.
         extrapolate: use the data outside their temperature range, and flag where.
         threads: number of threads; default the cores this process may use.
@@ -116,7 +145,11 @@ def equilibrium(
         `element_potential` (..., element) [1] (in units of RT), `status` (CF flags; 0 is solved), `gap` [mol]
         (upper bound on how far G/RT lies above its minimum), `balance_residual` [1], `iterations` [1],
         `feed_amount` (..., feed_species) [mol] and, when extrapolation is allowed, `extrapolated`
-        (..., species). Points that could not be solved hold NaN; check `status`.
+        (..., species). Points that could not be solved hold NaN; check `status`. `mole_fraction` is that in the
+        gas, NaN where no gas is left.
+        With `condensed` or `held_back` also, over the dimension `phase`: `phase_amount` [mol],
+        `phase_amount_per_feed` [1], `phase_mass` [kg], `phase_element_fraction` (..., phase, element) [1],
+        `phase_activity` [1] (1 where present, below 1 where nothing drives the phase to form) and `phase_form`.
 
     Raises:
         ConditionsError: feed, temperature or pressure impossible or not fitting together.
@@ -128,7 +161,14 @@ def equilibrium(
         >>> result.mole_fraction.sel(species="H2", pressure=20e5)  # doctest: +SKIP
     """
     conditions = read_conditions(
-        feed, temperature, pressure, species=species, library=library, extrapolate=extrapolate
+        feed,
+        temperature,
+        pressure,
+        species=species,
+        condensed=condensed,
+        held_back=held_back,
+        library=library,
+        extrapolate=extrapolate,
     )
     return solve(conditions, extrapolate=extrapolate, threads=threads, progress=progress)
 
@@ -139,6 +179,8 @@ def read_conditions(
     pressure: Number,
     *,
     species: Sequence[str | Species] | None = None,
+    condensed: PhaseNames = None,
+    held_back: PhaseNames = None,
     library: SpeciesLibrary | None = None,
     extrapolate: bool = False,
 ) -> Conditions:
@@ -160,7 +202,11 @@ def read_conditions(
         one for one, total in zip(found, values.reshape(-1, len(found)).sum(axis=0), strict=True) if total > 0
     ]
     chosen = _default_species(present, library) if species is None else _named_species(species, library)
-    table = thermo_table(chosen, extrapolate)
+    phases = _named_phases(condensed, "condensed", present, library)
+    held = _named_phases(held_back, "held_back", present, library)
+    if twice := {each.name for each in phases}.intersection(each.name for each in held):
+        raise ConditionsError("held_back", f"{min(twice)} cannot be held back and take part")
+    table = thermo_table([*chosen, *phases], extrapolate)
     composition = composition_matrix(found, table.elements, present)
     scaled, factor = element_amounts(values.reshape(-1, len(found)), composition)
     coordinates = {
@@ -170,7 +216,18 @@ def read_conditions(
         if name not in ("temperature", "pressure") and name not in RESULT_NAMES
     }
     labelled_feed = Labelled((*feed_sizes, "feed_species"), values)
-    return Conditions(table, tuple(found), labelled_feed, composition, scaled, factor, T, p, coordinates)
+    return Conditions(
+        table,
+        tuple(found),
+        labelled_feed,
+        composition,
+        scaled,
+        factor,
+        T,
+        p,
+        coordinates,
+        held_back=tuple(held),
+    )
 
 
 def solve(
@@ -185,16 +242,38 @@ def solve(
     T = conditions.temperature.values.ravel()
     gibbs = table.gibbs_RT(T)
     log_pressure = np.log(conditions.pressure.values.ravel() / STANDARD_PRESSURE)
-    common = (table.formula_matrix, conditions.element_amounts, gibbs)
-    if conditions.is_product:
-        solution: Any = solve_grid(*common, T, log_pressure, threads=threads, progress=progress)
-    else:
-        indices = _point_indices(conditions)
-        solution = solve_points(*common, T, log_pressure, *indices, threads=threads, progress=progress)
+    solution = solve_arrays(conditions, gibbs, log_pressure, threads=threads, progress=progress)
     extrapolated = (
-        table.extrapolated(T).reshape(*conditions.temperature.values.shape, -1) if extrapolate else None
+        conditions.gas_table.extrapolated(T).reshape(*conditions.temperature.values.shape, -1)
+        if extrapolate
+        else None
     )
     return assemble(conditions, solution, extrapolated)
+
+
+def solve_arrays(
+    conditions: Conditions,
+    gibbs: FloatArray,
+    log_pressure: FloatArray,
+    *,
+    threads: int | None = None,
+    progress: Progress | None = None,
+) -> GridSolution:
+    """The solver for maps or the one for scattered points.
+
+    Args:
+        gibbs: g/RT of gases and phases, (nT, S + K); +inf where a phase is not to be considered.
+        log_pressure: ln(p / 1 bar), (nP,).
+    """
+    T = conditions.temperature.values.ravel()
+    common = (conditions.table.formula_matrix, conditions.element_amounts, gibbs)
+    condensed = np.array([each.state != "g" for each in conditions.table.species])
+    options: dict[str, Any] = {"threads": threads, "progress": progress}
+    if condensed.any():
+        options["condensed"] = condensed
+    if conditions.is_product:
+        return solve_grid(*common, T, log_pressure, **options)
+    return solve_points(*common, T, log_pressure, *_point_indices(conditions), **options)
 
 
 def _point_indices(conditions: Conditions) -> tuple[NDArray[np.intp], NDArray[np.intp], NDArray[np.intp]]:
@@ -311,4 +390,21 @@ def _named_species(names: Sequence[str | Species], library: SpeciesLibrary) -> l
             chosen.append(species)
     if not chosen:
         raise ConditionsError("species", "the list is empty")
+    return chosen
+
+
+def _named_phases(
+    names: PhaseNames, argument: str, present: Sequence[Species], library: SpeciesLibrary
+) -> list[Species]:
+    if names is None:
+        return []
+    if names == "all":
+        return list(library.condensed({element for each in present for element in each.composition}))
+    chosen: list[Species] = []
+    for name in [names] if isinstance(names, str) else names:
+        species = library.find_condensed(name) if isinstance(name, str) else name
+        if species.state == "g":
+            raise ConditionsError(argument, f"{species.name} is a gas; name solids and liquids here")
+        if not any(species.name == other.name for other in chosen):
+            chosen.append(species)
     return chosen

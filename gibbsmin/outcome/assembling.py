@@ -10,6 +10,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from gibbsmin.labelled import Labelled
+from gibbsmin.outcome.phases import phase_coordinates, phase_variables
 
 if TYPE_CHECKING:
     from gibbsmin.solving import Conditions
@@ -20,7 +21,9 @@ RESULT_NAMES = frozenset(
     """
     species element feed_species molar_mass feed_molar_mass atoms feed_atoms
     mole_fraction amount gas_amount element_potential status gap balance_residual iterations feed_amount
-    extrapolated dry_mole_fraction mean_molar_mass density enthalpy heat_capacity_frozen
+    root phase phase_takes_part phase_molar_mass phase_atoms phase_amount phase_amount_per_feed phase_mass
+    phase_element_fraction phase_activity phase_form enthalpy_per_feed heat_capacity_frozen_per_feed
+    heat_capacity_equilibrium_per_feed extrapolated dry_mole_fraction mean_molar_mass density enthalpy heat_capacity_frozen
     heat_capacity_equilibrium heat_duty heat_duty_per_feed crosscheck_status crosscheck_difference
     """.split()  # noqa: SIM905  easier to read than thirty quoted words
 )
@@ -47,6 +50,8 @@ def assemble(conditions: Conditions, solution: Any, extrapolated: NDArray[np.boo
     amount = solution.amounts.reshape(*shape, -1)
     if (conditions.factor != 1).any():
         amount = amount / factor[..., None]
+    gases = len(conditions.gases)
+    amount, phase_amount = amount[..., :gases], amount[..., gases:]
     status = solution.status.reshape(shape).astype(np.int8, copy=False)
     gas = amount.sum(axis=-1)
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -93,13 +98,20 @@ def assemble(conditions: Conditions, solution: Any, extrapolated: NDArray[np.boo
             flag_values=np.array([0, 1], dtype=np.int8),
             flag_meanings="inside_range extrapolated",
         )
+    coordinates = dict(_coordinates(conditions))
+    if conditions.phases or conditions.held_back:
+        potentials = solution.element_potentials.reshape(*shape, -1)
+        extrapolate = conditions.table.extrapolate
+        data |= phase_variables(conditions, phase_amount, amount, potentials, unit, extrapolate=extrapolate)
+        coordinates |= phase_coordinates(conditions)
     attributes = {
         "Conventions": "CF-1.11",
-        "title": "Equilibrium composition of an ideal-gas mixture",
+        "title": "Equilibrium composition of an ideal-gas mixture"
+        + (" beside condensed phases" if conditions.phases else ""),
         "source": f"gibbsmin {_version()}",
         "comment": "Equilibrium is a limit, not a rate. Points whose status is not 0 hold NaN.",
     }
-    return xr.Dataset(data, coords=_coordinates(conditions), attrs=attributes)
+    return xr.Dataset(data, coords=coordinates, attrs=attributes)
 
 
 def status_variable(dims: tuple[str, ...], status: NDArray[np.int8]) -> xr.Variable:
@@ -124,17 +136,20 @@ def _coordinates(conditions: Conditions) -> Mapping[str, xr.Variable]:
         **conditions.coordinates,
         "temperature": _variable(temperature.dims, temperature.values, "K", "temperature"),
         "pressure": _variable(pressure.dims, pressure.values, "Pa", "absolute pressure"),
-        "species": _names("species", [each.name for each in table.species], "species"),
+        "species": _names("species", [each.name for each in conditions.gases], "species"),
         "element": _names("element", table.elements, "element"),
         "feed_species": _names("feed_species", [each.name for each in feed_species], "species of the feed"),
         "molar_mass": _variable(
-            ("species",), np.array([each.molar_mass for each in table.species]), "kg mol-1", "molar mass"
+            ("species",), np.array([each.molar_mass for each in conditions.gases]), "kg mol-1", "molar mass"
         ),
         "feed_molar_mass": _variable(
             ("feed_species",), np.array([each.molar_mass for each in feed_species]), "kg mol-1", "molar mass"
         ),
         "atoms": _variable(
-            ("species", "element"), np.array(table.formula_matrix).T, "1", "atoms of the element per molecule"
+            ("species", "element"),
+            np.array(table.formula_matrix[:, : len(conditions.gases)]).T,
+            "1",
+            "atoms of the element per molecule",
         ),
         "feed_atoms": _variable(
             ("feed_species", "element"), conditions.feed_composition, "1", "atoms of the element per molecule"

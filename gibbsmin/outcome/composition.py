@@ -1,5 +1,8 @@
 """Results that follow from amounts alone: dry basis, conversion, yield, selectivity, ratios, density.
 
+Mole fractions and density are those of the gas; conversions, yields, selectivities and ratios count condensed
+phases too.
+
 Every function takes the data set of `gibbsmin.equilibrium` and returns an `xarray.DataArray` over its points
 with `units` and `long_name`. A result whose denominator is zero is NaN, and so are unsolved points.
 n is the amount at equilibrium and n0 the amount in the feed; a species that is not in the feed has n0 = 0.
@@ -15,6 +18,7 @@ import xarray as xr
 
 from gibbsmin.constants import GAS_CONSTANT
 from gibbsmin.errors import UnknownSpeciesError
+from gibbsmin.outcome.phases import phase_series
 
 WATER = "H2O"
 
@@ -101,6 +105,16 @@ def density(dataset: xr.Dataset) -> xr.DataArray:
     return _labelled(result, "density", "kg m-3", "density of the ideal gas")
 
 
+def amount_at_equilibrium(dataset: xr.Dataset) -> xr.DataArray:
+    """Gas and condensed phases together, in the unit of the amounts."""
+    total = dataset["gas_amount"].copy(deep=False)
+    if "phase_amount" in dataset:
+        total = total + dataset["phase_amount"].sum("phase", skipna=False)
+    return _labelled(
+        total, "amount", dataset["gas_amount"].attrs["units"], "amount of gas and condensed phases"
+    )
+
+
 def feed_total(dataset: xr.Dataset) -> xr.DataArray:
     """Total amount of the feed, in the unit of the amounts."""
     total = dataset["feed_amount"].sum("feed_species")
@@ -108,14 +122,15 @@ def feed_total(dataset: xr.Dataset) -> xr.DataArray:
 
 
 def amount_out(dataset: xr.Dataset, species: str) -> xr.DataArray:
-    """Amount of one species at equilibrium; zero for a species of the feed that is not among the listed
-    gases.
+    """Amount of one gas or condensed phase at equilibrium; zero for a species of the feed that is neither.
 
     Raises:
-        UnknownSpeciesError: neither a listed gas nor a species of the feed.
+        UnknownSpeciesError: neither listed nor a species of the feed.
     """
     if species in dataset["species"].values:
         return dataset["amount"].sel(species=species, drop=True)
+    if "phase" in dataset.coords and species in dataset["phase"].values:
+        return phase_series(dataset, "phase_amount", species)
     if species in dataset["feed_species"].values:
         return xr.zeros_like(dataset["gas_amount"]).where(dataset["gas_amount"].notnull())
     raise UnknownSpeciesError(species, [str(name) for name in dataset["species"].values[:5]])
@@ -132,8 +147,12 @@ def _formed(dataset: xr.Dataset, species: str) -> xr.DataArray:
 
 
 def _atoms(dataset: xr.Dataset, species: str, element: str) -> float:
-    for atoms, names in (("atoms", "species"), ("feed_atoms", "feed_species")):
-        if species in dataset[names].values and element in dataset["element"].values:
+    for atoms, names in (("atoms", "species"), ("phase_atoms", "phase"), ("feed_atoms", "feed_species")):
+        if (
+            names in dataset.coords
+            and species in dataset[names].values
+            and element in dataset["element"].values
+        ):
             return float(dataset[atoms].sel({names: species, "element": element}))
     return 0.0
 

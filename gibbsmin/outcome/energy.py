@@ -2,8 +2,9 @@
 
 Enthalpies count from the elements in their reference states at 298.15 K, so heats of reaction are included.
 The gas is ideal: its enthalpy does not depend on pressure. Each function takes the data set of
-`gibbsmin.equilibrium` and the table of thermodynamic functions of the same species in the same order;
-unsolved points are NaN.
+`gibbsmin.equilibrium` and the table of thermodynamic functions of the same gases in the same order;
+unsolved points are NaN. What is per mol of gas is that of the gas alone. What is per mol of feed, or in total,
+counts the condensed phases as well and needs their table too.
 """
 
 from __future__ import annotations
@@ -17,7 +18,8 @@ import xarray as xr
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
-from gibbsmin.outcome.response import composition_response
+from gibbsmin.outcome.phases import atoms_of
+from gibbsmin.outcome.response import composition_response, response_beside_phases
 
 if TYPE_CHECKING:
     from gibbsmin.species import ThermoTable
@@ -77,20 +79,42 @@ def feed_enthalpy(parts: Sequence[FeedPart]) -> xr.DataArray:
     return total
 
 
-def heat_duty(dataset: xr.Dataset, table: ThermoTable, fed: xr.DataArray) -> xr.Dataset:
-    """Heat to be supplied to turn the feed into the equilibrium gas at its temperature (negative: removed).
+def total_enthalpy(
+    dataset: xr.Dataset, table: ThermoTable, phases: ThermoTable | None = None
+) -> xr.DataArray:
+    """Enthalpy of gas and condensed phases: sum n_j h_j(T), in J for amounts in mol, in J/h for mol/h."""
+    total: xr.DataArray = xr.dot(
+        dataset["amount"], _by_species(dataset, molar_enthalpies, table), dim="species"
+    )
+    if phases is not None:
+        total = total + _of_phases(dataset, molar_enthalpies, phases)
+    return total
+
+
+def enthalpy_per_feed(dataset: xr.Dataset, table: ThermoTable, phases: ThermoTable) -> xr.DataArray:
+    """Enthalpy of gas and condensed phases [J per mol of feed]."""
+    result = total_enthalpy(dataset, table, phases) / dataset["feed_amount"].sum("feed_species")
+    title = "enthalpy of gas and condensed phases per mol of feed"
+    return _labelled(result, "enthalpy_per_feed", "J mol-1", title)
+
+
+def heat_duty(
+    dataset: xr.Dataset, table: ThermoTable, fed: xr.DataArray, phases: ThermoTable | None = None
+) -> xr.Dataset:
+    """Heat to be supplied to turn the feed into the equilibrium gas and phases at their temperature (negative:
+    removed).
 
     Q = sum n_j h_j(T) - H_feed, at constant pressure without shaft work.
 
     Args:
         fed: enthalpy of the feed as `feed_enthalpy` gives it.
+        phases: table of the condensed phases that take part, or None.
 
     Returns:
         `heat_duty_per_feed` [J per mol of feed] and `heat_duty` in total: [J], or [W] when the amounts are
         rates.
     """
-    h = _by_species(dataset, molar_enthalpies, table)
-    total = xr.dot(dataset["amount"], h, dim="species") - fed
+    total = total_enthalpy(dataset, table, phases) - fed
     per_feed = total / dataset["feed_amount"].sum("feed_species")
     rate = dataset["amount"].attrs["units"].endswith("h-1")
     in_all = total / SECONDS_PER_HOUR if rate else total
@@ -152,6 +176,78 @@ def heat_capacities(dataset: xr.Dataset, table: ThermoTable) -> xr.Dataset:
             ),
         }
     )
+
+
+def heat_capacities_with_phases(dataset: xr.Dataset, table: ThermoTable, phases: ThermoTable) -> xr.Dataset:
+    """Heat capacity of gas and condensed phases together [J/(K mol of feed)], frozen and at equilibrium.
+
+    A present phase keeps its potential, a_k.dpi = dc_k, and takes up or gives off what the balances ask for; with
+    that, the formula of `heat_capacities` stands as it is, its sum running over the gas. The amounts of absent
+    phases stay zero: at a boundary, where one begins to form, the value is that of one side.
+
+    NaN in the value at equilibrium where phases and pressure fix the temperature (a melting point, or gas that
+    the phases alone determine): heat then changes the amounts and not the temperature.
+    """
+    amount = dataset["amount"].transpose(..., "species")
+    points = amount.shape[:-1]
+    n = amount.values.reshape(-1, amount.shape[-1])
+    present = (_taking_part(dataset).transpose(..., "phase").values > 0).reshape(len(n), -1)
+    T = dataset["temperature"]
+    frozen = xr.dot(dataset["amount"], _by_species(dataset, molar_heat_capacities, table), dim="species")
+    frozen = frozen + _of_phases(dataset, molar_heat_capacities, phases)
+    flat_T = _flat_index(T, amount.dims[:-1], points)
+    gas_h, phase_h = table.enthalpy_RT(T.values.ravel()), phases.enthalpy_RT(T.values.ravel())
+    gas_constants = np.array([each.gas_constant for each in table.species])
+    names = [str(name) for name in dataset["element"].values]
+    A, B = atoms_of(table.species, names).T, atoms_of(phases.species, names).T
+    shift = np.full(len(n), np.nan)
+    with threadpool_limits(1, user_api="blas"), np.errstate(invalid="ignore"):
+        for pattern in np.unique(present, axis=0):
+            members = np.flatnonzero((present == pattern).all(axis=1) & np.isfinite(n).all(axis=1))
+            independent = np.linalg.matrix_rank(B[:, pattern]) == pattern.sum()
+            for start in range(0, len(members), _POINTS_AT_ONCE):
+                at = members[start : start + _POINTS_AT_ONCE]
+                no_gas = n[at].sum(axis=1) == 0
+                if independent and no_gas.any():
+                    shift[at[no_gas]] = 0.0  # the balances alone fix the amounts of the phases
+                at = at[~no_gas]
+                beside = response_beside_phases(
+                    A, B[:, pattern], n[at], -gas_h[flat_T[at]], -phase_h[flat_T[at]][:, pattern]
+                )
+                if beside is not None:
+                    response, total = beside
+                    xi = np.where(n[at] > 0, response - total[:, None], 0.0)
+                    shift[at] = (n[at] * xi**2) @ gas_constants
+    fed = dataset["feed_amount"].sum("feed_species")
+    reacting = frozen + xr.DataArray(shift.reshape(points), dims=amount.dims[:-1])
+    basis = "per mol of feed at constant pressure, gas and condensed phases"
+    return xr.Dataset(
+        {
+            f"heat_capacity_{kind}_per_feed": _labelled(
+                value / fed,
+                f"heat_capacity_{kind}_per_feed",
+                "J mol-1 K-1",
+                f"heat capacity, {words}, {basis}",
+            )
+            for kind, words, value in (
+                ("frozen", "amounts frozen", frozen),
+                ("equilibrium", "amounts following", reacting),
+            )
+        }
+    )
+
+
+def _taking_part(dataset: xr.Dataset) -> xr.DataArray:
+    return dataset["phase_amount"].isel(phase=dataset["phase_takes_part"].values == 1)
+
+
+def _of_phases(dataset: xr.Dataset, function: object, phases: ThermoTable) -> xr.DataArray:
+    """Sum over the phases of amount times a molar function; absent phases, which may lack data, do not count."""
+    T = dataset["temperature"]
+    values = function(phases, T.values)  # type: ignore[operator]
+    molar = xr.DataArray(np.nan_to_num(values), dims=(*T.dims, "phase"))
+    total: xr.DataArray = xr.dot(_taking_part(dataset).drop_vars("phase"), molar, dim="phase")
+    return total
 
 
 def _by_species(dataset: xr.Dataset, function: object, table: ThermoTable) -> xr.DataArray:

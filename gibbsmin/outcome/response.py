@@ -59,6 +59,45 @@ def composition_response(
     return response, total
 
 
+def response_beside_phases(
+    formula_matrix: FloatArray,
+    phase_matrix: FloatArray,
+    amounts: FloatArray,
+    potential_derivative: FloatArray,
+    phase_derivative: FloatArray,
+) -> tuple[FloatArray, FloatArray] | None:
+    """`composition_response` of a gas beside pure condensed phases that are all present.
+
+    A phase demands a_k.dpi = dc_k. What its potential fixes is taken out of the element rows, and what is left is
+    a gas problem again.
+
+    Args:
+        formula_matrix: of the gases, (E, S). phase_matrix: of the phases, (E, K), K may be 0.
+        amounts: of the gases, (N, S). potential_derivative: (N, S). phase_derivative: (N, K).
+
+    Returns:
+        d ln n (N, S) and d ln N (N,), or None where the phases depend on each other or leave the gas no freedom.
+    """
+    if phase_matrix.shape[1] == 0:
+        return composition_response(formula_matrix, amounts, potential_derivative)
+    rows = abundant_components(phase_matrix.T, np.ones(len(phase_matrix)))
+    if len(rows) < phase_matrix.shape[1]:
+        return None
+    square = phase_matrix[rows]
+    others = np.setdiff1d(np.arange(len(phase_matrix)), rows)
+    # Whole numbers stay whole when multiplied by the determinant (Cramer's rule).
+    determinant = abs(float(np.linalg.det(square)))
+    left: FloatArray = determinant * (
+        formula_matrix[others] - phase_matrix[others] @ np.linalg.solve(square, formula_matrix[rows])
+    )
+    whole = np.rint(left)
+    left = np.where(np.abs(left - whole) < _NO_ENTRY, whole, left)
+    if not (np.abs(left[:, (amounts > 0).any(axis=0)]) > _NO_ENTRY).any():
+        return None
+    fixed = np.linalg.solve(square.T, phase_derivative.T).T @ formula_matrix[rows]
+    return composition_response(left, amounts, potential_derivative - fixed)
+
+
 def abundant_components(formula_matrix: FloatArray, amounts: FloatArray) -> NDArray[np.intp]:
     """Indices of the most abundant linearly independent species of one point, most abundant first.
 

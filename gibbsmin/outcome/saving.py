@@ -22,6 +22,7 @@ import numpy as np
 import xarray as xr
 
 from gibbsmin.errors import FolderExistsError, MissingPackageError
+from gibbsmin.outcome.composition import amount_at_equilibrium
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -200,7 +201,7 @@ def record(outcome: Outcome) -> dict[str, Any]:
         "settings": dict(outcome.settings),
         "points": outcome.points,
         "unsolved points": outcome.unsolved,
-        "largest gap per mol of gas": _largest(dataset["gap"] / dataset["gas_amount"]),
+        "largest gap per mol of gas": _largest(dataset["gap"] / amount_at_equilibrium(dataset)),
         "largest balance residual": _largest(dataset["balance_residual"]),
         "remarks": list(scenario.remarks),
         "cross-check": {

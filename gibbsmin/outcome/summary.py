@@ -9,6 +9,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from gibbsmin.outcome.composition import amount_at_equilibrium
+
 if TYPE_CHECKING:
     import xarray as xr
 
@@ -163,7 +165,7 @@ def evidence_lines(outcome: Outcome) -> list[str]:
     solved = outcome.points - outcome.unsolved
     lines = [f"solved {solved} of {outcome.points} points"]
     if solved:
-        gap = float((dataset["gap"] / dataset["gas_amount"]).max())
+        gap = float((dataset["gap"] / amount_at_equilibrium(dataset)).max())
         balance = float(dataset["balance_residual"].max())
         lines[0] += f"; largest gap {gap:.1e} per mol of gas, largest balance error {balance:.1e}"
     lines += _unsolved(outcome)

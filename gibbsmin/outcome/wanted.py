@@ -15,16 +15,21 @@ if TYPE_CHECKING:
 
 
 def add_derived(
-    dataset: xr.Dataset, table: ThermoTable, wanted: WantedResults, fed: xr.DataArray | None
+    dataset: xr.Dataset,
+    table: ThermoTable,
+    wanted: WantedResults,
+    fed: xr.DataArray | None,
+    phases: ThermoTable | None = None,
 ) -> xr.Dataset:
     """The data set with all derived results.
 
     Args:
         dataset: as `gibbsmin.equilibrium` returns it.
-        table: thermodynamic functions of its species.
+        table: thermodynamic functions of its gases.
         wanted: results by name; each becomes a variable called as `variable_name` says.
         fed: enthalpy of the feed (see `energy.feed_enthalpy`), or None when a stream has no temperature: then
             there is no heat duty.
+        phases: thermodynamic functions of the condensed phases that take part, or None.
     """
     results: dict[str, xr.DataArray] = {}
     if wanted.dry_basis and composition.WATER in dataset["species"].values:
@@ -32,9 +37,13 @@ def add_derived(
     results["mean_molar_mass"] = composition.mean_molar_mass(dataset)
     results["density"] = composition.density(dataset)
     results["enthalpy"] = energy.mixture_enthalpy(dataset, table)
-    parts = [energy.heat_capacities(dataset, table)]
+    if phases is None:
+        parts = [energy.heat_capacities(dataset, table)]
+    else:
+        parts = [energy.heat_capacities_with_phases(dataset, table, phases)]
+        results["enthalpy_per_feed"] = energy.enthalpy_per_feed(dataset, table, phases)
     if fed is not None:
-        parts.append(energy.heat_duty(dataset, table, fed))
+        parts.append(energy.heat_duty(dataset, table, fed, phases))
     for part in parts:
         results.update({str(name): array for name, array in part.data_vars.items()})
     complete = dataset.assign({name: array.variable for name, array in results.items()})

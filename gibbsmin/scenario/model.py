@@ -188,12 +188,31 @@ class ProductRatio:
 
 
 @dataclass(frozen=True)
+class WantedBoundary:
+    """Where along an axis something happens.
+
+    Attributes:
+        name: as the file has it.
+        kind: "phase" (the phase begins to form), "mole fraction" or "conversion" (takes the value).
+        species: name of the phase or of the gas.
+        along: coordinate name of the axis.
+        value: mole fraction or conversion [1]; 1 for a phase, its activity.
+    """
+
+    name: str
+    kind: Literal["phase", "mole fraction", "conversion"]
+    species: str
+    along: str
+    value: float = 1.0
+
+
+@dataclass(frozen=True)
 class WantedResults:
     """What to report and draw beside the full composition.
 
     `line_pressures` are the pressures [Pa], all of them points of the grid, at which composition is drawn
     against temperature; empty means that the figures choose. With an empty `key_species` the most abundant
-    ones are chosen once they are known.
+    ones are chosen once they are known. `dew_points` are gases whose own liquid is meant.
     """
 
     key_species: tuple[str, ...]
@@ -203,6 +222,8 @@ class WantedResults:
     ratios: tuple[ProductRatio, ...] = ()
     dry_basis: bool = True
     line_pressures: tuple[float, ...] = ()
+    dew_points: tuple[str, ...] = ()
+    boundaries: tuple[WantedBoundary, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -223,10 +244,11 @@ class OutputWanted:
 
 @dataclass(frozen=True)
 class SpeciesChoice:
-    """Which gases take part, and by which rule of the file.
+    """Which gases and condensed phases take part, and by which rule of the file.
 
     Attributes:
         species: the gases themselves, in the order of the results.
+        condensed: the pure condensed phases that may form. held_back: those whose activity alone is wanted.
         rule: one sentence for people.
         extrapolate: whether polynomials may be used outside their range.
         left_out: species that the rule found but that were left out, name -> reason.
@@ -236,6 +258,8 @@ class SpeciesChoice:
     rule: str
     extrapolate: bool = False
     left_out: Mapping[str, str] = field(default_factory=dict)
+    condensed: tuple[Species, ...] = ()
+    held_back: tuple[Species, ...] = ()
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -254,9 +278,9 @@ class Scenario:
         rate: True when streams are per time; then amounts are in mol/h.
         temperature, pressure, further_axes: the grid. The solved map has the shape
             (*further axes, temperature, pressure).
-        species: the gases that take part.
+        species: the gases that take part; condensed phases are in `choice`.
         feed_species: every species of the feed, name -> Species; condensed ones (liquid water, coal) may be
-            among them although only gases take part in the equilibrium.
+            among them whether or not they take part in the equilibrium.
         library: the species library with the scenario's own species in it.
         ambient_pressure: Pa; gauge pressures were read against it.
         remarks: things that are no fault but should be told.

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
@@ -47,8 +47,17 @@ class Reading:
 
     def species(self, name: str, path: YamlPath, *, of_key: bool = False) -> Species | None:
         """The species called `name`, or None after a fault."""
+        return self._found(self.library.find, name, path, of_key)
+
+    def condensed(self, name: str, path: YamlPath) -> Species | None:
+        """The solid or liquid called `name`, or None after a fault."""
+        return self._found(self.library.find_condensed, name, path, False)
+
+    def _found(
+        self, find: Callable[[str], Species], name: str, path: YamlPath, of_key: bool
+    ) -> Species | None:
         try:
-            return self.library.find(name)
+            return find(name)
         except UnknownSpeciesError as error:
             hint = f"; did you mean {', '.join(error.suggestions)}?" if error.suggestions else ""
             self.fault(path, f"no species is called {name!r}{hint}", of_key=of_key)

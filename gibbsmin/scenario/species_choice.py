@@ -1,4 +1,4 @@
-"""Which gases take part: a list, or all gases of some elements within limits."""
+"""Which gases and condensed phases take part: lists, or all of some elements within limits."""
 
 from __future__ import annotations
 
@@ -16,6 +16,9 @@ from gibbsmin.species.elements import ATOMIC_NUMBERS
 
 if TYPE_CHECKING:
     from gibbsmin.species import Species
+
+ROUNDING = 1e-9
+"""Relative; a temperature this little beyond a limit is that limit in another unit."""
 
 LIMITS = ("elements", "leave out", "largest carbon number", "ions", "radicals")
 """Keys that only make sense when the gases are not listed one by one."""
@@ -44,7 +47,7 @@ def add_own_species(reading: Reading, data: Mapping[str, Any], folder: Path) -> 
 
 def check_names(reading: Reading, data: Mapping[str, Any]) -> None:
     """Faults of the names in this section alone, for when the feed is not sound."""
-    for key in ("gases", "leave out"):
+    for key in ("gases", "leave out", "condensed", "held back"):
         names = data.get(key, ())
         for i, name in enumerate(() if isinstance(names, str) else names):
             if name is not FAULTY:
@@ -63,12 +66,70 @@ def choose_species(
         chosen, rule = _listed_gases(reading, data, gases, feed)
     if len(reading.faults) > faults_before:
         return None
+    held_back = _phases(reading, data, "held back", feed)
+    condensed = _phases(reading, data, "condensed", feed)
+    not_wanted = {each.formula for each in held_back}
+    for each in condensed if isinstance(data.get("condensed"), list) else ():
+        if each.formula in not_wanted:
+            reading.fault(
+                ("species", "held back"), f"{each.name} cannot be held back and take part", of_key=True
+            )
+    condensed = [each for each in condensed if each.formula not in not_wanted]
     policy = data.get("outside data range", "stop")
     chosen, left_out = _within_data(reading, chosen, feed, temperature, policy)
-    _check_coverage(reading, chosen, feed)
+    _check_coverage(reading, [*chosen, *condensed], feed)
     if len(reading.faults) > faults_before:
         return None
-    return SpeciesChoice(tuple(chosen), rule, policy == "extrapolate", left_out)
+    if temperature is not None and policy != "extrapolate":
+        span = temperature.values[0], temperature.values[-1]
+        reading.remarks += _absences([*condensed, *held_back], *span)
+    if condensed:
+        rule = f"{rule}; beside them {_phase_rule(data, condensed)}"
+    return SpeciesChoice(
+        tuple(chosen), rule, policy == "extrapolate", left_out, tuple(condensed), tuple(held_back)
+    )
+
+
+def _phase_rule(data: Mapping[str, Any], condensed: Sequence[Species]) -> str:
+    names = ", ".join(each.name for each in condensed)
+    kind = "all condensed phases" if data["condensed"] == "all" else "the condensed phases"
+    return f"{kind} {names}"
+
+
+def _phases(reading: Reading, data: Mapping[str, Any], key: str, feed: Feed) -> list[Species]:
+    """The condensed substances that a key names; in a list a formula means the solid or liquid, not the gas."""
+    names = data.get(key, ())
+    if names == "all":
+        unwanted = set()
+        for i, name in enumerate(data.get("leave out", ())):
+            species = None if name is FAULTY else reading.species(name, ("species", "leave out", i))
+            if species is not None:
+                unwanted.add(species.name)
+        found = reading.library.condensed(_elements(reading, data, feed, remark=False))
+        return [each for each in found if each.name not in unwanted]
+    chosen: list[Species] = []
+    for i, name in enumerate(names):
+        place = ("species", key, i)
+        species = None if name is FAULTY else reading.condensed(name, place)
+        if species is None:
+            continue
+        if _named_in(chosen, species):
+            reading.fault(place, f"{species.name} is listed twice (here as {name!r})")
+        else:
+            chosen.append(species)
+    return chosen
+
+
+def _absences(phases: Sequence[Species], low: float, high: float) -> list[str]:
+    return [
+        f"{each.name} has data from {each.lower:g} to {each.upper:g} K; outside them it counts as absent"
+        for each in phases
+        if low < each.lower * (1 - ROUNDING) or high > each.upper * (1 + ROUNDING)
+    ]
+
+
+def _named_in(phases: Sequence[Species], species: Species) -> bool:
+    return any(each.name == species.name for each in phases)
 
 
 def _listed_gases(
@@ -123,6 +184,8 @@ def _all_gases(reading: Reading, data: Mapping[str, Any], feed: Feed) -> tuple[l
         radicals=radicals,
     )
     names = {species.name for species in found}
+    if data.get("condensed") == "all":
+        names |= {species.name for species in reading.library.condensed(elements)}
     for name, i in unwanted.items():
         if name not in names:
             reading.remarks.append(f"leave out: {data['leave out'][i]} would not take part anyway")
@@ -141,7 +204,7 @@ def _all_gases(reading: Reading, data: Mapping[str, Any], feed: Feed) -> tuple[l
     return fed + rest, f"all gases of {', '.join(elements)}" + (f" ({'; '.join(limits)})" if limits else "")
 
 
-def _elements(reading: Reading, data: Mapping[str, Any], feed: Feed) -> list[str]:
+def _elements(reading: Reading, data: Mapping[str, Any], feed: Feed, *, remark: bool = True) -> list[str]:
     of_feed = list(dict.fromkeys(e for species in feed.species.values() for e in species.composition))
     if "elements" not in data:
         return of_feed
@@ -152,10 +215,10 @@ def _elements(reading: Reading, data: Mapping[str, Any], feed: Feed) -> list[str
         if reading.choice(element, ATOMIC_NUMBERS, "the symbol of an element", ("species", "elements", i)):
             given.append(element)
     idle = [each for each in given if each not in of_feed]
-    if idle:
+    if idle and remark:
         reading.remarks.append(f"elements: no stream holds {', '.join(idle)}, so its gases stay at zero")
     missing = [each for each in of_feed if each not in given]
-    if missing:
+    if missing and remark:
         reading.fault(
             ("species", "elements"), f"the feed holds {', '.join(missing)}, which is not listed here"
         )
@@ -190,7 +253,7 @@ def _within_data(
 
 
 def _check_coverage(reading: Reading, chosen: list[Species], feed: Feed) -> None:
-    """Every element of the feed needs a gas to go into."""
+    """Every element of the feed needs a gas or phase to go into."""
     covered = {element for species in chosen for element in species.composition}
     for element in dict.fromkeys(e for s in feed.species.values() for e in s.composition):
         if element not in covered:

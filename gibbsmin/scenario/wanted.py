@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from typing import TYPE_CHECKING, Any
+from collections.abc import Iterable, Mapping, Sequence
+from typing import TYPE_CHECKING, Any, Literal
 
+from gibbsmin.errors import AmbiguousSpeciesError, FormulaError, UnknownSpeciesError
 from gibbsmin.scenario.feed import Feed
 from gibbsmin.scenario.model import (
     DEFAULT_SAMPLE_SIZE,
@@ -16,6 +17,7 @@ from gibbsmin.scenario.model import (
     ProductRatio,
     Selectivity,
     SpeciesChoice,
+    WantedBoundary,
     WantedResults,
     Yield,
 )
@@ -25,6 +27,12 @@ from gibbsmin.strict_yaml import YamlPath
 
 if TYPE_CHECKING:
     from gibbsmin.species import Species
+
+_BOUNDARY_KINDS: dict[str, Literal["phase", "mole fraction", "conversion"]] = {
+    "phase": "phase",
+    "mole fraction of": "mole fraction",
+    "conversion of": "conversion",
+}
 
 NEAR_ENOUGH = 0.01
 """Fraction by which the nearest pressure of the grid may differ from one of 'lines at' without a remark."""
@@ -49,6 +57,7 @@ def read_results(
     feed: Feed | None,
     choice: SpeciesChoice | None,
     pressure: Axis | None,
+    axes: Sequence[Axis] = (),
 ) -> WantedResults:
     """The wanted results; faults are recorded, so the return value counts only when there are none.
 
@@ -63,6 +72,8 @@ def read_results(
         ratios=tuple(reader.ratios(data.get("ratios", {}))),
         dry_basis=bool(data.get("dry basis", True)),
         line_pressures=reader.line_pressures(data.get("lines at", ()), pressure),
+        dew_points=tuple(reader.dew_points(data.get("dew points", ()))),
+        boundaries=tuple(reader.boundaries(data.get("boundaries", {}), axes)),
     )
 
 
@@ -71,6 +82,20 @@ class _ResultsReader:
         self.reading = reading
         self.feed = feed
         self.gases = None if choice is None else [species.name for species in choice.species]
+        self.phases = {} if choice is None else {each.name: each for each in choice.condensed}
+
+    def product(self, name: Any, path: YamlPath) -> Species | None:
+        """A gas or a condensed phase that takes part; the gas where both have the name."""
+        species = None if name is FAULTY else self.reading.species(name, path)
+        if species is None or self.gases is None or species.name in self.phases:
+            return species
+        if species.name not in self.gases:
+            same = [each for each in self.phases.values() if each.formula == species.formula]
+            if same:
+                return same[0]
+        everything = [*self.gases, *self.phases]
+        what = "a gas or phase that takes part" if self.phases else "a gas that takes part"
+        return species if self.reading.choice(species.name, everything, what, path) else None
 
     def gas(self, name: Any, path: YamlPath) -> Species | None:
         """A gas that takes part."""
@@ -81,11 +106,11 @@ class _ResultsReader:
         return species if takes_part else None
 
     def reactant(self, name: Any, path: YamlPath) -> Species | None:
-        """A gas of the feed."""
+        """A gas of the feed, or a condensed phase of it that takes part."""
         species = None if name is FAULTY else self.reading.species(name, path)
         if species is None or self.feed is None:
             return species
-        fed = [name for name, each in self.feed.species.items() if each.state == "g"]
+        fed = [name for name, each in self.feed.species.items() if each.state == "g" or name in self.phases]
         return species if self.reading.choice(species.name, fed, "a gas of the feed", path) else None
 
     def several(self, value: Any, path: YamlPath) -> tuple[str, ...]:
@@ -113,7 +138,7 @@ class _ResultsReader:
             path = ("results", "yields", name)
             if "of" not in entry:
                 continue
-            product = self.gas(entry["of"], (*path, "of"))
+            product = self.product(entry["of"], (*path, "of"))
             reactant = self.reactant(entry["from"], (*path, "from")) if "from" in entry else None
             element = entry.get("element")
             if reactant is None and "from" not in entry and element is None:
@@ -128,7 +153,7 @@ class _ResultsReader:
             path = ("results", "selectivities", name)
             if not {"of", "from", "element"} <= entry.keys():
                 continue
-            product = self.gas(entry["of"], (*path, "of"))
+            product = self.product(entry["of"], (*path, "of"))
             reactant = self.reactant(entry["from"], (*path, "from"))
             if product is None or reactant is None:
                 continue
@@ -144,6 +169,70 @@ class _ResultsReader:
             denominator = self.several(entry["to"], (*path, "to"))
             if numerator and denominator:
                 yield ProductRatio(name, numerator, denominator)
+
+    def dew_points(self, data: Iterable[Any]) -> Iterable[str]:
+        for i, item in enumerate(data):
+            path = ("results", "dew points", i)
+            vapour = self.gas(item, path)
+            if vapour is None:
+                continue
+            try:
+                liquid = self.reading.library.find_condensed(f"{vapour.formula}(l)")
+            except (UnknownSpeciesError, AmbiguousSpeciesError, FormulaError):
+                self.reading.fault(path, f"the library has no liquid {vapour.formula}")
+                continue
+            if liquid.composition != vapour.composition:
+                self.reading.fault(path, f"{liquid.name} is no liquid of {vapour.name}")
+                continue
+            yield vapour.name
+
+    def boundaries(self, data: Mapping[str, Any], axes: Sequence[Axis]) -> Iterable[WantedBoundary]:
+        for name, entry in data.items():
+            path: YamlPath = ("results", "boundaries", name)
+            found = [key for key in _BOUNDARY_KINDS if key in entry]
+            if len(found) != 1:
+                told = " and ".join(map(repr, found)) or "none of them"
+                self.reading.fault(
+                    path,
+                    f"needs one of 'phase', 'mole fraction of', 'conversion of'; found {told}",
+                    of_key=True,
+                )
+                continue
+            key = found[0]
+            if ("value" in entry) == (key == "phase"):
+                fault = "needs a 'value'" if key != "phase" else "takes no 'value': the activity is 1 there"
+                self.reading.fault((*path, key), f"{key!r} {fault}", of_key=True)
+                continue
+            species = self._boundary_species(key, entry[key], (*path, key))
+            along = entry.get("along")
+            titles = {axis.title: axis for axis in axes}
+            if axes and along is not None and self.reading.choice(along, titles, "an axis", (*path, "along")):
+                axis = titles[along]
+                if len(axis) < 2:
+                    self.reading.fault((*path, "along"), f"{along} has one value; a boundary needs a range")
+                elif species is not None:
+                    value = self._boundary_value(entry, key, path)
+                    if value is not None:
+                        yield WantedBoundary(name, _BOUNDARY_KINDS[key], species.name, axis.name, value)
+
+    def _boundary_species(self, key: str, name: Any, path: YamlPath) -> Species | None:
+        if key == "mole fraction of":
+            return self.gas(name, path)
+        if key == "conversion of":
+            return self.reactant(name, path)
+        return self.reading.condensed(name, path)
+
+    def _boundary_value(self, entry: Mapping[str, Any], key: str, path: YamlPath) -> float | None:
+        if key == "phase":
+            return 1.0
+        value = float(entry["value"])
+        least = 0.0 if key == "mole fraction of" else -1e30
+        if not least < value < 1:
+            self.reading.fault(
+                (*path, "value"), f"{value:g} is no {key.removesuffix(' of')} that can be crossed"
+            )
+            return None
+        return value
 
     def line_pressures(self, data: Iterable[Any], pressure: Axis | None) -> tuple[float, ...]:
         found: dict[float, None] = {}

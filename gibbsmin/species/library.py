@@ -133,6 +133,20 @@ class SpeciesLibrary:
                     return self._load(chosen)
         raise UnknownSpeciesError(query, self.suggestions(query))
 
+    def find_condensed(self, query: str) -> Species:
+        """As `find`, but where a gas has the name or formula too, the solid or liquid is meant.
+
+        Raises as `find`; UnknownSpeciesError too when there is only a gas.
+        """
+        try:
+            found = self.find(query)
+        except AmbiguousSpeciesError as error:
+            condensed = [name for name in error.candidates if self._entries[name].state != "g"]
+            if len(condensed) != 1:
+                raise
+            found = self._load(condensed[0])
+        return found if found.state != "g" else self.find(f"{found.formula}(cd)")
+
     def _named(self, text: str) -> str | None:
         names = self._alias_map().get(plain_words(text))
         if names is None:

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from gibbsmin.errors import ConditionsError
 from gibbsmin.running import fed_enthalpy, scenario_conditions
 from gibbsmin.study.model import AxisLabel, Case, Keep, Layout
 
@@ -28,7 +29,9 @@ class Preparing:
         self._axes: dict[bytes, FloatArray] = {}
 
     def add(self, name: str, values: Mapping[str, Any], scenario: Scenario) -> None:
-        """Raises ConditionsError where an axis of the scenario is called like a result."""
+        """Raises ConditionsError where an axis of the scenario is called like a result, or phases are listed."""
+        if scenario.choice.condensed or scenario.choice.held_back:
+            raise ConditionsError("species", "the cases of a study cannot have condensed phases yet")
         conditions = scenario_conditions(scenario)
         enthalpy = None
         if "heat duty" in self.keep.further and (fed := fed_enthalpy(scenario)) is not None:
