@@ -134,7 +134,8 @@ def _assemble(reading: Reading, data: Mapping[str, Any], text: str, folder: Path
     if further_axes is not None and not reading.faults:
         check_feeds(reading, further_axes, feed)
     choice = choose_species(reading, wanted_species, feed, temperature)
-    results = read_results(reading, wanted_results, feed, choice, pressure)
+    axes = [each for each in (*(further_axes or ()), temperature, pressure) if each is not None]
+    results = read_results(reading, wanted_results, feed, choice, pressure, axes)
     reactions = _reactions(reading, data, choice, feed, temperature, further_axes or (), folder)
     if choice is None or reading.faults or temperature is None or pressure is None or further_axes is None:
         return None
