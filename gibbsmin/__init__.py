@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from gibbsmin import errors, reactions
     from gibbsmin.minimiser import Status, minimise
     from gibbsmin.outcome import Outcome
+    from gibbsmin.outcome.mixture import compare_reactions
     from gibbsmin.running import run
     from gibbsmin.scenario import load_scenario
     from gibbsmin.solving import equilibrium
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
 
 _HOME_OF = {
     "Outcome": "gibbsmin.outcome",
+    "compare_reactions": "gibbsmin.outcome.mixture",
     "Status": "gibbsmin.minimiser",
     "equilibrium": "gibbsmin.solving",
     "load_scenario": "gibbsmin.scenario",
@@ -46,6 +48,7 @@ __all__ = [
     "Outcome",
     "Status",
     "__version__",
+    "compare_reactions",
     "equilibrium",
     "errors",
     "load_scenario",

@@ -281,7 +281,9 @@ def test_reaction_command(tmp_path: Path) -> None:
     )  # fmt: skip
     assert (code, err) == (0, "")
     assert "largest error 0.0178 in ln K" in out
-    assert re.search(r"ln K = 4577.8/T - 4.33 +CO \+ H2O = CO2 \+ H2 +-11.2 % +200 degC +\+5.6 K", out)
+    assert re.search(
+        r"ln K = 4577.8/T - 4.33 +CO \+ H2O = CO2 \+ H2 +-0.119 +-11.2 % +200 degC +\+5.6 K", out
+    )
     assert len(list((tmp_path / "figures").iterdir())) == 4
 
 

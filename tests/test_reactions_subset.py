@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
 import pytest
+import xarray as xr
 from scipy.optimize import brentq
 
 import gibbsmin
-from gibbsmin.errors import ReactionError
+from gibbsmin.errors import ConditionsError, ReactionError
 from gibbsmin.reactions import (
     ConstantEnthalpy,
     Correlation,
@@ -295,3 +297,64 @@ def test_absent_elements_and_absent_substances_have_no_activity() -> None:
 def test_key_species_must_be_in_the_mixture(keys: list[str]) -> None:
     with pytest.raises(ReactionError, match="key species"):
         compare(full_mixture(FIVE, {"CH4": 1.0, "H2O": 3.0}), Subset("r", (REFORMING,)), key_species=keys)
+
+
+# --- in one call ---------------------------------------------------------------------------------------------
+
+
+def test_comparison_in_one_call() -> None:
+    """The same as by hand, from plain Python; a feed that varies is a leading axis."""
+    feed = {"CH4": 1.0, "H2O": 3.0}
+    exact, rough = gibbsmin.compare_reactions(
+        feed,
+        T,
+        np.exp(LOG_P) * 1e5,
+        [REFORMING],
+        key_species=["H2", "CO"],
+        conversions=["CH4"],
+        shortcuts=[ConstantEnthalpy.from_data(REFORMING, 298.15)],
+        species=FIVE.split(),
+    )
+    by_hand = compare(
+        full_mixture(FIVE, feed, "C(gr)"),
+        Subset("reforming", (REFORMING,)),
+        key_species=["H2", "CO"],
+        conversions=["CH4"],
+        shortcuts=[{"reforming": ConstantEnthalpy.from_data(REFORMING, 298.15)}],
+    )
+    np.testing.assert_array_equal(exact.reason, by_hand[0].reason)
+    np.testing.assert_array_equal(rough.reason, by_hand[1].reason)
+    np.testing.assert_allclose(rough.error, by_hand[1].error, atol=1e-12)
+    steam = xr.DataArray([1.0, 3.0], dims="steam")
+    (found,) = gibbsmin.compare_reactions(
+        {"CH4": 1.0, "H2O": steam},
+        1000.0,
+        1e5,
+        ["CO + H2O = CO2 + H2"],
+        key_species=["H2"],
+        species=FIVE.split(),
+    )
+    assert found.reason.shape == (2, 1, 1)
+    assert found.neglected[0].largest.quantity == "H2"
+
+
+def test_scattered_points_are_no_map() -> None:
+    together = xr.DataArray([900.0, 1000.0], dims="point")
+    with pytest.raises(ConditionsError, match="on a grid of the two"):
+        gibbsmin.compare_reactions(
+            {"CH4": 1.0, "H2O": 3.0},
+            together,
+            xr.DataArray([1e5, 2e5], dims="point"),
+            ["CO + H2O = CO2 + H2"],
+            key_species=["H2"],
+            species=FIVE.split(),
+        )
+
+
+def test_a_condensed_phase_that_is_there_is_a_reason() -> None:
+    full = full_mixture(FIVE, {"CH4": 1.0, "H2O": 3.0}, "C(gr)")
+    assert not full.condensing.any()
+    formed = np.zeros(full.activity.shape, dtype=bool)
+    formed[0, 3, 1] = True
+    (one,) = compare(replace(full, formed=formed), Subset("both", (REFORMING, SHIFT)), key_species=["H2"])
+    np.testing.assert_array_equal(one.reason == Reason.CONDENSED_PHASE, formed)

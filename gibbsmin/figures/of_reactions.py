@@ -99,6 +99,8 @@ def comparison_figures(outcome: Outcome) -> Iterator[Drawn]:
             )
             yield Drawn(f"trust_{ending}", figure, "a map needs two axes with several values")
             yield _error_map(outcome, k, ending, words)
+            for name in each.conversion:
+                yield _conversion_map(outcome, k, name, ending, words)
 
 
 def _error_map(outcome: Outcome, k: int, ending: str, words: str) -> Drawn:
@@ -117,6 +119,25 @@ def _error_map(outcome: Outcome, k: int, ending: str, words: str) -> Drawn:
         units=display_units(outcome.scenario),
     )
     return Drawn(f"error_{ending}", figure, "practically the same everywhere, or no map")
+
+
+def _conversion_map(outcome: Outcome, k: int, name: str, ending: str, words: str) -> Drawn:
+    from gibbsmin.figures.of_outcome import display_units
+    from gibbsmin.outcome.reactions import conversion_variable
+
+    assert outcome.reactions is not None
+    each = outcome.reactions.comparisons[k]
+    error = outcome.dataset[conversion_variable("conversion_error", name)].isel(alone=k, drop=True)
+    figure = draw_map(
+        error,
+        title=f"Error of the conversion of {chemical(name)}: {plain(each.subset.name)} alone",
+        subtitle=f"{words}; {outcome.scenario.title}",
+        scale_label=f"conversion of {chemical(name)}, alone less full",
+        units=display_units(outcome.scenario),
+    )
+    return Drawn(
+        f"error_conversion_{file_name(name)}_{ending}", figure, "practically the same everywhere, or no map"
+    )
 
 
 def outcome_figures(outcome: Outcome) -> Iterator[Drawn]:
@@ -139,7 +160,8 @@ def count_outcome_figures(outcome: Outcome) -> int:
     measured = {each.data.reaction.name for each in results.measured}
     curves = sum(bool(several or each.reaction.name in measured) for each in results.reactions)
     subsets = {each.subset.name for each in results.comparisons}
-    return curves + len(audited) + 2 * len(results.measured) + len(subsets) + 2 * len(results.comparisons)
+    maps = sum(2 + len(each.conversion) for each in results.comparisons)
+    return curves + len(audited) + 2 * len(results.measured) + len(subsets) + maps
 
 
 def write_reaction_figures(

@@ -10,10 +10,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import xarray as xr
 
-from gibbsmin.reactions.against_mixture import Comparison, FullMixture, Reason, activities
+from gibbsmin.outcome.mixture import full_mixture
+from gibbsmin.reactions.against_mixture import Comparison, FullMixture, Reason
 from gibbsmin.reactions.report import TEMPERATURE_UNITS, TemperatureUnit, report_text
 from gibbsmin.reactions.results import ReactionResults, work_out
-from gibbsmin.reactions.subset import Composition, MapConditions
 
 if TYPE_CHECKING:
     from gibbsmin.outcome import Outcome
@@ -35,7 +35,11 @@ def reaction_results(
     wanted = scenario.reactions
     if wanted is None:
         return None
-    full = full_mixture(scenario, conditions, dataset)
+    exact = scenario.exact_feed_amounts()
+    feed = np.stack(
+        [np.asarray(exact[name], dtype=object).ravel() for name in scenario.feed_species], axis=-1
+    )
+    full = full_mixture(conditions, dataset, scenario.library, feed=feed)
     return work_out(
         wanted,
         scenario.temperature.array,
@@ -45,48 +49,6 @@ def reaction_results(
         extrapolate=scenario.extrapolate,
         threads=threads,
     )
-
-
-def full_mixture(scenario: Scenario, conditions: Conditions, dataset: xr.Dataset) -> FullMixture:
-    """The solved map in the arrays that the comparison needs, with the activity of condensed substances."""
-    T, p = scenario.temperature.array, scenario.pressure.array
-    feed_species = tuple(scenario.feed_species.values())
-    exact = scenario.exact_feed_amounts()
-    feed = np.stack(
-        [np.asarray(exact[name], dtype=object).ravel() for name in scenario.feed_species], axis=-1
-    )
-    shape = (len(feed), len(T), len(p))
-    # Condensed phases that take part follow the gases in the table.
-    table = conditions.table
-    gases = [j for j, each in enumerate(table.species) if each.state == "g"]
-    amounts = dataset["amount"].values.reshape(*shape, -1)
-    names = [str(name) for name in dataset["species"].values]
-    columns = [names.index(table.species[j].name) for j in gases]
-    species = tuple(table.species[j] for j in gases)
-    composition = Composition(
-        amounts[..., columns],
-        np.asarray(amounts[..., columns].sum(axis=-1)),
-        dataset["status"].values.reshape(shape),
-    )
-    condensed = scenario.library.condensed([each for each in table.elements if each != "charge"])
-    activity, which = activities(
-        species, table.elements, dataset["element_potential"].values.reshape(*shape, -1), T, condensed
-    )
-    return FullMixture(
-        MapConditions(species, table.gibbs_RT(T)[:, gases], T, np.log(p / 1e5), feed_species, feed),
-        composition,
-        activity,
-        which,
-        tuple(condensed),
-        _formed(dataset, shape),
-    )
-
-
-def _formed(dataset: xr.Dataset, shape: tuple[int, int, int]) -> Any:
-    """Where a condensed phase is there; None for a mixture of gases alone."""
-    if "phase_amount" not in dataset:
-        return None
-    return (dataset["phase_amount"] > 0).any("phase").values.reshape(shape)
 
 
 def add_reactions(dataset: xr.Dataset, results: ReactionResults | None) -> xr.Dataset:
@@ -272,12 +234,17 @@ def _comparisons(results: ReactionResults, dataset: xr.Dataset) -> dict[str, xr.
         ("conversion_error", "conversion by these reactions alone less that of the whole mixture"),
     ):
         for name in conversions:
-            variable = f"alone_{kind}_{name.replace('/', ' ')}"
+            variable = conversion_variable(kind, name)
             values = np.stack([getattr(each, kind)[name].reshape(shape) for each in compared])
             found[variable] = xr.Variable(
                 ("alone", *dims), values, {"units": "1", "long_name": f"{words}, {name}"}
             )
     return found
+
+
+def conversion_variable(kind: str, species: str) -> str:
+    """Name of the variable that holds the conversion, or its error, that reactions alone reach."""
+    return f"alone_{kind}_{species.replace('/', ' ')}"
 
 
 def _main_neglected(comparison: Comparison, names: Sequence[str]) -> Any:

@@ -148,9 +148,9 @@ def fits_lines(fits: Sequence[BestFit], tolerance: Tolerance) -> list[str]:
 def shortcuts_text(
     shortcuts: Sequence[ShortcutSummary], tolerance: Tolerance, unit: TemperatureUnit = KELVIN
 ) -> str:
-    """One row for each shortcut: largest error and where, and the window within the tolerance."""
+    """One row for each shortcut: its largest error in three measures, and the window within the tolerance."""
     rows = [
-        ["shortcut", "reaction", "largest error of K", "at", "in kelvin", f"within {tolerance}"],
+        ["shortcut", "reaction", "in ln K", "of K", "at", "in kelvin", f"within {tolerance}"],
     ]
     notes = []
     for each in shortcuts:
@@ -162,6 +162,7 @@ def shortcuts_text(
             [
                 each.shortcut.name,
                 each.shortcut.reaction.name,
+                f"{errors.ln_K[worst]:+.3f}",
                 f"{errors.per_cent[worst]:+.3g} %",
                 f"{unit.show(errors.temperature[worst])} {unit.symbol}",
                 largest,
@@ -170,7 +171,10 @@ def shortcuts_text(
         )
         notes.append(f"{each.shortcut.name}: {each.shortcut.describe()}")
     lines = table(rows, left=(0, 1))
-    return _headed("Shortcuts", "\n".join([*lines, *(_wrapped(note) for note in notes)]))
+    return _headed(
+        "Shortcuts: largest error, and where they may be used",
+        "\n".join([*lines, *(_wrapped(note) for note in notes)]),
+    )
 
 
 def verdict_text(
