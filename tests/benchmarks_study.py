@@ -1,4 +1,5 @@
-"""Throughput of a study against that of its plain maps: `python -m tests.benchmarks_study [cases] [points a side]`.
+"""Throughput of a study against that of its plain maps: `python -m tests.benchmarks_study [cases] [points a side]`
+or `... scaling`.
 
 Prints, and asserts nothing: the time of the same maps solved by the grid solver alone, on as many processes, then
 that of the study with everything (starting processes, reading, checking, storing, digests, summary), for what is
@@ -20,9 +21,8 @@ from multiprocessing import get_context
 from pathlib import Path
 from typing import Any
 
-from gibbsmin.solving import thermo_table
 from gibbsmin.study import load_study, run_study
-from gibbsmin.study.solving import solve_case
+from gibbsmin.study.solving import solve_case, solver_table
 
 SCENARIO = """\
 title: Reforming of a survey gas
@@ -78,7 +78,7 @@ def write_study(folder: Path, cases: int, side: int, composition: str, checks: i
 def plain_maps(job: tuple[Any, list[Any]]) -> int:
     """Solve maps and forget them."""
     layout, cases = job
-    table = thermo_table(layout.species, False)
+    table = solver_table(layout)
     return sum(solve_case(layout, table, case, 1).status.size for case in cases)
 
 
@@ -110,7 +110,37 @@ def peak_memory() -> Callable[[], float]:
     return lambda: peak[0] / 2**30
 
 
+def scaling(cases: int = 200, side: int = 100, attempts: int = 4) -> None:
+    """The same study on a Dask cluster of one process and of two, over TCP; the best of some attempts in turn."""
+    import distributed
+
+    with tempfile.TemporaryDirectory() as name:
+        folder = Path(name)
+        study = load_study(write_study(folder, cases, side, "key species", 0))
+        best = {1: float("inf"), 2: float("inf")}
+        for attempt in range(2 * attempts):
+            workers = 1 + attempt % 2
+            with (
+                distributed.LocalCluster(
+                    n_workers=workers, threads_per_worker=1, protocol="tcp://", dashboard_address=None
+                ) as cluster,
+                distributed.Client(cluster) as client,
+            ):
+                run_study(study, folder / "warm", cluster=client)
+                begun = time.perf_counter()
+                run_study(study, folder / "timed", cluster=client)
+                best[workers] = min(best[workers], time.perf_counter() - begun)
+            shutil.rmtree(folder / "warm")
+            shutil.rmtree(folder / "timed")
+        for workers, took in best.items():
+            print(f"{workers} workers: {took:.2f} s, {study.points / took:,.0f} points/s")
+        print(f"gain: {best[1] / best[2]:.2f}")
+
+
 def main() -> None:
+    if sys.argv[1:] == ["scaling"]:
+        scaling()
+        return
     cases = int(sys.argv[1]) if len(sys.argv) > 1 else 1000
     side = int(sys.argv[2]) if len(sys.argv) > 2 else 100
     with tempfile.TemporaryDirectory() as name:

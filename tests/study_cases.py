@@ -60,7 +60,9 @@ def write_study(folder: Path, study: str = STUDY, scenario: str = SCENARIO) -> P
 def store_bytes(folder: Path) -> dict[str, bytes]:
     """Every file of the store, hidden ones too, and the manifest; the summary and receipts hold times."""
     files = [path for path in sorted((folder / "results.zarr").rglob("*")) if path.is_file()]
-    return {path.relative_to(folder).as_posix(): path.read_bytes() for path in [*files, folder / "manifest.json"]}
+    return {
+        path.relative_to(folder).as_posix(): path.read_bytes() for path in [*files, folder / "manifest.json"]
+    }
 
 
 def summary_without_times(results: Any) -> Any:

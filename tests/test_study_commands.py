@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 from pathlib import Path
 
 import pytest
@@ -47,7 +48,7 @@ def test_the_shipped_study_in_seconds(here: Path, capsys: pytest.CaptureFixture[
     assert main([*command, "--csv", "ranking.csv", "--figure", "comparison.png"]) == 0
     lines = capsys.readouterr().out.splitlines()
     assert len(lines) == 4
-    assert lines[1].split()[:3] == ["1", "Eskel", "1"]
+    assert lines[1].split()[:2] == ["1", "Eskel"]
     assert lines[-1] == "and 198 more"
     assert len(Path("ranking.csv").read_text().splitlines()) == 201
     assert Path("comparison.png").read_bytes().startswith(b"\x89PNG")
@@ -76,6 +77,20 @@ def test_faults_are_listed_and_nothing_is_computed(here: Path, capsys: pytest.Ca
     ]
     assert all(line.endswith("(12 cases: 01, 02, 03 ...)") for line in lines)
     assert not Path("study-results").exists()
+
+
+def test_a_full_disk_ends_with_1_and_says_how_to_go_on(
+    here: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def full(*_: object) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    write_study(here)
+    monkeypatch.setattr("gibbsmin.study.solving.write_whole", full)
+    assert main(["study", "study.yaml", "--workers", "1"]) == 1
+    message = capsys.readouterr().err
+    assert "study-results is full; 0 of 6 chunks are finished and kept" in message
+    assert "run the same command again" in message
 
 
 def test_a_failed_case_ends_with_1(

@@ -49,7 +49,9 @@ def command(*words: str | Path) -> list[str]:
 
 @pytest.mark.skipif(not hasattr(os, "fork"), reason="needs fork")
 def test_killed_25_times_at_random_moments_it_ends_with_the_same_bytes(study: Path, tmp_path: Path) -> None:
-    study.write_text(STUDY.replace("to: 3, step: 1", "to: 10, step: 1"), encoding="utf-8")  # 40 cases, 20 chunks
+    study.write_text(
+        STUDY.replace("to: 3, step: 1", "to: 10, step: 1"), encoding="utf-8"
+    )  # 40 cases, 20 chunks
     run_study(study, tmp_path / "whole", workers=0)
     arguments = [sys.executable, "-m", "tests.study_kills", str(study), str(tmp_path), "25", "20261201"]
     done = subprocess.run(arguments, cwd=ROOT, capture_output=True, text=True, check=True)
@@ -106,7 +108,10 @@ def test_ctrl_c_exits_with_130_and_keeps_what_is_finished(study: Path, whole: Pa
     folder = tmp_path / "stopped"
     study.write_text(STUDY.replace("to: 3, step: 1", "to: 60, step: 1"), encoding="utf-8")
     process = subprocess.Popen(
-        command("study", study, "--out", folder, "--workers", "1"), cwd=ROOT, stderr=subprocess.PIPE, text=True
+        command("study", study, "--out", folder, "--workers", "1"),
+        cwd=ROOT,
+        stderr=subprocess.PIPE,
+        text=True,
     )
     while len(list(folder.glob("receipts/all/*.json"))) < 3 and process.poll() is None:
         time.sleep(0.002)
@@ -206,7 +211,9 @@ def test_a_full_disk_stops_the_study_and_the_same_call_goes_on(
 
     with monkeypatch.context() as patch:
         patch.setattr(chunk_solving, "write_whole", until_full)
-        with pytest.raises(StudyStoppedError, match=r"disk of .* is full; 2 of 6 chunks are finished and kept") as stop:
+        with pytest.raises(
+            StudyStoppedError, match=r"disk of .* is full; 2 of 6 chunks are finished and kept"
+        ) as stop:
             run_study(study, folder, workers=0)
     assert (stop.value.finished, stop.value.chunks) == (2, 6)
     lines, computed = told(study, folder)
@@ -228,7 +235,10 @@ def test_a_study_that_does_not_fit_the_disk_is_refused_with_the_numbers(
 
 
 def test_a_second_run_on_the_folder_is_refused(study: Path, whole: Path) -> None:
-    with folder_lock(whole), pytest.raises(StudyRefusedError, match=rf"is running in this folder \(process {os.getpid()} on"):
+    with (
+        folder_lock(whole),
+        pytest.raises(StudyRefusedError, match=rf"is running in this folder \(process {os.getpid()} on"),
+    ):
         run_study(study, whole, workers=0)
     assert told(study, whole)[1] == 0  # the lock is free again
 

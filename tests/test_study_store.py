@@ -169,6 +169,63 @@ def test_the_summary_has_a_row_for_each_case(results: StudyResults) -> None:
     assert (table["seconds"] > 0).all()
 
 
+CONDENSED = SCENARIO.replace("CH4, H2O]", "CH4, H2O]\n  condensed: [graphite]")
+HELD_BACK = CONDENSED.replace("condensed", "held back")
+
+
+def test_activity_of_a_phase_held_back_is_that_of_the_boudouard_balance(tmp_path: Path) -> None:
+    """2 CO = C + CO2 is at equilibrium in the gas: a_C = K x_CO^2 (p/p0) / x_CO2 with K from the species data alone."""
+    from gibbsmin.species import ThermoTable, standard_library
+
+    study = STUDY + "keep: {composition: all}\n"
+    results = run_study(write_study(tmp_path, study, HELD_BACK), tmp_path / "out", workers=0).results
+    dataset, table = results.dataset, results.summary
+    library = standard_library()
+    g = ThermoTable([library.find(name) for name in ("CO", "CO2", "C(gr)")]).gibbs_RT(
+        dataset["temperature"].values
+    )
+    K = xr.DataArray(np.exp(2 * g[:, 0] - g[:, 1] - g[:, 2]), dims="temperature")
+    x = dataset["mole_fraction"]
+    expected = K * x.sel(species="CO") ** 2 * (dataset["pressure"] / 1e5) / x.sel(species="CO2")
+    found = dataset["phase_activity"].sel(phase="C(gr)")
+    np.testing.assert_allclose(found, expected.transpose(*found.dims), rtol=1e-11)
+    assert 1e-3 < float(found.min()) < float(found.max()) < 10
+    assert (
+        table["activity of C(gr) highest"].tolist() == found.max(("temperature", "pressure")).values.tolist()
+    )
+    # the issue's own question: largest yield under a limit of the carbon activity
+    from gibbsmin.study.ranking import rank_cases
+
+    limit = float(found.median())
+    ranking = rank_cases(results, "H2", where=[f"activity of C(gr) < {limit!r}"])
+    best = x.sel(species="H2").where(found < limit).max(("temperature", "pressure"))
+    assert ranking["H2"].dropna().tolist() == sorted(best.values[best.notnull()].tolist(), reverse=True)
+    assert 0 < ranking["H2"].notna().sum() < 12
+
+
+def test_condensed_phases_take_part_as_in_a_run(tmp_path: Path) -> None:
+    dry = CONDENSED.replace("60 mol", "1 mol")
+    study = (
+        STUDY.replace("[40, 60, 80, 100]", "[1, 2]")
+        + "keep: {composition: all, further results: [heat duty]}\n"
+    )
+    results = run_study(write_study(tmp_path, study, dry), tmp_path / "out", workers=0).results
+    expected = alone(dry.replace("CO2: 5", "CO2: 1") + "cross-check: {points: none}\n", tmp_path)
+    case = results.dataset.isel(case=0)
+    for name in (
+        "mole_fraction",
+        "phase_amount",
+        "phase_activity",
+        "conversion of CO",
+        "heat_duty",
+        "gas_amount",
+    ):
+        np.testing.assert_allclose(case[name], expected[name], rtol=1e-12, atol=1e-300, err_msg=name)
+    assert float(case["phase_amount"].max()) > 1
+    assert results.summary["amount of C(gr) highest"][0] == float(case["phase_amount"].max())
+    assert results.all_solved
+
+
 def test_a_wrong_answer_is_found_by_the_cross_check(tmp_path: Path) -> None:
     from dataclasses import replace
 

@@ -48,6 +48,7 @@ def _count(text: str) -> int:
 
 
 def _study(options: argparse.Namespace) -> int:
+    from gibbsmin.errors import StudyStoppedError
     from gibbsmin.study.reading import load_study, study_file
 
     file = study_file(options.study)
@@ -71,15 +72,19 @@ def _study(options: argparse.Namespace) -> int:
             cases_done(cases)
             points_done(points)
 
-        run = run_study(
-            study,
-            folder,
-            workers=options.workers,
-            cluster=options.cluster,
-            overwrite=options.overwrite,
-            progress=progress,
-            tell=say,
-        )
+        try:
+            run = run_study(
+                study,
+                folder,
+                workers=options.workers,
+                cluster=options.cluster,
+                overwrite=options.overwrite,
+                progress=progress,
+                tell=say,
+            )
+        except StudyStoppedError as stop:
+            say(f"gibbsmin: {stop}")
+            return 1  # something was computed, so it is not a wrong request
     kept = ["results.zarr", "summary.parquet", "manifest.json"]
     if not options.no_report:
         from gibbsmin.report import REPORT_FILE, study_results_html

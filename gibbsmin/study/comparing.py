@@ -21,6 +21,7 @@ from gibbsmin.figures.labels import number, plain, with_formulas
 from gibbsmin.figures.look import FAINT, INK, LINE_COLOURS, house_look
 from gibbsmin.figures.saving import PNG_DOTS_PER_INCH
 from gibbsmin.study.ranking import Condition, field
+from gibbsmin.study.solving import PHASE_VARIABLES
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -92,6 +93,8 @@ def value_words(results: StudyResults, by: str) -> str:
     words = str(array.attrs.get("long_name", by))
     if array.name == "mole_fraction":
         words = f"mole fraction of {by.removeprefix('mole fraction ')}"
+    elif array.name in PHASE_VARIABLES:
+        words = by
     return words if units == "1" else f"{words} ({units})"
 
 

@@ -42,6 +42,7 @@ class Layout:
 
     Attributes:
         species: the S gases that take part; `feed_species` the J of the feed.
+        condensed: pure condensed phases that may form; `held_back` those whose activity alone is wanted.
         axes: further axes in the order of the scenario, then temperature and pressure; `shape` their lengths.
         results: what the scenarios ask for by name.
         kept_species: indices of the species whose mole fractions are stored.
@@ -59,6 +60,18 @@ class Layout:
     amount_unit: str
     extrapolate: bool
     tolerance: float
+    condensed: tuple[Species, ...] = ()
+    held_back: tuple[Species, ...] = ()
+
+    @property
+    def phases(self) -> tuple[Species, ...]:
+        """All condensed phases that results speak of."""
+        return (*self.condensed, *self.held_back)
+
+    @property
+    def used_species(self) -> tuple[Species, ...]:
+        """Every species whose data decide the values."""
+        return (*self.species, *self.phases, *self.feed_species)
 
     @property
     def points(self) -> int:
@@ -72,7 +85,7 @@ class Layout:
     def matches(self, other: Layout) -> bool:
         """Whether cases of the two lie in the same arrays."""
         mine, others = self._without_species(), other._without_species()
-        return mine == others and self.species == other.species and self.feed_species == other.feed_species
+        return mine == others and self.used_species == other.used_species
 
     def _without_species(self) -> tuple[Any, ...]:
         return (
@@ -83,6 +96,9 @@ class Layout:
             self.amount_unit,
             self.extrapolate,
             self.tolerance,
+            len(self.species),
+            len(self.condensed),
+            len(self.held_back),
         )
 
 

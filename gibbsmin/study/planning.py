@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -15,15 +15,16 @@ from numpy.typing import NDArray
 from gibbsmin.labelled import Labelled
 from gibbsmin.outcome.saving import species_digest
 from gibbsmin.outcome.wanted import named_results, variable_name
-from gibbsmin.solving import Conditions, solve, thermo_table
+from gibbsmin.solving import solve
 from gibbsmin.study.model import Case, Layout, Study
 from gibbsmin.study.shards import ArrayPlan, cases_per_part
 from gibbsmin.study.solving import (
     NOT_COMPUTED,
+    PHASE_VARIABLES,
     Chunk,
     Group,
+    conditions_of,
     derived_results,
-    feed_atoms,
     species_needed,
 )
 
@@ -85,6 +86,7 @@ class Plan:
             layout = chunk.group.layout
             elements = len({name for each in layout.feed_species for name in each.composition}) + 1
             held = len(species_needed(chunk.group)) + len(layout.kept_species) + 3 + elements
+            held += 6 * len(layout.phases)
             if chunk.group.further:
                 held += len(layout.species)
             block = chunk.points * (held + 4 * len(chunk.group.derived)) * 8
@@ -108,7 +110,7 @@ def plan_study(study: Study) -> Plan:
     for number, layout in enumerate(study.layouts):
         cases = study.cases_of(number)
         path = "" if len(study.layouts) == 1 else f"maps_{number + 1}"
-        used = {each.name: each for each in (*layout.species, *layout.feed_species)}
+        used = {each.name: each for each in layout.used_species}
         digests[path] = species_digest(list(used.values()))
         group = _group(study, layout, path, cases)
         groups.append(group)
@@ -180,6 +182,9 @@ def _group(study: Study, layout: Layout, path: str, cases: list[Case]) -> Group:
         add(name, template[name].attrs)
     if layout.kept_species:
         add("mole_fraction", template["mole_fraction"].attrs, "species", len(layout.kept_species))
+    if layout.phases:
+        for name in PHASE_VARIABLES:
+            add(name, template[name].attrs, "phase", len(layout.phases))
     for word, name in _BY_FURTHER.items():
         if word not in study.keep.further:
             continue
@@ -199,18 +204,14 @@ def _group(study: Study, layout: Layout, path: str, cases: list[Case]) -> Group:
 
 def _template(layout: Layout, case: Case) -> xr.Dataset:
     """The first point of a case, as `gibbsmin.equilibrium` gives it."""
-    table = thermo_table(layout.species, layout.extrapolate)
-    conditions = Conditions(
-        table=table,
-        feed_species=layout.feed_species,
+    whole = conditions_of(layout, case)
+    conditions = replace(
+        whole,
         feed=Labelled(("feed_species",), case.feed.reshape(-1, len(layout.feed_species))[0]),
-        feed_composition=feed_atoms(layout.feed_species, table),
         element_amounts=case.element_amounts[:1],
         factor=case.factor[:1],
         temperature=Labelled((), case.temperature[0]),
         pressure=Labelled((), case.pressure[0]),
-        coordinates={},
-        amount_unit=layout.amount_unit,
     )
     return solve(conditions, extrapolate=layout.extrapolate, threads=1)
 
@@ -227,8 +228,7 @@ def _derived(
     found: list[tuple[str, dict[str, Any]]] = []
     named = template
     asked_for = sum(1 for _ in named_results(template, layout.results))
-    table = thermo_table(layout.species, layout.extrapolate)
-    for name, array in derived_results(template, layout, further, table, fed):
+    for name, array in derived_results(template, layout, further, fed):
         if len(found) < asked_for:
             own = variable_name(name, named)
             attributes = {**array.attrs, "long_name": name, "description": array.attrs["long_name"]}
@@ -262,6 +262,8 @@ def _inputs(group: Group, cases: tuple[Case, ...], version: str, species: str) -
         "version": version,
         "species data": species,
         "species": [each.name for each in layout.species],
+        "condensed": [each.name for each in layout.condensed],
+        "held back": [each.name for each in layout.held_back],
         "feed species": [each.name for each in layout.feed_species],
         "cases": [case.digest for case in cases],
         "shape": layout.shape,

@@ -9,7 +9,6 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gibbsmin.errors import ConditionsError
 from gibbsmin.running import fed_enthalpy, scenario_conditions
 from gibbsmin.study.model import AxisLabel, Case, Keep, Layout
 
@@ -29,9 +28,7 @@ class Preparing:
         self._axes: dict[bytes, FloatArray] = {}
 
     def add(self, name: str, values: Mapping[str, Any], scenario: Scenario) -> None:
-        """Raises ConditionsError where an axis of the scenario is called like a result, or phases are listed."""
-        if scenario.choice.condensed or scenario.choice.held_back:
-            raise ConditionsError("species", "the cases of a study cannot have condensed phases yet")
+        """Raises ConditionsError where an axis of the scenario is called like a result."""
         conditions = scenario_conditions(scenario)
         enthalpy = None
         if "heat duty" in self.keep.further and (fed := fed_enthalpy(scenario)) is not None:
@@ -70,6 +67,8 @@ class Preparing:
             amount_unit=scenario.amount_unit,
             extrapolate=scenario.extrapolate,
             tolerance=scenario.cross_check.tolerance,
+            condensed=scenario.choice.condensed,
+            held_back=scenario.choice.held_back,
         )
         for i, known in enumerate(self.layouts):
             if known.matches(layout):

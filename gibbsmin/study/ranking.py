@@ -77,7 +77,14 @@ def read_condition(text: str) -> Condition:
 OF_SPECIES = "mole fraction "
 """Before the name of a species; it may be left out where nothing else is called so."""
 
-_NOT_OF_POINTS = frozenset(["species", "element", "feed_species"])
+_ONE_OF: Mapping[str, tuple[str, str]] = {
+    OF_SPECIES: ("mole_fraction", "species"),
+    "activity of ": ("phase_activity", "phase"),
+    "amount of ": ("phase_amount", "phase"),
+}
+"""How one part of a variable with a further dimension is called."""
+
+_NOT_OF_POINTS = frozenset(["species", "element", "feed_species", "phase"])
 
 
 def names_of(dataset: xr.Dataset) -> list[str]:
@@ -87,13 +94,18 @@ def names_of(dataset: xr.Dataset) -> list[str]:
         for name, array in dataset.data_vars.items()
         if "case" in array.dims and not _NOT_OF_POINTS.intersection(array.dims)
     ]
-    species = dataset["species"].values if "mole_fraction" in dataset else ()
+    parts = [
+        f"{words}{name}"
+        for words, (variable, dim) in _ONE_OF.items()
+        if variable in dataset
+        for name in dataset[dim].values
+    ]
     coordinates = [
         str(name)
         for name, array in dataset.coords.items()
         if array.dtype.kind in "fiu" and not _NOT_OF_POINTS.intersection(array.dims)
     ]
-    return [*results, *(f"{OF_SPECIES}{name}" for name in species), *coordinates]
+    return [*results, *parts, *coordinates]
 
 
 def field(dataset: xr.Dataset, name: str) -> xr.DataArray:
@@ -105,9 +117,11 @@ def field(dataset: xr.Dataset, name: str) -> xr.DataArray:
     for own in (name, f"{OF_SPECIES}{name}", identifier(name)):
         if own not in known:
             continue
-        if own.startswith(OF_SPECIES):
-            return dataset["mole_fraction"].sel(species=own.removeprefix(OF_SPECIES), drop=True)
-        return dataset[own]
+        if own in dataset.variables:
+            return dataset[own]
+        words = next(words for words in _ONE_OF if own.startswith(words))
+        variable, dim = _ONE_OF[words]
+        return dataset[variable].sel({dim: own.removeprefix(words)}, drop=True)
     raise ConditionsError(
         f"result {name!r}", f"there is none; there are {listed(known)}{nearest(name, known)}"
     )

@@ -19,10 +19,13 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from gibbsmin.constants import STANDARD_PRESSURE
-from gibbsmin.grid import GridSolution, solve_grid
+from gibbsmin.grid import GridSolution
+from gibbsmin.labelled import Labelled
 from gibbsmin.outcome import composition, energy
+from gibbsmin.outcome.assembling import RATE_UNIT
+from gibbsmin.outcome.phases import phase_coordinates, phase_variables
 from gibbsmin.outcome.wanted import named_results
-from gibbsmin.solving import composition_matrix, thermo_table
+from gibbsmin.solving import Conditions, composition_matrix, solve_arrays, thermo_table
 from gibbsmin.study.rows import checked_points, largest, rows_of
 from gibbsmin.study.shards import ArrayPlan, shard, write_whole
 from gibbsmin.study.trail import Trail
@@ -39,6 +42,8 @@ NOT_COMPUTED = -1
 
 STORE = "results.zarr"
 RECEIPTS = "receipts"
+
+PHASE_VARIABLES = ("phase_amount", "phase_activity")
 
 FURTHER: Mapping[str, Callable[[xr.Dataset, ThermoTable], xr.DataArray]] = {
     "density": lambda dataset, table: composition.density(dataset),
@@ -114,9 +119,35 @@ def solve_case(layout: Layout, table: ThermoTable, case: Case, threads: int | No
     """The map of one case, leading shape (F, nT, nP)."""
     gibbs = _standard_potentials(table, case.temperature.tobytes())
     log_pressure = np.log(case.pressure / STANDARD_PRESSURE)
-    return solve_grid(
-        table.formula_matrix, case.element_amounts, gibbs, case.temperature, log_pressure, threads=threads
+    return solve_arrays(conditions_of(layout, case), gibbs, log_pressure, threads=threads)
+
+
+def conditions_of(layout: Layout, case: Case) -> Conditions:
+    """A case as the solver takes it."""
+    table = solver_table(layout)
+    dims = tuple(axis.name for axis in layout.axes)
+    return Conditions(
+        table=table,
+        feed_species=layout.feed_species,
+        feed=Labelled((*dims[:-2], "feed_species"), case.feed),
+        feed_composition=feed_atoms(layout.feed_species, table),
+        element_amounts=case.element_amounts,
+        factor=case.factor,
+        temperature=Labelled((dims[-2],), case.temperature),
+        pressure=Labelled((dims[-1],), case.pressure),
+        coordinates={},
+        amount_unit=layout.amount_unit,
+        held_back=layout.held_back,
     )
+
+
+def solver_table(layout: Layout) -> ThermoTable:
+    """Gases first, then the condensed phases that take part."""
+    return thermo_table([*layout.species, *layout.condensed], layout.extrapolate)
+
+
+def gas_table(layout: Layout) -> ThermoTable:
+    return thermo_table(layout.species, layout.extrapolate)
 
 
 @lru_cache(maxsize=16)
@@ -143,7 +174,7 @@ def solve_chunk(
     """
     home = Path(folder)
     group, layout = chunk.group, chunk.group.layout
-    table = thermo_table(layout.species, layout.extrapolate)
+    table = solver_table(layout)
     trail = Trail.of(home, chunk.group.path, chunk.number, run_name)
     deadly = trail.deadly_cases()
     block = Block(chunk, table)
@@ -194,7 +225,7 @@ class Block:
         self.checked: list[tuple[int, int, FloatArray]] = []
         self._checked_points = group.checked_points
         self.extra: dict[str, NDArray[Any]] = {}
-        for name in ("element_potential", "balance_residual", "iterations"):
+        for name in ("element_potential", "balance_residual", "iterations", *PHASE_VARIABLES):
             if (array := group.array(name)) is not None:
                 shape = (cases, points, array.extras) if array.extra else (cases, points)
                 self.extra[name] = np.full(shape, array.fill, dtype=array.dtype)
@@ -203,7 +234,8 @@ class Block:
         """Take what is needed of a case while it is still in the cache."""
         feeds, points = len(case.factor), self.layout.points
         factor = case.factor.reshape(feeds, 1)
-        amounts = solution.amounts.reshape(points, -1)
+        everything = solution.amounts.reshape(points, -1)
+        amounts = everything[:, : len(self.layout.species)]
         gas = amounts.sum(axis=-1).reshape(feeds, -1)
         np.divide(gas, factor, out=self.gas[i].reshape(gas.shape))
         by_species = amounts.T
@@ -226,11 +258,28 @@ class Block:
             "balance_residual": balance,
             "iterations": solution.iterations,
         }
+        if self.layout.phases:
+            further |= self._phases(case, everything, solution)
         for name, values in self.extra.items():
             values[i] = further[name].reshape(values.shape[1:])
         for point in checked_points(case, points, self._checked_points):
             if self.status[i, point] == 0:
                 self.checked.append((i, int(point), amounts[point] / gas.ravel()[point]))
+
+    def _phases(self, case: Case, amounts: FloatArray, solution: GridSolution) -> dict[str, NDArray[Any]]:
+        """Amounts and activities of the condensed phases."""
+        layout = self.layout
+        scaled = amounts.reshape(len(case.factor), -1, amounts.shape[-1]) / case.factor[:, None, None]
+        scaled = scaled.reshape(*layout.shape, -1)
+        variables = phase_variables(
+            conditions_of(layout, case),
+            scaled[..., len(layout.species) :],
+            scaled[..., : len(layout.species)],
+            solution.element_potentials.reshape(*layout.shape, -1),
+            RATE_UNIT[layout.amount_unit],
+            extrapolate=layout.extrapolate,
+        )
+        return {name: variables[name].values for name in PHASE_VARIABLES}
 
     def fail(self, i: int, reason: str) -> None:
         self.failures[i] = reason
@@ -264,7 +313,7 @@ def _values(chunk: Chunk, block: Block, table: ThermoTable) -> Iterator[tuple[st
             yield "mole_fraction", np.moveaxis(block.fractions, 1, 2)
         if group.derived:
             dataset = _block_dataset(chunk, block, table)
-            found = derived_results(dataset, layout, group.further, table, _fed_enthalpy(chunk))
+            found = derived_results(dataset, layout, group.further, _fed_enthalpy(chunk))
             dims, shape = ("case", *_axis_dims(layout)), (len(chunk.cases), *layout.shape)
             for name, (_, array) in zip(group.derived, found, strict=True):
                 values = array.transpose(*(dim for dim in dims if dim in array.dims)).values
@@ -276,16 +325,17 @@ def derived_results(
     dataset: xr.Dataset,
     layout: Layout,
     further: Sequence[str],
-    table: ThermoTable,
     fed: xr.DataArray | None,
 ) -> Iterator[tuple[str, xr.DataArray]]:
     """Results beside the composition, always in the same order: those of the scenarios by name, then `further`."""
     yield from named_results(dataset, layout.results)
+    table = gas_table(layout)
+    phases = thermo_table(layout.condensed, layout.extrapolate) if layout.condensed else None
     for name in further:
         if name in FURTHER:
             yield name, FURTHER[name](dataset, table)
     if "heat duty" in further and fed is not None:
-        for duty, array in energy.heat_duty(dataset, table, fed).data_vars.items():
+        for duty, array in energy.heat_duty(dataset, table, fed, phases).data_vars.items():
             yield str(duty), array
 
 
@@ -311,10 +361,16 @@ def _block_dataset(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset
             units,
         ),
     }
+    if layout.phases:
+        variables["phase_amount"] = (
+            (*points, "phase"),
+            block.extra["phase_amount"].reshape(*shape, -1),
+            units,
+        )
     if any(name in chunk.group.further for name in FURTHER):
         fractions = block.amounts / block.gas[..., None]
         variables["mole_fraction"] = ((*points, "species"), fractions.reshape(*shape, -1))
-    coordinates = {
+    coordinates: dict[str, Any] = {
         "temperature": (("case", axes[-2]), np.stack([case.temperature for case in cases])),
         "pressure": (("case", axes[-1]), np.stack([case.pressure for case in cases])),
         "species": [each.name for each in species],
@@ -324,6 +380,8 @@ def _block_dataset(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset
         "feed_atoms": (("feed_species", "element"), feed_atoms(layout.feed_species, table)),
         "molar_mass": (("species",), np.array([each.molar_mass for each in species])),
     }
+    if layout.phases:
+        coordinates |= phase_coordinates(conditions_of(layout, cases[0]))
     return xr.Dataset(variables, coordinates)
 
 

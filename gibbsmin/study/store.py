@@ -30,7 +30,7 @@ from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.scenario.reading import identifier
 from gibbsmin.study.planning import Plan, axis_dims, point_dims
 from gibbsmin.study.shards import UNFINISHED, file_digest, write_whole
-from gibbsmin.study.solving import RECEIPTS, STORE, Chunk, Group, Receipt
+from gibbsmin.study.solving import RECEIPTS, STORE, Chunk, Group, Receipt, solver_table
 from gibbsmin.study.trail import TRAILS
 
 MANIFEST = "manifest.json"
@@ -218,10 +218,11 @@ def _coordinates(plan: Plan, group: Group) -> xr.Dataset:
         masses = np.array([each.molar_mass for each in kept])
         coordinates["molar_mass"] = ("species", masses, {"units": "kg mol-1", "long_name": "molar mass"})
     if any(array.extra == "element" for array in group.arrays):
-        from gibbsmin.solving import thermo_table
-
-        elements = thermo_table(layout.species, layout.extrapolate).elements
+        elements = solver_table(layout).elements
         coordinates["element"] = ("element", _text(elements), {"long_name": "element"})
+    if layout.phases:
+        names = _text([each.name for each in layout.phases])
+        coordinates["phase"] = ("phase", names, {"long_name": "condensed phase"})
     names = _text([each.name for each in layout.feed_species])
     coordinates["feed_species"] = ("feed_species", names, {"long_name": "species of the feed"})
     for name, quantity in plan.study.quantities.items():
