@@ -85,6 +85,23 @@ reactions:
 """
 )
 
+PHASES = """\
+title: Soot beside a made-up gas
+feed:
+  gas:
+    temperature: 400 degC
+    amounts: {CH4: 1 mol, CO2: 1 mol, H2O: 0.5 mol}
+grid:
+  temperature: {from: 500 degC, to: 900 degC, step: 100 K}
+  pressure: [1 bar, 5 bar, 20 bar]
+species:
+  gases: [CH4, CO, CO2, H2, H2O]
+  condensed: [graphite]
+results:
+  key species: [H2, CO]
+cross-check: {points: none}
+"""
+
 LARGE = """\
 title: A map of ten thousand points
 feed:
@@ -117,6 +134,12 @@ def large_outcome() -> Outcome:
 def reactions_outcome() -> Outcome:
     """Two reactions with a shortcut, one against the mixture, and invented measured values."""
     return _run(REACTIONS)
+
+
+@cache
+def phases_outcome() -> Outcome:
+    """A gas from which graphite forms over a part of the map."""
+    return _run(PHASES)
 
 
 def line_outcome() -> Outcome:

@@ -28,6 +28,7 @@ from tests.report_cases import (
     large_outcome,
     line_outcome,
     needed,
+    phases_outcome,
     point_outcome,
     reactions_outcome,
     small_outcome,
@@ -373,6 +374,18 @@ def test_unsolved_points_boundaries_and_activities_are_shown(opened: Opener) -> 
     page.page.keyboard.press("Home")
     page.settle()
     assert "not solved" in page.page.inner_text("#point-species")
+
+
+def test_condensed_phases_have_amounts_and_activities(opened: Opener) -> None:
+    outcome = phases_outcome()
+    page = opened(outcome)
+    phase = str(outcome.dataset["phase"].values[0])
+    for variable in ("phase_amount", "phase_activity"):
+        choose(page, "quantity", f"{variable}|{phase}")
+        expected = outcome.dataset[variable].sel(phase=phase).transpose("pressure", "temperature")
+        np.testing.assert_allclose(map_values(page), expected, rtol=PACKED, atol=1e-30)
+    assert "5 gases and 1 condensed phase at equilibrium" in page.page.inner_text("header")
+    assert "1 pure condensed phase may form beside them" in page.page.inner_text("#species")
 
 
 def test_checked_points_appear_on_request(small: OpenedPage) -> None:

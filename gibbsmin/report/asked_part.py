@@ -129,8 +129,8 @@ def species_part(scenario: Scenario) -> list[Markup | None]:
     """The species that take part, the range of their data and where these come from."""
     temperature = scenario.temperature.values
     low, high = min(temperature), max(temperature)
-    outside = [s for s in scenario.species if s.lower > low or s.upper < high]
-    told = f"{len(scenario.species)} gases take part: {scenario.choice.rule}."
+    outside = {s.name for s in _asked(scenario) if s.lower > low or s.upper < high}
+    told = f"{_counted(scenario)}: {scenario.choice.rule}."
     verdict = (
         f"The data of all of them cover the grid's temperatures, {low:g} to {high:g} K."
         if not outside
@@ -139,8 +139,14 @@ def species_part(scenario: Scenario) -> list[Markup | None]:
     )
     sources = list(dict.fromkeys(_collection(each) for each in _all(scenario)))
     numbers = {source: position for position, source in enumerate(sources, start=1)}
-    rows = [_species_row(each, numbers, each in outside, "") for each in scenario.species]
-    fed_only = [s for s in scenario.feed_species.values() if s.name not in scenario.choice.names]
+    rows = [_species_row(each, numbers, each.name in outside, "") for each in scenario.species]
+    choice = scenario.choice
+    rows += [
+        _species_row(each, numbers, each.name in outside, "condensed phase") for each in choice.condensed
+    ]
+    rows += [_species_row(each, numbers, each.name in outside, "held back") for each in choice.held_back]
+    asked = {each.name for each in _asked(scenario)}
+    fed_only = [each for each in scenario.feed_species.values() if each.name not in asked]
     rows += [_species_row(each, numbers, False, "feed only") for each in fed_only]
     headings = [
         "species",
@@ -170,8 +176,24 @@ def species_part(scenario: Scenario) -> list[Markup | None]:
     ]
 
 
+def _asked(scenario: Scenario) -> tuple[Species, ...]:
+    """Gases, condensed phases, and those of which only the activity is wanted."""
+    return (*scenario.species, *scenario.choice.condensed, *scenario.choice.held_back)
+
+
+def _counted(scenario: Scenario) -> str:
+    choice = scenario.choice
+    told = f"{len(scenario.species)} gases take part"
+    if choice.condensed:
+        several = len(choice.condensed) > 1
+        told += f", {len(choice.condensed)} pure condensed {'phases' if several else 'phase'} may form beside them"
+    if choice.held_back:
+        told += f"; of {len(choice.held_back)} held back only the activity is told"
+    return told
+
+
 def _all(scenario: Scenario) -> list[Species]:
-    known = {each.name: each for each in (*scenario.species, *scenario.feed_species.values())}
+    known = {each.name: each for each in (*_asked(scenario), *scenario.feed_species.values())}
     return list(known.values())
 
 

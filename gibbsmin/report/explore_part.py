@@ -154,7 +154,14 @@ def _point() -> Markup:
             role="region",
             aria_label="Composition at the point",
         ),
-        tag("dl", id="point-results", class_="facts compact"),
+        tag(
+            "div",
+            tag("dl", id="point-results", class_="facts compact"),
+            class_="point-results-box",
+            tabindex="0",
+            role="region",
+            aria_label="Results at the point",
+        ),
         id="point",
         aria_label="Composition at the point",
     )

@@ -180,7 +180,7 @@ def _taking_part(outcome: Outcome) -> str:
     if "phase_takes_part" not in outcome.dataset.coords:
         return gases
     phases = int(outcome.dataset["phase_takes_part"].sum())
-    return f"{gases} and {phases} condensed phases" if phases else gases
+    return f"{gases} and {phases} condensed {'phase' if phases == 1 else 'phases'}" if phases else gases
 
 
 def mark(good: bool | None, text: str) -> Markup:

@@ -14,6 +14,7 @@ from typing import Literal
 import numpy as np
 import xarray as xr
 
+from gibbsmin.outcome.composition import amount_at_equilibrium
 from gibbsmin.outcome.summary import SHOWN_UNITS
 from gibbsmin.report.boundaries import is_boundary
 from gibbsmin.report.markup import pretty_name, pretty_words
@@ -164,10 +165,7 @@ def _kind(name: str, array: xr.DataArray) -> Kind:
 
 def gap_per_mol(dataset: xr.Dataset) -> xr.DataArray:
     """The optimality gap per mol of gas and condensed phases [1], over the grid."""
-    amount = dataset["gas_amount"]
-    if "phase_amount" in dataset:
-        amount = amount + dataset["phase_amount"].sum("phase", skipna=False)
-    return (dataset["gap"] / amount).transpose(*dataset["status"].dims)
+    return (dataset["gap"] / amount_at_equilibrium(dataset)).transpose(*dataset["status"].dims)
 
 
 def _gap(dataset: xr.Dataset) -> Quantity:
