@@ -165,7 +165,6 @@ def test_files_are_found_beside_the_scenario(tmp_path: Path) -> None:
         ("unit: atm^2", "unit: atm^3", "[12.1", "does not fit: moles of gas change by 2"),
         ("ln K = 4577.8/T - 4.33", "ln K = 4577.8/T - tan(T)", "ln K = 4577", "is no term of a correlation"),
         ("one: [reforming]", "one: [refining]", "refining", "'refining' is not one of the reactions"),
-        ("one: [reforming]", "one: [deposit]", "one", "C(gr) is condensed"),
         ("both: [reforming, shift]", "both: [reforming, shift, reforming]", "both", "depend on each other"),
         ("gases: [CH4, H2O, CO, CO2, H2, N2]", "gases: [CH4, H2O, CO, H2, N2]", "both", "CO2 is not among the gases"),
         ("400, 12.6, 0.4", "400, 0, 0.4", "400, 0", "K = 0 is not above zero"),

@@ -165,7 +165,6 @@ def test_liquid_water_is_fed_as_steam_and_unlisted_gas_is_carried_along() -> Non
     ("equations", "feed", "words"),
     [
         (["CO + H2O = CO2 + H2", "2 CO + 2 H2O = 2 CO2 + 2 H2"], {"CO": 1}, "no new reaction beside"),
-        (["2 CO = C(gr) + CO2"], {"CO": 1}, "C(gr) is condensed"),
         (["CH4 + CO2 = CH3COOH"], {"CH4": 1}, "CH3COOH is not among the species of the mixture"),
         (["CO + H2O = CO2 + H2"], {"C(gr)": 1, "H2O": 1}, "no gas of the mixture has its composition"),
     ],
@@ -177,6 +176,42 @@ def test_subsets_that_cannot_be_solved(equations: list[str], feed: dict[str, flo
             Subset("bad", tuple(read_reaction(text) for text in equations)),
         )
     assert words in str(caught.value)
+
+
+def test_boudouard_alone_deposits_until_its_constant_is_met() -> None:
+    """One extent x: n_CO = 1 - 2x, n_CO2 = x, carbon has activity 1. Root by bisection."""
+    boudouard = read_reaction("2 CO = C(gr) + CO2", name="boudouard")
+    where = conditions("CO CO2 N2", {"CO": 1.0, "N2": 0.2})
+    found = solve_subset(where, Subset("b", (boudouard,)))
+    assert (found.status == 0).all()
+    ln_K = ReactionFunctions(boudouard).ln_K(T)
+    for i, j in ((0, 0), (7, 1), (14, 2)):
+
+        def miss(x: float, i: int = i, j: int = j) -> float:
+            gas = 1.2 - x
+            return float(np.log(x / gas) - 2 * np.log((1 - 2 * x) / gas) - LOG_P[j] - ln_K[i])
+
+        x = brentq(miss, 1e-15, 0.5 - 1e-15, xtol=1e-16, rtol=1e-14)
+        assert found.amounts[0, i, j, 1] == pytest.approx(x, rel=1e-9)
+        assert found.gas[0, i, j] == pytest.approx(1.2 - x, rel=1e-10)
+
+
+def test_carbon_fed_is_gasified_until_it_is_gone() -> None:
+    gasification = read_reaction("C(gr) + H2O = CO + H2", name="gasification")
+    where = conditions("CO H2O H2 CO2", {"C(gr)": 1.0, "H2O": 2.0})
+    found = solve_subset(where, Subset("g", (gasification, SHIFT)))
+    assert (found.status == 0).all()
+    carbon = found.amounts[..., 0] + found.amounts[..., 3]
+    assert (carbon <= 1 + 1e-12).all()
+    left = carbon < 1 - 1e-9
+    assert left.any()
+    assert not left.all()
+    ln_Q = np.log(found.mole_fractions) + LOG_P[:, None]
+    excess = (
+        ln_Q[..., 0] + ln_Q[..., 2] - ln_Q[..., 1] - ReactionFunctions(gasification).ln_K(T)[None, :, None]
+    )
+    np.testing.assert_allclose(excess[left], 0.0, atol=1e-9)
+    assert (excess[~left] < 0).all()  # no carbon left to react further
 
 
 # --- against the mixture -------------------------------------------------------------------------------------
@@ -279,6 +314,11 @@ def test_carbon_over_a_dry_gas_is_the_reason_and_its_activity_is_that_of_boudoua
     (one,) = compare(full, Subset("both", (REFORMING, SHIFT)), key_species=["H2"])
     np.testing.assert_array_equal(one.reason == Reason.CONDENSED_PHASE, full.activity > 1)
     assert one.share(Reason.WITHIN) == pytest.approx(float((full.activity <= 1).mean()))
+    # What the deposit would change is told when the reaction is named.
+    known = read_reaction("2 CO = C(gr) + CO2", name="deposit")
+    (told,) = compare(full, Subset("both", (REFORMING, SHIFT)), key_species=["H2"], known_reactions=[known])
+    assert told.neglected[0].reaction.name == "deposit"
+    np.testing.assert_array_equal(told.neglected[0].change > 1e-6, full.activity > 1)
 
 
 def test_absent_elements_and_absent_substances_have_no_activity() -> None:

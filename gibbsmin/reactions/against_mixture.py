@@ -24,7 +24,7 @@ from numpy.typing import NDArray
 from gibbsmin.errors import ReactionError
 from gibbsmin.reactions.equation import Reaction
 from gibbsmin.reactions.independence import coverage, split_redundant
-from gibbsmin.reactions.subset import Composition, MapConditions, Subset, as_gases, solve_subset
+from gibbsmin.reactions.subset import Composition, MapConditions, Subset, gas_for, solve_subset
 
 if TYPE_CHECKING:
     from gibbsmin.reactions.shortcuts import Shortcut
@@ -261,8 +261,9 @@ def compare(
 def conversion_of(conditions: MapConditions, composition: Composition, species: str) -> Array:
     """Conversion of a feed species [1], (F, nT, nP); NaN for feeds without it."""
     fed = np.zeros(len(conditions.feed))
-    for j, each in enumerate(as_gases(conditions)):
-        if each.name == species:
+    for j, each in enumerate(conditions.feed_species):
+        gas = gas_for(each, conditions.species)
+        if gas is not None and gas.name == species:
             fed += conditions.feed[:, j].astype(np.float64)
     names = [each.name for each in conditions.species]
     left = composition.amounts[..., names.index(species)]
@@ -378,7 +379,7 @@ def _candidates(
     fraction = full.composition.mole_fractions
     abundance = np.array([np.nanmax(fraction[..., position[each.name]], initial=0.0) for each in gases])
     needed = {name for each in subset.reactions for name in each.stoichiometry}
-    needed.update(each.name for each in as_gases(full.conditions))
+    needed.update(each.name for each in full.conditions.feed_species)
     worth = [
         j
         for j, each in enumerate(gases)
@@ -386,13 +387,14 @@ def _candidates(
     ]
     listed = [gases[j] for j in worth]
     inside = {each.name for each in listed}
-    named = [
-        each
-        for each in known
-        if all(one.state == "g" for one in each.species) and each.stoichiometry.keys() <= inside
-    ]
-    # Each known reaction stands for itself, so dependence counts against the subset alone.
+    named = [each for each in known if all(one.state != "g" or one.name in inside for one in each.species)]
+    phases = {
+        one.name: one for each in (*subset.reactions, *named) for one in each.species if one.state != "g"
+    }
+    listed += phases.values()
     names = [each.name for each in listed]
+    # Each known reaction stands for itself, so dependence counts against the subset alone.
     fresh = [each for each in named if not split_redundant([*subset.reactions, each], names)[1]]
-    covered = coverage(listed, [*subset.reactions, *fresh], abundance=list(abundance[worth]))
+    plenty = [*abundance[worth], *(0.0 for _ in phases)]
+    covered = coverage(listed, [*subset.reactions, *fresh], abundance=plenty)
     return [*fresh, *covered.missing][:MOST_CANDIDATES]

@@ -104,22 +104,25 @@ def conserved_rows(species: Sequence[Species], reactions: Sequence[Reaction]) ->
 def solve_subset(conditions: MapConditions, subset: Subset, *, threads: int | None = None) -> Composition:
     """The composition at which the reactions of the subset, and no others, are at equilibrium.
 
-    What takes part: the species of the reactions and of the feed. Feed species that are not in the mixture's list
-    are carried along as inert gas.
+    What takes part: the species of the reactions and of the feed. Condensed species of the reactions are pure phases
+    beside the gas. Feed species that are not in the mixture's list are carried along as inert gas.
 
     Raises:
-        ReactionError: see `conserved_rows`; or a reaction has a condensed species.
+        ReactionError: see `conserved_rows`; or a gas of a reaction is not in the mixture, or a condensed species of the
+            feed neither reacts nor has a gas to stand for it.
     """
-    _require_gases(subset)
-    fed = as_gases(conditions)
+    phases = {one.name: one for each in subset.reactions for one in each.species if one.state != "g"}
     names = [each.name for each in conditions.species]
-    present = {name for each in subset.reactions for name in each.stoichiometry}
-    present.update(each.name for each in fed)
-    listed = [j for j, name in enumerate(names) if name in present]
-    unlisted = [each for each in fed if each.name not in names]
-    part = [*(conditions.species[j] for j in listed), *unlisted]
     for each in subset.reactions:
-        each.over(names)
+        each.over([*names, *phases])
+    fed = fed_species(conditions, phases)
+    reacting = {name for each in subset.reactions for name in each.stoichiometry}
+    present = reacting.union(each.name for each in fed)
+    listed = [j for j, name in enumerate(names) if name in present]
+    unlisted = list(
+        {each.name: each for each in fed if each.name not in names and each.state == "g"}.values()
+    )
+    part = [*(conditions.species[j] for j in listed), *unlisted, *phases.values()]
     rows = conserved_rows(part, subset.reactions)
     matrix = np.array([[float(value) for value in row] for row in rows])
     position = {each.name: k for k, each in enumerate(part)}
@@ -128,42 +131,65 @@ def solve_subset(conditions: MapConditions, subset: Subset, *, threads: int | No
     scaled, factor = (element_amounts_of_fractions if exact else element_amounts)(
         conditions.feed, composition
     )
+    T = conditions.temperature
     gibbs = np.concatenate(
-        [conditions.gibbs_RT[:, listed], np.zeros((len(conditions.temperature), len(unlisted)))], axis=1
+        [conditions.gibbs_RT[:, listed], np.zeros((len(T), len(unlisted))), _phase_gibbs(phases, T)], axis=1
     )
-    gibbs = gibbs + _shift(conditions.temperature, subset, part)
-    solution = solve_grid(
-        matrix, scaled, gibbs, conditions.temperature, conditions.log_pressure, threads=threads
-    )
+    gibbs = gibbs + _shift(T, subset, part)
+    mask = np.array([each.state != "g" for each in part]) if phases else None
+    solution = solve_grid(matrix, scaled, gibbs, T, conditions.log_pressure, condensed=mask, threads=threads)
     found = solution.amounts / factor[:, None, None, None]
     amounts = np.zeros((*found.shape[:-1], len(names)))
     amounts[..., listed] = found[..., : len(listed)]
     amounts[solution.status != 0] = np.nan
-    return Composition(amounts, np.asarray(found.sum(axis=-1)), solution.status)
+    gas = found[..., : len(part) - len(phases)].sum(axis=-1)
+    return Composition(amounts, np.asarray(gas), solution.status)
 
 
-def as_gases(conditions: MapConditions) -> tuple[Species, ...]:
-    """The feed's species, with a condensed one (liquid water) stood in for by the listed gas of its composition.
+def fed_species(
+    conditions: MapConditions, phases: Mapping[str, Species] | None = None
+) -> tuple[Species, ...]:
+    """The feed's species; a condensed one that does not react is stood in for by the listed gas of its composition.
+
+    So liquid water counts as steam. `phases` are the condensed species that react.
 
     Raises:
         ReactionError: there is no such gas.
     """
-    gases = []
+    found = []
     for each in conditions.feed_species:
-        if each.state == "g":
-            gases.append(each)
-            continue
-        same = [
-            other
-            for other in conditions.species
-            if other.state == "g" and other.composition == each.composition and other.charge == each.charge
-        ]
-        if not same:
+        stand_in = each if each.name in (phases or {}) else gas_for(each, conditions.species)
+        if stand_in is None:
             raise ReactionError(
-                each.name, "the feed holds it, and no gas of the mixture has its composition to stand for it"
+                each.name,
+                "the feed holds it, it takes no part in these reactions, and no gas of the mixture has its composition "
+                "to stand for it",
             )
-        gases.append(same[0])
-    return tuple(gases)
+        found.append(stand_in)
+    return tuple(found)
+
+
+def gas_for(species: Species, mixture: Sequence[Species]) -> Species | None:
+    """The species itself if it is a gas, else the gas molecule of the mixture that has its composition, or None."""
+    if species.state == "g":
+        return species
+    if sum(species.composition.values()) == 1:  # graphite is not stood in for by carbon atoms
+        return None
+    same = (
+        other
+        for other in mixture
+        if other.state == "g" and other.composition == species.composition and other.charge == species.charge
+    )
+    return next(same, None)
+
+
+def _phase_gibbs(phases: Mapping[str, Species], T: Array) -> Array:
+    """g/RT of pure phases (nT, K); +inf where they have no data."""
+    from gibbsmin.species import ThermoTable
+
+    if not phases:
+        return np.zeros((len(T), 0))
+    return ThermoTable(list(phases.values())).gibbs_RT(T)
 
 
 def _shift(T: Array, subset: Subset, part: Sequence[Species]) -> Array:
@@ -181,16 +207,6 @@ def _shift(T: Array, subset: Subset, part: Sequence[Species]) -> Array:
             exact = ReactionFunctions(each, extrapolate=True).ln_K(T)
             error[:, k] = shortcut.ln_K(T) - exact
     return np.asarray(-(error @ np.linalg.pinv(N)))
-
-
-def _require_gases(subset: Subset) -> None:
-    for each in subset.reactions:
-        condensed = [one.name for one in each.species if one.state != "g"]
-        if condensed:
-            raise ReactionError(
-                each.name,
-                f"{', '.join(condensed)} is condensed; only reactions of gases are compared with the gas mixture",
-            )
 
 
 def _identity(size: int) -> list[Row]:

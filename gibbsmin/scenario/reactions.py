@@ -304,21 +304,15 @@ class _Reader:
 
     def _unfit(self, reactions: Sequence[Reaction], gases: Sequence[Species], path: YamlPath) -> bool:
         names = [each.name for each in gases]
+        names += [one.name for each in reactions for one in each.species if one.state != "g"]
         for each in reactions:
-            condensed = [one.name for one in each.species if one.state != "g"]
-            if condensed:
-                self.reading.fault(
-                    path,
-                    f"{each.name}: {condensed[0]} is condensed; only reactions of gases are compared with the map",
-                )
-                return True
             missing = [name for name in each.stoichiometry if name not in names]
             if missing:
                 self.reading.fault(
                     path, f"{each.name}: {', '.join(missing)} is not among the gases of this scenario"
                 )
                 return True
-        _, redundant = split_redundant(reactions, names)
+        _, redundant = split_redundant(reactions, list(dict.fromkeys(names)))
         if redundant:
             self.reading.fault(path, f"the reactions depend on each other: {redundant[0]}; leave one out")
         return bool(redundant)
