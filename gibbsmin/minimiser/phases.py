@@ -36,6 +36,12 @@ from gibbsmin.minimiser.vertex import PIVOT_SIZE
 NEGATIVE_AMOUNT = 1e-13
 """Amounts of phases above minus this part of the feed are zero: the phase is at its boundary."""
 
+CANCELLED = 1e-3
+"""An amount below this part of the terms it is the difference of is made anew."""
+
+STAYS = 1e6
+"""Weight by which a present phase stays among the components, whatever the gas."""
+
 SUPERSATURATION = 1e-11
 """ln activity of an absent phase up to which it is at its boundary: the rounding of potentials of some hundreds of RT."""
 
@@ -108,13 +114,12 @@ def solve_beside(problem: GasProblem, b: Amounts, c: Floats, solve_gas: GasSolve
     m = components.amounts(b)
     found = solve_gas(problem.matrix, problem.amounts(b), problem.potentials(c))
     solved = found.solved & (m[:, problem.empty_rows] == 0.0).all(axis=1)
-    solved &= np.isfinite(found.element_potentials).all(axis=1)
+    # a species that only these phases rule out calls for another phase to be present
+    solved &= np.isfinite(found.log_mole_fractions).all(axis=1)
     amounts = np.zeros((n, S))
     amounts[:, problem.gas] = found.amounts
     phases = components.columns[problem.phase_rows]
-    amounts[:, phases] = (
-        m[:, problem.phase_rows] - found.amounts @ C[np.ix_(problem.phase_rows, problem.gas)].T
-    )
+    amounts[:, phases] = _held(problem, m, found, b)
     potentials = np.zeros((n, len(C)))
     own = np.searchsorted(problem.gas, components.columns[problem.gas_rows])
     potentials[:, problem.gas_rows] = found.element_potentials @ problem.matrix[:, own]
@@ -125,6 +130,30 @@ def solve_beside(problem: GasProblem, b: Amounts, c: Floats, solve_gas: GasSolve
     log_activities[:, problem.gas] = found.log_mole_fractions
     log_activities[:, phases] = 0.0
     return Equilibria(components, amounts, log_activities, potentials, found.iterations, solved)
+
+
+def _held(problem: GasProblem, m: Floats, found: Minimum, b: Amounts) -> Floats:
+    """(n, k) what is left for the present phases.
+
+    Where little is left of much, components as abundant as this composition allows make the difference again without
+    cancellation: the phase of a scarce element is then counted by that element.
+    """
+    components = problem.components
+    C = components.C[np.ix_(problem.phase_rows, problem.gas)]
+    held: Floats = m[:, problem.phase_rows] - found.amounts @ C.T
+    terms = np.abs(m[:, problem.phase_rows]) + found.amounts @ np.abs(C).T
+    phases = components.columns[problem.phase_rows]
+    for point in np.flatnonzero((np.abs(held) < CANCELLED * terms).any(axis=1) & found.solved):
+        weights = np.full(components.C.shape[1], -np.inf)
+        weights[problem.gas] = found.log_mole_fractions[point]
+        weights[phases] = STAYS
+        if not np.isfinite(weights[components.columns]).all():
+            continue
+        adapted = components.adapted(weights)
+        rows = np.searchsorted(adapted.columns, phases)
+        left = adapted.amounts(b[point : point + 1])[0, rows]
+        held[point] = left - adapted.C[np.ix_(rows, problem.gas)] @ found.amounts[point]
+    return held
 
 
 def _without_gas(problem: GasProblem, b: Amounts, c: Floats) -> Equilibria:
@@ -273,10 +302,16 @@ def _from_inside(
         if following == phases:
             answer.steps += inside.steps
             return answer
-        if following is None:
-            break
-        phases = following
+        phases = _one_more(phases, condensed, inside) if following is None else following
     return _as_it_is(inside, c)
+
+
+def _one_more(phases: tuple[int, ...], condensed: NDArray[np.bool_], inside: Inside) -> tuple[int, ...]:
+    """Add the absent phase that is nearest to saturation: a trace too small for the interior method to show it."""
+    absent = np.setdiff1d(np.flatnonzero(condensed), phases)
+    if not absent.size:
+        return phases
+    return tuple(sorted((*phases, int(absent[np.argmax(inside.log_activities[absent])]))))
 
 
 def _gas_free(
