@@ -384,6 +384,12 @@ def test_condensed_phases_have_amounts_and_activities(opened: Opener) -> None:
         choose(page, "quantity", f"{variable}|{phase}")
         expected = outcome.dataset[variable].sel(phase=phase).transpose("pressure", "temperature")
         np.testing.assert_allclose(map_values(page), expected, rtol=PACKED, atol=1e-30)
+    choose(page, "quantity", f"phase_element_fraction|{phase}|C")
+    share = outcome.dataset["phase_element_fraction"].sel(phase=phase, element="C")
+    np.testing.assert_allclose(
+        map_values(page), share.transpose("pressure", "temperature"), rtol=PACKED, atol=1e-30
+    )
+    assert page.page.inner_text("#map-caption") == f"Share of C in {phase}."
     assert "5 gases and 1 condensed phase at equilibrium" in page.page.inner_text("header")
     assert "1 pure condensed phase may form beside them" in page.page.inner_text("#species")
 

@@ -47,6 +47,10 @@ _SHORT = {  # the data set's own long names say more than a table has room for
     "balance_residual": "largest error of an element balance",
     "crosscheck_difference": "difference in the cross-check",
     "crosscheck_status": "outcome of the cross-check",
+    "phase_amount": "amount of",
+    "phase_amount_per_feed": "amount per mol of feed of",
+    "phase_mass": "mass of",
+    "phase_activity": "activity of",
     "alone_reason": "verdict",
     "alone_error": "error of the mole fraction of",
     "condensed_activity": "largest activity of a condensed phase",
@@ -100,6 +104,8 @@ def quantities(dataset: xr.Dataset, key_species: Sequence[str] = ()) -> Iterator
             found.append(_quantity(name, _title(name, array), array, _kind(name, array)))
         elif len(further) == 1 and set(array.dims) == {*grid, *further}:
             found += list(_by_label(name, array, further[0]))
+        elif name == "phase_element_fraction":
+            found += list(_shares(array))
         elif len(further) == 2 and "species" in further and name not in _BY_SPECIES:
             (other,) = (dim for dim in further if dim != "species")
             for each in key_species:
@@ -115,9 +121,27 @@ def _by_label(name: str, array: xr.DataArray, dim: str, species: str = "") -> It
     group = GROUPS[kind] if kind != "property" else title[:1].upper() + title[1:]
     for position, label in enumerate(array[dim].values if dim in array.coords else range(array.sizes[dim])):
         part = array.isel({dim: position})
-        words = f"{title} {pretty_name(species)}".rstrip() + f", {pretty_name(str(label))}"
+        shown = pretty_name(str(label))
+        words = (
+            f"{title} {shown}"
+            if kind == "phase"
+            else f"{title} {pretty_name(species)}".rstrip() + f", {shown}"
+        )
         made = _quantity("|".join(filter(None, (name, species, str(label)))), words, part, kind)
         yield replace(made, group=group)
+
+
+def _shares(array: xr.DataArray) -> Iterator[Quantity]:
+    """Of each element the share that is in a phase, for the phases that hold it anywhere."""
+    for phase in map(str, array["phase"].values):
+        for element in map(str, array["element"].values):
+            part = array.sel(phase=phase, element=element)
+            if float(np.nanmax(part.values, initial=0.0)) > 0:
+                name, label = (
+                    f"phase_element_fraction|{phase}|{element}",
+                    f"share of {element} in {pretty_name(phase)}",
+                )
+                yield _quantity(name, label, part, "phase")
 
 
 def _quantity(name: str, label: str, array: xr.DataArray, kind: Kind) -> Quantity:
