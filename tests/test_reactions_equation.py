@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pickle
 import random
 from fractions import Fraction
 
@@ -135,3 +136,10 @@ def test_span_grows_by_rank() -> None:
         for last in range(len(rows)):
             assert added[last] == (rank(rows[: last + 1]) > rank(rows[:last]))
         assert len(span) == rank(rows) == sum(added)
+
+
+def test_errors_survive_pickling() -> None:
+    with pytest.raises(ReactionError) as caught:
+        read_reaction("CO + H2O = CO2")
+    again = pickle.loads(pickle.dumps(caught.value))
+    assert (str(again), again.reaction) == (str(caught.value), "CO + H2O = CO2")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import pickle
 from pathlib import Path
 
 import pytest
@@ -222,3 +223,22 @@ def test_faults_of_reactions_come_with_those_of_other_sections() -> None:
     with pytest.raises(ScenarioError) as caught:
         parse_scenario(text)
     assert len(caught.value.faults) == 2
+
+
+def test_the_preview_says_what_will_be_worked_out() -> None:
+    told = parse_scenario(SOUND).describe()
+    for words in (
+        "shift: CO + H2O = CO2 + H2",
+        "shortcuts to audit: tangent, given, secant",
+        "alone against the whole map: one, both",
+        "measured K of shift, bench: 3 values",
+        "approach to equilibrium of shift: 1 analyses",
+    ):
+        assert words in told
+
+
+def test_a_scenario_with_reactions_travels_to_other_processes() -> None:
+    scenario = parse_scenario(SOUND)
+    again = pickle.loads(pickle.dumps(scenario))
+    assert [each.name for each in again.reactions.shortcuts] == [each.name for each in wanted().shortcuts]
+    assert float(again.reactions.shortcuts[-1].ln_K(700.0)) == float(wanted().shortcuts[-1].ln_K(700.0))

@@ -31,8 +31,8 @@ _COLOURS = {
 }
 """Light to dark in grey as well, so that the map survives a copier."""
 
-_ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.0, right=1.75)
-_PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.75)
+_ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.0, right=1.9)
+_PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.9)
 _PAIR = Geometry(panel_width=3.1, panel_height=2.7, right=0.25)
 _LINES = Geometry(panel_width=2.6, panel_height=2.7, right=1.7)
 _MOST_PRESSURES = 3

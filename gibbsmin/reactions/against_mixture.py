@@ -121,7 +121,7 @@ class Largest:
     place: tuple[int, int, int]
 
     def __str__(self) -> str:
-        return f"{self.quantity} {self.value:+.3f}"
+        return f"{self.quantity} {self.value:+.3f}" if abs(self.value) >= 0.0005 else "below 0.001"
 
 
 @dataclass(frozen=True)

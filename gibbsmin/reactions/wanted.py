@@ -47,3 +47,18 @@ class ReactionsWanted:
     analyses: tuple[Analysis, ...] = ()
     analysed: tuple[Reaction, ...] = ()
     analysis_species: Mapping[str, Species] = field(default_factory=dict)
+
+    def in_words(self) -> list[str]:
+        """What will be worked out, one line each."""
+        lines = [f"{each.name}: {each.equation}" for each in self.reactions]
+        if self.shortcuts:
+            lines.append(f"shortcuts to audit: {', '.join(each.name for each in self.shortcuts)}")
+        if self.subsets:
+            lines.append(f"alone against the whole map: {', '.join(each.name for each in self.subsets)}")
+        lines += [
+            f"measured K of {each.reaction.name}, {each.name}: {len(each)} values" for each in self.measured
+        ]
+        if self.analyses:
+            names = ", ".join(each.name for each in self.analysed)
+            lines.append(f"approach to equilibrium of {names}: {len(self.analyses)} analyses")
+        return lines

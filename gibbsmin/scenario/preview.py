@@ -87,6 +87,8 @@ def describe(scenario: Scenario) -> str:
         f"Results: {size.points:,} points x {size.species} gases, about {_bytes(size.result_bytes)}",
         _time_line(size),
     ]
+    if scenario.reactions is not None:
+        blocks.append("\n".join(["Reactions:", *_indented(scenario.reactions.in_words())]))
     if scenario.choice.left_out:
         left_out = [f"{name}: {reason}" for name, reason in scenario.choice.left_out.items()]
         blocks.append("\n".join(["Left out:", *_indented(left_out)]))
