@@ -41,7 +41,8 @@ SLOPE_PART = 0.1
 class Inside:
     """A point inside the constraints, near the minimum.
 
-    log_activities (S,): ln y of gas species, -s of phases; gas_total N and phase amounts n_k [mol]; slack of the gas 1 - S.
+    log_activities (S,): ln y of gas species, -s of phases; gas_total N and amounts (S,) [mol]; slack of the gas 1 - S.
+    staying (S,): phases whose amount no longer falls with mu.
     """
 
     components: Components
@@ -50,7 +51,7 @@ class Inside:
     gas_total: float
     amounts: Floats  # (S,)
     gas_slack: float
-    mu: float
+    staying: NDArray[np.bool_]
     steps: int
 
 
@@ -64,11 +65,12 @@ def follow_path(
     walk = _Walk(posed, condensed, components, b, c)
     mu = FIRST_MU
     with np.errstate(all="ignore"):  # trial steps may leave the constraints; they are not taken
-        while True:
+        while mu > LAST_MU:
             walk.climb(mu)
-            if mu <= LAST_MU:
-                return walk.inside(mu)
-            mu = max(mu * SHRINK, LAST_MU)
+            before = walk.amounts(mu)
+            mu *= SHRINK
+        walk.climb(mu)
+        return walk.inside(mu, before)
 
 
 class _Walk:
@@ -166,13 +168,22 @@ class _Walk:
         if gas_slack <= 0.0 or (slack <= 0.0).any():  # rounding, close to a wall
             self._take(*known)
 
-    def inside(self, mu: float) -> Inside:
+    def amounts(self, mu: float) -> Floats:
+        """(S,) amounts [mol] that the barrier assigns at its maximum."""
         log_all = self.log_all(self.log_y)
         gas_slack, slack = self.slacks(log_all)
-        total = self.size * mu / gas_slack
-        amounts = total * np.exp(log_all)
+        amounts: Floats = self.size * mu / gas_slack * np.exp(log_all)
         amounts[self.condensed] = self.size * mu / slack
-        return Inside(self.components, self.log_y, log_all, total, amounts, gas_slack, mu, self.steps)
+        return amounts
+
+    def inside(self, mu: float, before: Floats) -> Inside:
+        """The end of the path; `before` (S,) are the amounts at the mu before the last."""
+        log_all = self.log_all(self.log_y)
+        gas_slack, _ = self.slacks(log_all)
+        amounts = self.amounts(mu)
+        staying = self.condensed & (amounts > np.sqrt(SHRINK) * before)
+        total = self.size * mu / gas_slack
+        return Inside(self.components, self.log_y, log_all, total, amounts, gas_slack, staying, self.steps)
 
 
 NOISE = 1e-15

@@ -42,6 +42,9 @@ CANCELLED = 1e-3
 STAYS = 1e6
 """Weight by which a present phase stays among the components, whatever the gas."""
 
+MOST_GUESSES = 20
+"""Phases tried as the trace that is missing."""
+
 SUPERSATURATION = 1e-11
 """ln activity of an absent phase up to which it is at its boundary: the rounding of potentials of some hundreds of RT."""
 
@@ -284,34 +287,53 @@ def _from_inside(
     inside = follow_path(posed, condensed, start, b, c)
     slack = -inside.log_activities
     held = inside.amounts / size
-    likely = np.flatnonzero(condensed & (held > slack))
+    likely = np.flatnonzero(inside.staying)
     order = likely[np.argsort(slack[likely] / held[likely], kind="stable")]
     others = np.setdiff1d(np.arange(len(c)), order, assume_unique=True)
     columns = posed.system.independent_columns(np.concatenate([order, others]))
     phases = tuple(sorted(set(columns) & set(likely.tolist())))
     if inside.gas_total / size <= inside.gas_slack:
         return _gas_free(posed, condensed, inside, phases, b, c, size)
-    tried: set[tuple[int, ...]] = set()
-    while phases not in tried:
-        tried.add(phases)
-        problem = GasProblem.of(posed, condensed, phases)
-        if problem is None:
-            break
-        answer = solve_beside(problem, b[None, :], c[None, :], solve_gas)
-        (following,) = next_phases(problem, answer, condensed, np.array([size]))
-        if following == phases:
+    for guess in _guesses(phases, condensed, inside):
+        answer = _exchanged(posed, condensed, guess, b, c, size, solve_gas)
+        if answer is not None:
             answer.steps += inside.steps
             return answer
-        phases = _one_more(phases, condensed, inside) if following is None else following
     return _as_it_is(inside, c)
 
 
-def _one_more(phases: tuple[int, ...], condensed: NDArray[np.bool_], inside: Inside) -> tuple[int, ...]:
-    """Add the absent phase that is nearest to saturation: a trace too small for the interior method to show it."""
+def _guesses(
+    phases: tuple[int, ...], condensed: NDArray[np.bool_], inside: Inside
+) -> Iterator[tuple[int, ...]]:
+    """The phases that the interior method shows, then with one more: a trace too small for it to show."""
+    yield phases
     absent = np.setdiff1d(np.flatnonzero(condensed), phases)
-    if not absent.size:
-        return phases
-    return tuple(sorted((*phases, int(absent[np.argmax(inside.log_activities[absent])]))))
+    for phase in absent[np.argsort(-inside.log_activities[absent], kind="stable")][:MOST_GUESSES]:
+        yield tuple(sorted((*phases, int(phase))))
+
+
+def _exchanged(
+    posed: Posed,
+    condensed: NDArray[np.bool_],
+    phases: tuple[int, ...],
+    b: Amounts,
+    c: Floats,
+    size: float,
+    solve_gas: GasSolver,
+) -> Equilibria | None:
+    """One point from a guess of its phases, by exchanges; None if they come to no end."""
+    tried: set[tuple[int, ...]] = set()
+    following: tuple[int, ...] | None = phases
+    while following is not None and following not in tried:
+        tried.add(following)
+        problem = GasProblem.of(posed, condensed, following)
+        if problem is None:
+            return None
+        answer = solve_beside(problem, b[None, :], c[None, :], solve_gas)
+        (following,) = next_phases(problem, answer, condensed, np.array([size]))
+        if following == problem.present:
+            return answer
+    return None
 
 
 def _gas_free(
