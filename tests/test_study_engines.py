@@ -17,6 +17,7 @@ from gibbsmin.errors import MissingPackageError
 from gibbsmin.study import open_study, run_study
 from tests.study_cases import (
     STUDY,
+    breaks_off_at_the_fifth,
     dies_at_the_fifth,
     dies_at_two,
     fails_at_the_fifth,
@@ -137,6 +138,12 @@ def test_a_case_that_fails_stays_alone_and_is_tried_again_by_the_next_run(
     assert lines == ["found 5 of 6 chunks finished, 1 with failed cases; these are computed again"]
     assert run.computed_chunks == 1
     assert store_bytes(folder) == store_bytes(whole)
+
+
+def test_nothing_is_kept_of_a_case_that_breaks_off(study: Path, whole: Path, tmp_path: Path) -> None:
+    run_study(study, tmp_path / "broken", workers=0, solver=breaks_off_at_the_fifth)
+    check_the_rest(tmp_path / "broken", whole, {4: "ValueError"})
+    assert open_study(tmp_path / "broken").summary["checked points"].tolist() == [1] * 4 + [0] + [1] * 7
 
 
 def test_a_case_that_kills_its_process_is_left_out(study: Path, whole: Path, tmp_path: Path) -> None:

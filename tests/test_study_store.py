@@ -244,6 +244,19 @@ def test_a_wrong_answer_is_found_by_the_cross_check(tmp_path: Path) -> None:
     assert not run.all_confirmed
 
 
+def test_trouble_in_the_other_program_leaves_points_unanswered(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def trouble(*_: object) -> None:
+        raise ValueError("nothing fits")
+
+    monkeypatch.setattr("gibbsmin.comparison.Comparison.at", trouble)
+    run = run_study(write_study(tmp_path), tmp_path / "out", workers=0)
+    assert run.results.summary["no independent answer"].tolist() == [1] * 12
+    assert run.all_solved
+    assert run.all_confirmed  # a point without an answer is told, but is no contradiction
+
+
 def test_the_manifest_ties_chunks_to_what_they_were_made_from(results: StudyResults) -> None:
     manifest = json.loads((results.folder / "manifest.json").read_text(encoding="utf-8"))
     assert manifest["version"] == gibbsmin.__version__

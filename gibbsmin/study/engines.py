@@ -125,7 +125,7 @@ class Cluster:
 
     @property
     def workers(self) -> int:
-        return len(self._client.scheduler_info(n_workers=-1)["workers"])
+        return len(self._client.ncores())
 
     def compute(self, chunks: Sequence[tuple[int, Chunk]], work: Work) -> Iterator[tuple[int, Receipt]]:
         import distributed

@@ -71,29 +71,41 @@ def _or_none(value: float) -> float | None:
 
 def _cross_checks(chunk: Chunk, block: Block, table: ThermoTable) -> list[dict[str, Any]]:
     """For each case: how many points were solved again, and how far the answers differ."""
-    found: list[list[Any]] = [[] for _ in chunk.cases]
+    found: list[list[tuple[str, float]]] = [[] for _ in chunk.cases]
     if block.checked and not chunk.group.layout.condensed:  # the other program knows gases only
-        from gibbsmin.comparison import Comparison
+        for (i, _, _), answer in zip(block.checked, _answers(chunk, block, table), strict=True):
+            found[i].append(answer)
+    statuses = {"confirmed": "confirmed", "differing": "differs", _UNANSWERED: _UNANSWERED}
+    rows = []
+    for answers in found:
+        counts = {name: sum(status == each for each, _ in answers) for name, status in statuses.items()}
+        worst = largest(np.array([relative for _, relative in answers])) if answers else float("nan")
+        rows.append(
+            {"checked points": len(answers), **counts, "largest relative difference": _or_none(worst)}
+        )
+    return rows
 
-        points = _chosen_points(chunk, block, table)
-        compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
-        for k, (i, _, _) in enumerate(block.checked):
-            found[i].append(compare.at((k,)))
-    statuses = {
-        "confirmed": "confirmed",
-        "differing": "differs",
-        "no independent answer": "no independent answer",
-    }
-    return [
-        {
-            "checked points": len(points),
-            **{name: sum(point.status == status for point in points) for name, status in statuses.items()},
-            "largest relative difference": _or_none(
-                largest(np.array([point.relative for point in points])) if points else float("nan")
-            ),
-        }
-        for points in found
-    ]
+
+_UNANSWERED = "no independent answer"
+
+
+def _answers(chunk: Chunk, block: Block, table: ThermoTable) -> Iterator[tuple[str, float]]:
+    """Status and largest relative difference of each chosen point.
+
+    Whatever goes wrong in the other program leaves a point without an answer, and the study going.
+    """
+    from gibbsmin.comparison import Comparison
+
+    compare = None
+    for k in range(len(block.checked)):
+        try:
+            if compare is None:
+                points = _chosen_points(chunk, block, table)
+                compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
+            answer = compare.at((k,))
+            yield answer.status, answer.relative
+        except Exception:
+            yield _UNANSWERED, float("nan")
 
 
 def checked_points(case: Case, points: int, count: int) -> NDArray[np.intp]:

@@ -30,6 +30,7 @@ from gibbsmin.study.store import (
     Found,
     examine,
     forget_unfinished,
+    metadata,
     write_manifest,
     write_metadata,
     write_summary,
@@ -108,20 +109,21 @@ def run_study(
         found = examine(plan, home)
         if words := found.in_words():
             tell(words)
-        forget_unfinished(plan, home, found)
+        described = metadata(plan)
+        forget_unfinished(plan, home, found, described)
         left = [(i, chunk) for i, chunk in enumerate(plan.chunks) if i not in found.receipts]
         _check_disk(home, [chunk for _, chunk in left])
         workers = workers if client is not None else workers_for(plan, workers, [chunk for _, chunk in left])
         _report_finished(plan, found, progress)
-        described = write_metadata(plan, home)
+        digests = write_metadata(described, home)
         write_whole(home / STUDY_FILE, [study.text.encode()])
         receipts = dict(found.receipts)
         engine = Cluster(client) if client is not None else Processes(workers) if workers else ThisProcess()
         work = Work(home, secrets.token_hex(8), solver)
         _compute(engine, left, work, receipts, len(plan.chunks), progress)
         write_summary(plan, receipts, home)
-        write_manifest(plan, receipts, described, home)
-        forget_unfinished(plan, home, Found.complete(receipts, len(plan.chunks)))
+        write_manifest(plan, receipts, digests, home)
+        forget_unfinished(plan, home, Found.complete(receipts, len(plan.chunks)), described)
     from gibbsmin.study.results import open_study
 
     return StudyRun(open_study(home), found, len(left))

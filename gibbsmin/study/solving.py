@@ -282,7 +282,21 @@ class Block:
         return {name: variables[name].values for name in PHASE_VARIABLES}
 
     def fail(self, i: int, reason: str) -> None:
+        """Give a case up; what was taken of it before that is taken back."""
         self.failures[i] = reason
+        for values in (
+            self.amounts,
+            self.fractions,
+            self.gas,
+            self.gap,
+            self.largest_gap,
+            self.largest_balance,
+        ):
+            values[i] = np.nan
+        self.status[i] = NOT_COMPUTED
+        for values in self.extra.values():
+            values[i] = np.nan if values.dtype.kind == "f" else NOT_COMPUTED
+        self.checked = [each for each in self.checked if each[0] != i]
 
 
 def species_needed(group: Group) -> tuple[int, ...]:

@@ -113,16 +113,16 @@ def files_of(chunk: Chunk) -> Iterator[str]:
         yield "/".join(filter(None, [STORE, chunk.group.path, array.file_of(chunk.number)]))
 
 
-def forget_unfinished(plan: Plan, folder: Path, found: Found) -> None:
+def forget_unfinished(plan: Plan, folder: Path, found: Found, described: Mapping[str, bytes]) -> None:
     """Remove what does not belong to the plan's finished chunks: torn drafts, chunks of other inputs, trails.
 
     So a reader never meets values that the manifest does not vouch for, and an interrupted run ends with the same
-    files as one that was not.
+    files as one that was not. `described` is what `metadata` gives.
     """
     for i, chunk in enumerate(plan.chunks):
         if found.states[i] not in ("finished", "new"):
             (folder / chunk.receipt_file).unlink(missing_ok=True)
-    expected = set(metadata(plan))
+    expected = set(described)
     for i, chunk in enumerate(plan.chunks):
         if found.states[i] == "finished":
             expected.update(files_of(chunk))
@@ -139,12 +139,9 @@ def forget_unfinished(plan: Plan, folder: Path, found: Found) -> None:
     shutil.rmtree(folder / TRAILS, ignore_errors=True)
 
 
-def write_metadata(plan: Plan, folder: Path) -> dict[str, str]:
+def write_metadata(described: Mapping[str, bytes], folder: Path) -> dict[str, str]:
     """Write what describes the arrays; returns path within the folder -> SHA-256."""
-    digests = {}
-    for path, content in metadata(plan).items():
-        digests[path] = write_whole(folder / path, [content])
-    return digests
+    return {path: write_whole(folder / path, [content]) for path, content in described.items()}
 
 
 def metadata(plan: Plan) -> dict[str, bytes]:
