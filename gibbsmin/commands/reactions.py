@@ -7,8 +7,8 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
-    from gibbsmin.reactions.report import TemperatureUnit
     from gibbsmin.reactions.shortcuts import Shortcut
+    from gibbsmin.reactions.text import TemperatureUnit
 
 DEFAULT_FROM, DEFAULT_TO = "300 K", "1500 K"
 DEFAULT_PER_CENT = 5.0
@@ -164,7 +164,7 @@ def _shortcuts(options: argparse.Namespace) -> list[Shortcut]:
 
 def _measured(options: argparse.Namespace) -> int:
     from gibbsmin.reactions.equation import read_reaction
-    from gibbsmin.reactions.report import measured_text
+    from gibbsmin.reactions.measured_text import measured_text
     from gibbsmin.reactions.results import MeasuredSummary
     from gibbsmin.reactions.second_law_analysis import second_law
     from gibbsmin.reactions.third_law_analysis import third_law
@@ -185,7 +185,8 @@ def _measured(options: argparse.Namespace) -> int:
 def _approach(options: argparse.Namespace) -> int:
     from gibbsmin.reactions.approach import approaches
     from gibbsmin.reactions.equation import read_reaction
-    from gibbsmin.reactions.report import CELSIUS, approach_text
+    from gibbsmin.reactions.measured_text import approach_text
+    from gibbsmin.reactions.text import CELSIUS
     from gibbsmin.scenario.measurements import analyses_from_file
     from gibbsmin.species import standard_library
 
@@ -218,7 +219,7 @@ def _feed(words: list[str]) -> dict[str, float]:
 def _temperature(text: str, option: str) -> tuple[float, TemperatureUnit]:
     """K, and the unit that was written."""
     from gibbsmin.errors import ConditionsError
-    from gibbsmin.reactions.report import TEMPERATURE_UNITS
+    from gibbsmin.reactions.text import TEMPERATURE_UNITS
 
     quantity = _quantity(text, "temperature", option)
     if quantity[0] <= 0:

@@ -15,8 +15,8 @@ from gibbsmin.figures.look import house_look
 from gibbsmin.figures.maps import draw_map
 from gibbsmin.figures.saving import save_figure
 from gibbsmin.figures.trust import draw_shortcut_errors, draw_side_by_side, draw_trust
-from gibbsmin.reactions.report import KELVIN, TemperatureUnit
 from gibbsmin.reactions.results import MeasuredSummary, ReactionResults
+from gibbsmin.reactions.text import KELVIN, TemperatureUnit
 
 if TYPE_CHECKING:
     from gibbsmin.outcome import Outcome

@@ -12,8 +12,9 @@ import xarray as xr
 
 from gibbsmin.outcome.mixture import full_mixture
 from gibbsmin.reactions.against_mixture import Comparison, FullMixture, Reason
-from gibbsmin.reactions.report import TEMPERATURE_UNITS, TemperatureUnit, report_text
+from gibbsmin.reactions.report import report_text
 from gibbsmin.reactions.results import ReactionResults, work_out
+from gibbsmin.reactions.text import TEMPERATURE_UNITS, TemperatureUnit
 
 if TYPE_CHECKING:
     from gibbsmin.outcome import Outcome
@@ -74,7 +75,8 @@ def temperature_unit(scenario: Scenario) -> TemperatureUnit:
 
 def summary_lines(outcome: Outcome) -> list[str]:
     """The verdict table and the approaches, for the summary of a run."""
-    from gibbsmin.reactions.report import approach_text, verdict_text
+    from gibbsmin.reactions.measured_text import approach_text
+    from gibbsmin.reactions.verdict import verdict_text
 
     results, scenario = outcome.reactions, outcome.scenario
     if results is None:
