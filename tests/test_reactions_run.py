@@ -23,6 +23,7 @@ from gibbsmin.figures.look import house_look
 from gibbsmin.figures.of_outcome import count_figures
 from gibbsmin.figures.of_reactions import count_outcome_figures, outcome_figures
 from gibbsmin.outcome import Outcome
+from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.outcome.reactions import reactions_text
 from gibbsmin.reactions import ReactionFunctions, Reason, read_reaction
 from gibbsmin.scenario import parse_scenario
@@ -337,3 +338,12 @@ def test_wrong_requests_end_with_one_message(arguments: list[str], words: str, m
     assert out == ""
     assert words in err
     assert len(err.splitlines()) == 1
+
+
+def test_no_axis_takes_a_name_of_these_results() -> None:
+    made = set(outcome().dataset.variables) - set(
+        run(parse_scenario(TEXT.split("reactions:\n  equations")[0])).dataset.variables
+    )
+    assert {"ln_K", "alone_reason", "shortcut"} <= made
+    fixed = {str(name) for name in made if not str(name).startswith("alone_conversion")}
+    assert fixed <= RESULT_NAMES

@@ -28,6 +28,7 @@ RESERVED_NAMES = frozenset(
     """
     temperature pressure species element stream phase reaction point status gap iterations amount
     mole_fraction gas_amount element_potential balance_residual conversion yield selectivity ratio
+    equation shortcut alone
     """.split()  # noqa: SIM905  easier to read than twenty quoted words
 )
 """Names of the results, which an axis cannot have as well."""
