@@ -20,6 +20,7 @@ from gibbsmin.outcome.wanted import add_derived
 from gibbsmin.solving import Conditions, composition_matrix, solve, thermo_table
 
 if TYPE_CHECKING:
+    from gibbsmin.boundaries import Boundary
     from gibbsmin.scenario import Scenario
     from gibbsmin.scenario.model import Axis, Stream
 
@@ -59,6 +60,13 @@ def run(
     dataset = add_derived(
         dataset, conditions.gas_table, scenario.results, fed_enthalpy(scenario), phase_table
     )
+    dataset = _with_dew_points(scenario, dataset)
+    boundaries: tuple[Boundary, ...] = ()
+    if scenario.results.boundaries:
+        from gibbsmin.boundaries import add_boundaries, trace_boundaries
+
+        boundaries = trace_boundaries(scenario, conditions, dataset, threads=threads)
+        dataset = add_boundaries(dataset, boundaries)
     wanted = scenario.cross_check
     check = cross_check(
         dataset,
@@ -78,7 +86,22 @@ def run(
     dataset.attrs["title"] = scenario.title
     if scenario.notes:
         dataset.attrs["notes"] = scenario.notes
-    return Outcome(scenario, dataset, check, _settings(scenario), reactions)
+    return Outcome(scenario, dataset, check, _settings(scenario), reactions, boundaries)
+
+
+def _with_dew_points(scenario: Scenario, dataset: xr.Dataset) -> xr.Dataset:
+    """The data set with the dew points that the scenario asks for."""
+    if not scenario.results.dew_points:
+        return dataset
+    from gibbsmin.outcome.dew_point import dew_point, liquid_of
+
+    gases = {each.name: each for each in scenario.species}
+    for name in scenario.results.dew_points:
+        found = dew_point(dataset, gases[name], liquid_of(gases[name], scenario.library))
+        variable = found.variable
+        variable.attrs = {**variable.attrs, "long_name": found.name, "description": found.attrs["long_name"]}
+        dataset = dataset.assign({str(found.name): variable})
+    return dataset
 
 
 def scenario_conditions(scenario: Scenario) -> Conditions:

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     import xarray as xr
 
+    from gibbsmin.boundaries import Boundary
     from gibbsmin.crosscheck import CrossCheck
     from gibbsmin.reactions.results import ReactionResults
     from gibbsmin.scenario import Scenario
@@ -26,6 +27,7 @@ class Outcome:
         crosscheck: the comparison with an independent program.
         settings: what else decided the numbers.
         reactions: answers about single reactions, where the scenario asks for some.
+        boundaries: where phases begin to form or results take given values, as far as the scenario asks.
     """
 
     scenario: Scenario
@@ -33,6 +35,7 @@ class Outcome:
     crosscheck: CrossCheck
     settings: Mapping[str, Any]
     reactions: ReactionResults | None = None
+    boundaries: tuple[Boundary, ...] = ()
 
     @property
     def points(self) -> int:
@@ -69,7 +72,8 @@ class Outcome:
     ) -> Path:
         """Write the results into a new folder: it appears complete or not at all.
 
-        `results.nc` (NetCDF; `xarray.open_dataset` opens it), tables on request, `crosscheck.csv`, the
+        `results.nc` (NetCDF; `xarray.open_dataset` opens it), tables on request, `crosscheck.csv`,
+        `boundaries.csv` where boundaries are wanted, the
         scenario's text and `record.json`, which says how all of it was made. The same outcome gives the same
         bytes.
 

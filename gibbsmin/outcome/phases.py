@@ -56,7 +56,8 @@ def phase_variables(
     log_activity = log_activities(element_potentials, atoms, gibbs, phases, conditions.table.elements)
     present = amount > 0
     log_activity[present] = 0.0
-    undetermined = _undetermined(conditions, gas_amount, amount, atoms) & ~present
+    there = np.concatenate([gas_amount, amount[..., : len(conditions.phases)]], axis=-1) > 0
+    undetermined = undetermined_phases(conditions.table.formula_matrix, there, atoms) & ~present
     log_activity[undetermined & np.isfinite(log_activity)] = np.nan
     with np.errstate(over="ignore"):
         activity = np.exp(log_activity)
@@ -165,27 +166,29 @@ def phase_series(dataset: xr.Dataset, variable: str, phase: str) -> xr.DataArray
     return dataset[variable].isel(phase=names.index(phase), drop=True)
 
 
-def _undetermined(
-    conditions: Conditions, gas: FloatArray, phase_amount: FloatArray, atoms: FloatArray
+def undetermined_phases(
+    formula_matrix: FloatArray, there: NDArray[np.bool_], atoms: FloatArray
 ) -> NDArray[np.bool_]:
-    """(..., K) where a phase cannot be written in the species that are there, so that they say nothing of it."""
-    A = conditions.table.formula_matrix
-    lead = phase_amount.shape[:-1]
-    own = len(conditions.phases)
-    there = np.concatenate([gas > 0, phase_amount[..., :own] > 0], axis=-1).reshape(-1, A.shape[1])
-    out = np.zeros((len(there), len(atoms)), dtype=bool)
+    """(..., K) where a phase cannot be written in the species that are there, so that they say nothing of it.
+
+    Args:
+        formula_matrix: (E, S). there: which species there are, (..., S). atoms: of the phases, (K, E).
+    """
+    flat = there.reshape(-1, there.shape[-1])
+    out = np.zeros((len(flat), len(atoms)), dtype=bool)
     known: dict[bytes, NDArray[np.bool_]] = {}
-    for start in range(0, len(there), _POINTS_AT_ONCE):
-        part = np.packbits(there[start : start + _POINTS_AT_ONCE], axis=1)
+    for start in range(0, len(flat), _POINTS_AT_ONCE):
+        part = np.packbits(flat[start : start + _POINTS_AT_ONCE], axis=1)
         patterns, which = np.unique(part, axis=0, return_inverse=True)
         outside = np.empty((len(patterns), len(atoms)), dtype=bool)
         for i, pattern in enumerate(patterns):
             key = pattern.tobytes()
             if key not in known:
-                known[key] = _outside_span(A[:, np.unpackbits(pattern)[: A.shape[1]].astype(bool)], atoms.T)
+                chosen = np.unpackbits(pattern)[: flat.shape[1]].astype(bool)
+                known[key] = _outside_span(formula_matrix[:, chosen], atoms.T)
             outside[i] = known[key]
         out[start : start + _POINTS_AT_ONCE] = outside[which.ravel()]
-    return out.reshape(*lead, len(atoms))
+    return out.reshape(*there.shape[:-1], len(atoms))
 
 
 def _outside_span(columns: FloatArray, wanted: FloatArray) -> NDArray[np.bool_]:

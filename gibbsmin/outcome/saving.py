@@ -34,10 +34,11 @@ if TYPE_CHECKING:
 DATA_FILE = "results.nc"
 RECORD_FILE = "record.json"
 CROSSCHECK_FILE = "crosscheck.csv"
+BOUNDARIES_FILE = "boundaries.csv"
 SCENARIO_FILE = "scenario.yaml"
 TABLE_FILES = {"csv": "results.csv", "parquet": "results.parquet"}
 _PROGRAM = "gibbsmin"
-_BY_SPECIES = ("mole_fraction", "feed_amount")
+_BY_SPECIES = ("mole_fraction", "feed_amount", "phase_amount", "phase_activity")
 
 
 def save(
@@ -66,6 +67,10 @@ def save(
         for kind in wanted:
             write_table(outcome.dataset, draft / TABLE_FILES[kind], kind)
         write_crosscheck(outcome.crosscheck, draft / CROSSCHECK_FILE)
+        if outcome.boundaries:
+            from gibbsmin.boundaries import boundary_table
+
+            boundary_table(outcome.boundaries, draft / BOUNDARIES_FILE)
         if outcome.reactions is not None:
             from gibbsmin.outcome.reactions import write_reactions
 
@@ -134,7 +139,7 @@ def write_netcdf(dataset: xr.Dataset, path: Path) -> None:
 
 
 def as_table(dataset: xr.Dataset) -> pd.DataFrame:
-    """One row a point: coordinates, mole fractions and feed by species, and every single-valued result.
+    """One row a point: coordinates, mole fractions, feed, amounts and activities of phases, single-valued results.
 
     Column headings carry the unit: "temperature [K]", "mole_fraction H2 [1]". Amounts by species are left
     out, they are the mole fraction times `gas_amount`; element potentials and dry fractions are in the NetCDF

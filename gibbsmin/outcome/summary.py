@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import html
+import itertools
 import textwrap
 from collections.abc import Iterator, Sequence
 from typing import TYPE_CHECKING
@@ -10,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from gibbsmin.outcome.composition import amount_at_equilibrium
+from gibbsmin.species import ThermoTable
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -17,6 +19,8 @@ if TYPE_CHECKING:
     from gibbsmin.comparison import CheckedPoint
     from gibbsmin.outcome import Outcome
     from gibbsmin.scenario import Scenario
+    from gibbsmin.scenario.model import Axis
+    from gibbsmin.species import Species
 
 _SPECIES_SHOWN = 6  # in lists of names, and of key species when the scenario names none
 _MOST_ROWS = 20  # key results shown; the files hold all
@@ -57,6 +61,10 @@ def summary_text(outcome: Outcome) -> str:
             *(cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)),
         ]
         lines.append("  ".join(cells).rstrip())
+    if outcome.boundaries:
+        from gibbsmin.boundaries.results import summary_lines as boundary_lines
+
+        lines += ["", *_filled(boundary_lines(outcome.boundaries))]
     if outcome.reactions is not None:
         from gibbsmin.outcome.reactions import summary_lines
 
@@ -111,8 +119,36 @@ def facts(outcome: Outcome) -> list[str]:
     names = ", ".join(str(name) for name in dataset["species"].values[:_SPECIES_SHOWN])
     more = dataset.sizes["species"] - _SPECIES_SHOWN
     told.append(f"{dataset.sizes['species']} gases: {names}" + (f" and {more} more" if more > 0 else ""))
+    told += _phase_facts(scenario)
     told += list(scenario.remarks)
     return told
+
+
+def _phase_facts(scenario: Scenario) -> list[str]:
+    """Which condensed phases may form and which are held back; all of them are named, for each may matter."""
+    told = []
+    for words, phases in (
+        ("condensed phases that may form", scenario.choice.condensed),
+        ("condensed phases held back", scenario.choice.held_back),
+    ):
+        if phases:
+            told.append(f"{words}: {', '.join(each.name for each in phases)}")
+            told += [text for each in phases if (text := _forms(each, scenario.temperature))]
+    return told
+
+
+def _forms(phase: Species, temperature: Axis) -> str:
+    """Where on the grid a phase changes its form, or "" if it does not."""
+    table = ThermoTable((phase,))
+    low, high = min(temperature.values), max(temperature.values)
+    inside = [form.lower for form in phase.forms[1:] if low < form.lower < high]
+    if not inside:
+        return ""
+    edges = [low, *inside, high]
+    middles = [(a + b) / 2 for a, b in itertools.pairwise(edges)]
+    words = [form.description for T in middles if (form := table.form_at(T, 0)) is not None]
+    changes = [f"{word} from {T:g} K" for word, T in zip(words[1:], inside, strict=False)]
+    return f"{phase.name} changes its form: {', '.join([words[0], *changes])}" if changes else ""
 
 
 def key_table(outcome: Outcome) -> tuple[list[str], list[list[str]]]:
@@ -128,6 +164,8 @@ def key_results(outcome: Outcome) -> Iterator[tuple[str, xr.DataArray]]:
     dataset, wanted = outcome.dataset, outcome.scenario.results
     for name in wanted.key_species or _most_abundant(dataset):
         yield f"{name}, mole fraction", dataset["mole_fraction"].sel(species=name)
+    if "phase" in dataset.coords:
+        yield from _phase_results(dataset)
     for result, array in dataset.data_vars.items():
         if "description" in array.attrs:  # what the scenario asks for by name has one
             yield str(result), array
@@ -136,9 +174,21 @@ def key_results(outcome: Outcome) -> Iterator[tuple[str, xr.DataArray]]:
         yield "heat duty", dataset["heat_duty"]
 
 
+def _phase_results(dataset: xr.Dataset) -> Iterator[tuple[str, xr.DataArray]]:
+    """Amounts of the phases that form anywhere; activities of those that nowhere do."""
+    for number, name in enumerate(dataset["phase"].values):
+        amount = dataset["phase_amount_per_feed"].isel(phase=number, drop=True)
+        if bool((amount > 0).any()):
+            yield f"{name}, amount per mol of feed", amount
+        else:
+            activity = dataset["phase_activity"].isel(phase=number, drop=True)
+            if bool((activity > 0).any()):
+                yield f"{name}, activity", activity
+
+
 def _most_abundant(dataset: xr.Dataset) -> list[str]:
     points = [dim for dim in dataset["mole_fraction"].dims if dim != "species"]
-    largest = dataset["mole_fraction"].max(points).fillna(0.0).values
+    largest = dataset["mole_fraction"].max(points, skipna=True).fillna(0.0).values
     order = np.argsort(-largest, kind="stable")[:_SPECIES_SHOWN]
     return [str(name) for name in dataset["species"].values[order]]
 
