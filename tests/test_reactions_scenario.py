@@ -242,3 +242,18 @@ def test_a_scenario_with_reactions_travels_to_other_processes() -> None:
     again = pickle.loads(pickle.dumps(scenario))
     assert [each.name for each in again.reactions.shortcuts] == [each.name for each in wanted().shortcuts]
     assert float(again.reactions.shortcuts[-1].ln_K(700.0)) == float(wanted().shortcuts[-1].ln_K(700.0))
+
+
+def test_solid_feed_that_no_reaction_of_a_set_touches() -> None:
+    text = SOUND.replace("CH4: 1 mol, H2O: 3 mol", "C(gr): 1 mol, H2O: 3 mol").replace(
+        "conversions: [CH4]", "dry basis: true"
+    )
+    text = text[: text.index("  outlet analyses:")]
+    with pytest.raises(
+        ScenarioError, match=r"the feed holds C\(gr\), which takes no part in these reactions"
+    ):
+        parse_scenario(text)
+    found = wanted(
+        text.replace("one: [reforming]", "one: [deposit]").replace("    both: [reforming, shift]\n", "")
+    )
+    assert found.subsets[0].reactions[0].name == "deposit"

@@ -187,8 +187,8 @@ def _minimax(basis: Array, target: Array) -> tuple[Array, float]:
     start = q.T @ target
     rest = target - q @ start
     size = float(np.abs(rest).max())
-    if size < SMALLEST_ERROR:  # the terms reproduce the data as they are
-        return np.linalg.solve(r, start), size
+    if size < SMALLEST_ERROR:  # the terms reproduce the data as they are; only zero is sure to be no better
+        return np.linalg.solve(r, start), 0.0
     q = q * math.sqrt(len(target))
     ones = np.ones((len(target), 1))
     found = linprog(

@@ -17,7 +17,7 @@ from gibbsmin.reactions.measured import MeasuredConstants
 from gibbsmin.reactions.shortcut_error import Tolerance
 from gibbsmin.reactions.shortcuts import ConstantEnthalpy, ConstantHeatCapacity, Correlation, Shortcut
 from gibbsmin.reactions.standard import ReactionFunctions, validity
-from gibbsmin.reactions.subset import Subset
+from gibbsmin.reactions.subset import Subset, gas_for
 from gibbsmin.reactions.wanted import ReactionsWanted
 from gibbsmin.scenario.feed import Feed
 from gibbsmin.scenario.measurements import analyses_from_table, measured_from_table
@@ -310,6 +310,13 @@ class _Reader:
             if missing:
                 self.reading.fault(
                     path, f"{each.name}: {', '.join(missing)} is not among the gases of this scenario"
+                )
+                return True
+        for fed in () if self.feed is None else self.feed.species.values():
+            if fed.name not in names and gas_for(fed, gases) is None:
+                self.reading.fault(
+                    path,
+                    f"the feed holds {fed.name}, which takes no part in these reactions and which no gas stands for",
                 )
                 return True
         _, redundant = split_redundant(reactions, list(dict.fromkeys(names)))
