@@ -23,10 +23,10 @@ from gibbsmin.figures.look import house_look
 from gibbsmin.figures.of_outcome import count_figures
 from gibbsmin.figures.of_reactions import count_outcome_figures, outcome_figures
 from gibbsmin.outcome import Outcome
-from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.outcome.reactions import reactions_text
 from gibbsmin.reactions import ReactionFunctions, Reason, read_reaction
 from gibbsmin.scenario import parse_scenario
+from gibbsmin.scenario.axes import RESERVED_NAMES
 from gibbsmin.scenario.model import CrossCheckWanted
 from gibbsmin.shipped_files import scenario_folder
 from tests.test_reactions_scenario import SOUND
@@ -346,4 +346,4 @@ def test_no_axis_takes_a_name_of_these_results() -> None:
     )
     assert {"ln_K", "alone_reason", "shortcut"} <= made
     fixed = {str(name) for name in made if not str(name).startswith("alone_conversion")}
-    assert fixed <= RESULT_NAMES
+    assert {name.casefold() for name in fixed} <= RESERVED_NAMES

@@ -25,9 +25,6 @@ RESULT_NAMES = frozenset(
     phase_element_fraction phase_activity phase_form enthalpy_per_feed heat_capacity_frozen_per_feed
     heat_capacity_equilibrium_per_feed extrapolated dry_mole_fraction mean_molar_mass density enthalpy heat_capacity_frozen
     heat_capacity_equilibrium heat_duty heat_duty_per_feed crosscheck_status crosscheck_difference
-    reaction equation ln_K reaction_gibbs reaction_enthalpy reaction_entropy reaction_heat_capacity shortcut
-    shortcut_error_ln_K shortcut_error_per_cent shortcut_error_kelvin alone alone_mole_fraction alone_error
-    alone_reason alone_neglected condensed_activity
     """.split()  # noqa: SIM905  easier to read than thirty quoted words
 )
 """Names that the results use, which a caller's dimension cannot have as well."""

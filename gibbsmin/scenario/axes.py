@@ -28,7 +28,9 @@ RESERVED_NAMES = frozenset(
     """
     temperature pressure species element stream phase reaction point status gap iterations amount
     mole_fraction gas_amount element_potential balance_residual conversion yield selectivity ratio
-    equation shortcut alone
+    equation ln_k reaction_gibbs reaction_enthalpy reaction_entropy reaction_heat_capacity
+    shortcut shortcut_error_ln_k shortcut_error_per_cent shortcut_error_kelvin
+    alone alone_mole_fraction alone_error alone_reason alone_neglected condensed_activity
     """.split()  # noqa: SIM905  easier to read than twenty quoted words
 )
 """Names of the results, which an axis cannot have as well."""
