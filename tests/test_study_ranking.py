@@ -128,6 +128,20 @@ def test_cases_without_quantities_are_ranked_by_name(tmp_path: Path) -> None:
     assert [label.get_text() for label in figure.axes[0].get_yticklabels()] == ["other", "base"]
 
 
+def test_cases_without_the_result_come_last(tmp_path: Path) -> None:
+    path = write_study(tmp_path, "title: Two\nscenarios: [other.yaml, base.yaml]\n")
+    other = SCENARIO.replace("H2 to CO:", "something else:")
+    (tmp_path / "other.yaml").write_text(other, encoding="utf-8")
+    results = run_study(path, tmp_path / "out", workers=0).results
+    ranking = rank_cases(results, "H2 to CO")
+    assert ranking["case"].tolist() == ["base", "other"]
+    assert ranking["H2 to CO"].isna().tolist() == [False, True]
+    with pytest.raises(ConditionsError, match="there is none; there are"):
+        rank_cases(results, "nowhere")
+    with house_look():
+        assert draw_comparison(results, ranking, "H2 to CO") is not None
+
+
 def test_nothing_to_draw(results: StudyResults, tmp_path: Path) -> None:
     ranking = rank_cases(results, "conversion of CO", where=["steam > 500"])
     assert not write_comparison(results, ranking, "conversion of CO", tmp_path / "none.png")

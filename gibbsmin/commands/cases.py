@@ -76,5 +76,7 @@ def _listed(ranking: pd.DataFrame, by: str, most: int) -> list[str]:
     if len(ranked) > len(shown):
         lines.append(f"and {len(ranked) - len(shown)} more")
     if len(ranked) < len(ranking):
-        lines.append(f"{len(ranking) - len(ranked)} cases have no point that meets the conditions")
+        lines.append(
+            f"{len(ranking) - len(ranked)} cases have no such result, or no point that meets the conditions"
+        )
     return lines

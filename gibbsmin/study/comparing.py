@@ -20,7 +20,7 @@ from gibbsmin.figures.axes import is_logarithmic
 from gibbsmin.figures.labels import number, plain, with_formulas
 from gibbsmin.figures.look import FAINT, INK, LINE_COLOURS, house_look
 from gibbsmin.figures.saving import PNG_DOTS_PER_INCH
-from gibbsmin.study.ranking import Condition, field
+from gibbsmin.study.ranking import Condition, field, has
 from gibbsmin.study.solving import PHASE_VARIABLES
 
 if TYPE_CHECKING:
@@ -88,7 +88,7 @@ def write_comparison(
 
 def value_words(results: StudyResults, by: str) -> str:
     """What is compared, with its unit."""
-    array = field(next(iter(results.datasets.values())), by)
+    array = next(field(each, by) for each in results.datasets.values() if has(each, [by]))
     units = str(array.attrs.get("units", "1"))
     words = str(array.attrs.get("long_name", by))
     if array.name == "mole_fraction":

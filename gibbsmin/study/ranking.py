@@ -145,19 +145,28 @@ def rank_cases(
     Returns:
         One row a case, best first: `case`, the value under the name `by`, the axes at the best point,
         `points allowed` (share of the map that meets the conditions), and the varied quantities. Cases without
-        such a point come last, with NaN.
+        such a point, or without such a result, come last, with NaN.
 
     Raises:
-        ConditionsError: a name that no result has, or a condition that cannot be read.
+        ConditionsError: a name that no case has, or a condition that cannot be read.
     """
     import pandas as pd
 
     conditions = [read_condition(each) if isinstance(each, str) else each for each in where]
+    asked = [by, *(each.name for each in conditions)]
+    with_all = [dataset for dataset in results.datasets.values() if has(dataset, asked)]
+    if not with_all:
+        for dataset in results.datasets.values():
+            for name in asked:
+                field(dataset, name)  # raises and says what there is
     rows = [
         row
         for dataset in results.datasets.values()
-        for part in _parts(dataset)
-        for row in _best_points(part, by, smallest, conditions)
+        for row in (
+            (row for part in _parts(dataset) for row in _best_points(part, by, smallest, conditions))
+            if has(dataset, asked)
+            else ({"case": str(case), by: float("nan")} for case in dataset["case"].values)
+        )
     ]
     table = pd.DataFrame(rows)
     quantities = results.summary.set_index("case")[list(results.quantity_columns)]
@@ -166,6 +175,16 @@ def rank_cases(
     table = table.join(quantities.drop(columns=by, errors="ignore"), on="case")
     order = table[by].to_numpy() * (1.0 if smallest else -1.0)
     return table.iloc[np.argsort(order, kind="stable")].reset_index(drop=True)
+
+
+def has(dataset: xr.Dataset, names: Sequence[str]) -> bool:
+    """Whether a kind of map has all these results; another one may not."""
+    try:
+        for name in names:
+            field(dataset, name)
+    except ConditionsError:
+        return False
+    return True
 
 
 def _parts(dataset: xr.Dataset) -> Iterator[xr.Dataset]:
