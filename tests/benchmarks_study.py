@@ -110,7 +110,7 @@ def peak_memory() -> Callable[[], float]:
     return lambda: peak[0] / 2**30
 
 
-def scaling(cases: int = 200, side: int = 100, attempts: int = 4) -> None:
+def scaling(cases: int = 100, side: int = 100, attempts: int = 3) -> None:
     """The same study on a Dask cluster of one process and of two, over TCP; the best of some attempts in turn."""
     import distributed
 

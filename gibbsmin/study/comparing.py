@@ -58,8 +58,8 @@ def draw_comparison(
         quantities = quantities[:MOST_PANELS]
     missing = len(ranking) - len(ranked)
     if missing:
-        why = "that meets the conditions" if where else "that is solved"
-        notes.append(f"{missing} of {len(ranking)} cases have no point {why} and are not shown")
+        why = "no point that meets the conditions" if where else "no such result"
+        notes.append(f"{missing} of {len(ranking)} cases have {why} and are not shown")
     limits = "; ".join(_condition_words(each) for each in where)
     subtitle = ", ".join(filter(None, [str(results.manifest["title"]), f"where {limits}" if limits else ""]))
     head = f"{words[:1].upper()}{words[1:]}, best point of each case"
