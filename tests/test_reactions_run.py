@@ -288,6 +288,20 @@ def test_reaction_command(tmp_path: Path) -> None:
     assert len(list((tmp_path / "figures").iterdir())) == 4
 
 
+def test_reaction_command_counts_independent_reactions() -> None:
+    code, out, _ = command(
+        "reaction", "CO + H2O = CO2 + H2", "--among", "CH4", "H2O", "CO", "CO2", "H2", "N2",
+        "--beside", "CH4 + H2O = CO + 3 H2", "--beside", "CH4 + 2 H2O = CO2 + 4 H2",
+    )  # fmt: skip
+    assert code == 0
+    assert "6 species, 4 independent balances, so 2 independent reactions" in out
+    assert "the set given has 2 independent reactions; it spans them all" in out
+    assert (
+        "redundant: (CH4 + 2 H2O = CO2 + 4 H2) = (CO + H2O = CO2 + H2) + (CH4 + H2O = CO + 3 H2)"
+        in unwrapped(out)
+    )
+
+
 def test_measured_command(tmp_path: Path) -> None:
     file = tmp_path / "n2o4.csv"
     file.write_text("T [degC], Kp [atm]\n25, 0.1426\n35, 0.3183\n45, 0.6706\n", encoding="utf-8")
@@ -324,6 +338,8 @@ def test_approach_command(tmp_path: Path) -> None:
         (["reaction", "CO + H2O = CO2 + H2", "--from", "100 K"], "CO: 100 K is outside the range 200"),
         (["reaction", "CO + H2O = CO2 + H2", "--unit-of-K", "inch"], "no unit of an equilibrium constant"),
         (["reaction", "CO + H2O = CO2 + H2", "--kelvin", "-1"], "above zero"),
+        (["reaction", "CO + H2O = CO2 + H2", "--beside", "N2O4 = 2 NO2"], "--beside: needs --among"),
+        (["reaction", "CO + H2O = CO2 + H2", "--among", "CO", "H2O"], "CO2, H2 is not among the species"),
         (["measured", "N2O4 = 2 NO2", "nowhere.csv"], "nowhere.csv: cannot be read"),
         (["approach", "nowhere.csv", "--reaction", "N2O4 = 2 NO2"], "nowhere.csv: cannot be read"),
         (

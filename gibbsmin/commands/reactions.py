@@ -62,6 +62,20 @@ def add_reaction(parser: argparse.ArgumentParser) -> None:
         help=f"accepted error of K; default: {DEFAULT_PER_CENT:g}, unless --kelvin is given",
     )
     parser.add_argument("--kelvin", type=float, metavar="X", help="accepted equivalent temperature error")
+    parser.add_argument(
+        "--among",
+        metavar="SPECIES",
+        nargs="+",
+        default=[],
+        help="say how many independent reactions these species have, and whether the given ones span them",
+    )
+    parser.add_argument(
+        "--beside",
+        metavar="EQUATION",
+        action="append",
+        default=[],
+        help="a further reaction of the set for --among; may be repeated",
+    )
     _add_figures(parser)
     parser.set_defaults(command=_reaction)
 
@@ -133,7 +147,10 @@ def _reaction(options: argparse.Namespace) -> int:
         standard_pressure=_pressure(options.standard_pressure),
         unit=options.unit,
     )
+    set_in_words = _coverage(options)
     results = work_out(wanted, np.linspace(min(low, high), max(low, high), _POINTS if low != high else 1))
+    if set_in_words:
+        print(f"{set_in_words}\n")
     print(reaction_text(results.reactions[0], wanted.tolerance, unit))
     if results.shortcuts:
         print()
@@ -143,6 +160,25 @@ def _reaction(options: argparse.Namespace) -> int:
 
         _told(write_reaction_figures(results, Path(options.figures), unit=unit))
     return 0
+
+
+def _coverage(options: argparse.Namespace) -> str:
+    from gibbsmin.errors import ConditionsError
+    from gibbsmin.reactions.equation import read_reaction
+    from gibbsmin.reactions.independence import coverage
+    from gibbsmin.species import standard_library
+
+    if not options.among:
+        if options.beside:
+            raise ConditionsError("--beside", "needs --among, the species of the mixture")
+        return ""
+    library = standard_library()
+    species = {each.name: each for each in map(library.find, options.among)}
+    return str(
+        coverage(
+            list(species.values()), [read_reaction(each) for each in (options.equation, *options.beside)]
+        )
+    )
 
 
 def _shortcuts(options: argparse.Namespace) -> list[Shortcut]:

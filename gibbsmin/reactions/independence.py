@@ -37,11 +37,16 @@ class Redundant:
 
     def __str__(self) -> str:
         parts: list[str] = []
-        for name, weight in self.weights.items():
+        for name, weight in sorted(self.weights.items(), key=lambda item: item[1] < 0):
             sign = "-" if weight < 0 else ("+" if parts else "")
             factor = "" if abs(weight) == 1 else f"{abs(weight)} x "
-            parts.append(f"{sign} {factor}{name}".strip())
-        return f"{self.reaction.name} = {' '.join(parts)}"
+            parts.append(f"{sign} {factor}{_bracketed(name)}".strip())
+        return f"{_bracketed(self.reaction.name)} = {' '.join(parts)}"
+
+
+def _bracketed(name: str) -> str:
+    """A name that is an equation itself in brackets, so that its signs are not taken for those of the sum."""
+    return f"({name})" if "=" in name else name
 
 
 @dataclass(frozen=True)
