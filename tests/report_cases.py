@@ -99,6 +99,8 @@ species:
   condensed: [graphite]
 results:
   key species: [H2, CO]
+  boundaries:
+    soot limit: {phase: graphite, along: temperature}
 cross-check: {points: none}
 """
 
@@ -172,11 +174,12 @@ def flawed_outcome() -> Outcome:
             each[hit] = np.nan
     dataset["status"][hit] = 4
     grid = dataset["status"].dims
-    dataset["phase_activity"] = xr.Variable(
-        (*grid, "phase"),
-        np.stack([dataset["gas_amount"].values * 0 + 0.5, dataset["mole_fraction"].values[..., 0]], axis=-1),
-        {"units": "1", "long_name": "activity"},
-    )
+    none = dataset["gas_amount"].values * 0
+    phases = {"phase_amount": (none, none), "phase_amount_per_feed": (none, none)}
+    phases["phase_activity"] = (none + 0.5, dataset["mole_fraction"].values[..., 0])
+    for name, values in phases.items():
+        attributes = {"units": "1", "long_name": name.replace("_", " ")}
+        dataset[name] = xr.Variable((*grid, "phase"), np.stack(values, axis=-1), attributes)
     dataset = dataset.assign_coords(phase=["C(graphite)", HOSTILE])
     pressures = dataset["pressure"].values
     dataset["onset"] = xr.Variable(

@@ -390,6 +390,12 @@ def test_condensed_phases_have_amounts_and_activities(opened: Opener) -> None:
         map_values(page), share.transpose("pressure", "temperature"), rtol=PACKED, atol=1e-30
     )
     assert page.page.inner_text("#map-caption") == f"Share of C in {phase}."
+    limit = outcome.dataset["boundary soot limit"].isel(root=0)
+    curve = page.run(
+        "() => document.getElementById('map').data.filter((trace) => trace.name === 'soot limit')[1]"
+    )
+    np.testing.assert_allclose(curve["x"], limit - 273.15)
+    np.testing.assert_allclose(curve["y"], limit["pressure"] / 1e5)
     assert "5 gases and 1 condensed phase at equilibrium" in page.page.inner_text("header")
     assert "1 pure condensed phase may form beside them" in page.page.inner_text("#species")
 

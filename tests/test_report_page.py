@@ -22,6 +22,7 @@ from gibbsmin.cli import main
 from gibbsmin.figures.labels import number
 from gibbsmin.outcome import Outcome
 from gibbsmin.report import StudyCase, report_html, study_report_html, study_results_html
+from gibbsmin.report.boundaries import boundaries
 from gibbsmin.report.chart_data import ChartData
 from gibbsmin.report.markup import Markup, embedded_json, paragraphs, pretty_name, pretty_words, tag
 from gibbsmin.report.packing import RELATIVE_ERROR, packed, unpacked
@@ -34,6 +35,7 @@ from tests.report_cases import (
     SMALL,
     flawed_outcome,
     hostile_outcome,
+    phases_outcome,
     reactions_outcome,
     small_outcome,
 )
@@ -204,6 +206,34 @@ def test_no_cross_check_is_said(small: Outcome) -> None:
     page = Read(report_html(replace(small, crosscheck=check)))
     assert "No point was cross-checked, as asked." in page.visible
     assert "no independent cross-check" in page.visible
+
+
+def test_boundaries_have_a_table_and_lines_of_one_direction_each() -> None:
+    outcome = phases_outcome()
+    page = Read(report_html(outcome))
+    rows = page.tables["soot limit: C(gr) begins to form"]
+    limit = outcome.dataset["boundary soot limit"].isel(root=0).values - 273.15
+    assert rows[0] == ["pressure", "temperature", "above it"]
+    assert rows[1:] == [
+        [f"{pressure} bar", f"{celsius:.6g} °C", "dissolves above"]
+        for pressure, celsius in zip((1, 5, 20), limit, strict=True)
+    ]
+    # A region that loses its lower end at the second pressure: its upper end stays one line.
+    positions = np.array([[700.0, 900.0], [880.0, np.nan], [690.0, 860.0]])
+    direction = np.array([[1, -1], [-1, 0], [1, -1]], dtype=np.int8)
+    dataset = outcome.dataset.drop_vars(["boundary soot limit", "boundary soot limit, direction"]).assign(
+        {
+            "boundary region": (
+                ("pressure", "root"),
+                positions,
+                {"boundary_along": "temperature", "units": "K"},
+            ),
+            "boundary region, direction": (("pressure", "root"), direction),
+        }
+    )
+    kept = {"temperature": tuple(range(5)), "pressure": (0, 1, 2)}
+    lines = [each["values"] for each in boundaries(dataset, kept)]
+    assert lines == [[900.0, 880.0, 860.0], [700.0, None, 690.0]]
 
 
 def test_reactions_show_constants_shortcuts_and_windows() -> None:

@@ -16,7 +16,7 @@ from gibbsmin.report.evidence_part import evidence_part, method_part
 from gibbsmin.report.explore_part import explore_part
 from gibbsmin.report.markup import Markup, bullets, embedded_json, facts, pretty_name, tag
 from gibbsmin.report.reactions_part import reactions_part
-from gibbsmin.report.results_part import results_part
+from gibbsmin.report.results_part import boundaries_part, results_part
 from gibbsmin.report.thinning import MOST_POINTS
 
 if TYPE_CHECKING:
@@ -73,6 +73,7 @@ def report_html(outcome: Outcome, *, most_points: int = MOST_POINTS) -> str:
     sections: list[tuple[str, str, list[Markup | None]]] = [
         ("explore", "Explore", explore_part(outcome, data)),
         ("results", "Results", results_part(outcome)),
+        *([("boundaries", "Boundaries", boundaries_part(outcome))] if outcome.boundaries else []),
         *([("reactions", "Reactions", reactions_part(outcome))] if outcome.reactions is not None else []),
         ("scenario", "Scenario as understood", asked_part(outcome.scenario)),
         ("species", "Species", species_part(outcome.scenario)),

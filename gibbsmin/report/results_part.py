@@ -7,10 +7,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from gibbsmin.boundaries.results import rows, summary_lines
 from gibbsmin.figures import key_species
 from gibbsmin.figures.labels import number
 from gibbsmin.outcome.summary import key_results
-from gibbsmin.report.markup import Markup, pretty_name, pretty_words, table, tag
+from gibbsmin.report.markup import Markup, bullets, pretty_name, pretty_words, table, tag
 from gibbsmin.report.quantities import quantities, unit_shown
 from gibbsmin.report.quantity_text import axis_value, place
 
@@ -18,11 +19,12 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from gibbsmin.outcome import Outcome
-    from gibbsmin.scenario.model import Scenario
+    from gibbsmin.scenario.model import Axis, Scenario
 
 _MOST_SPECIES = 16
 _LEAST_FRACTION = 1e-6  # a species below it at all chosen points is left to the charts
 _MOST_POINTS = 9
+_MOST_CROSSINGS = 200
 _SHOWN_KINDS = ("phase", "result", "energy", "property")
 
 
@@ -111,3 +113,28 @@ def _window_words(scenario: Scenario, points: int) -> str:
 
 def _figure(value: float) -> str:
     return number(float(value)) if np.isfinite(value) else "not solved"
+
+
+def boundaries_part(outcome: Outcome) -> list[Markup | None]:
+    """Where phases begin to form or results take the values asked for; call it only with boundaries."""
+    tables = []
+    for boundary in outcome.boundaries:
+        listed = list(rows(boundary))
+        axes = [*boundary.others, boundary.along]
+        shown = [
+            [*(_in_unit(value, axis) for value, axis in zip((*places, position), axes, strict=True)), above]
+            for places, position, above in listed[:_MOST_CROSSINGS]
+        ]
+        caption = f"{boundary.wanted.name}: {pretty_words(boundary.title)}"
+        if len(listed) > len(shown):
+            caption += f", the first {len(shown)} of {len(listed):,} crossings"
+        headings = [*(pretty_words(axis.title) for axis in axes), "above it"]
+        tables.append(
+            table(caption, headings, shown, words=(len(axes),), class_="long" if len(shown) > 20 else "")
+        )
+    return [bullets(map(pretty_words, summary_lines(outcome.boundaries))), *tables]
+
+
+def _in_unit(value: float, axis: Axis) -> str:
+    unit = "" if axis.display_unit == "1" else f" {axis.display_unit.replace('deg', '°')}"
+    return f"{value:.6g}{unit}"

@@ -191,7 +191,9 @@ function boundaryLines(state, across, up, x, y) {
     const own = each.along === up.name ? { x, y: places } : { x: places, y };
     const text = places.map((_, i) => (i === labelled ? plainText(each.label) : ''));
     return [{ ...common, ...own, mode: 'lines', line: { width: 5, color: 'rgba(255,255,255,0.85)' } },
-      { ...common, ...own, text, line: { width: 2, color: '#111', dash: 'dash' } }];
+      // Points as well: where neighbours have no crossing there is no line.
+      { ...common, ...own, mode: 'lines+markers+text', text, line: { width: 2, color: '#111', dash: 'dash' },
+        marker: { size: 5, color: '#111', line: { width: 1, color: '#fff' } } }];
   }).flat();
 }
 
