@@ -18,6 +18,7 @@ from matplotlib.figure import Figure
 
 from gibbsmin.figures.axes import SI_UNITS, DisplayUnit
 from gibbsmin.figures.bars import draw_bars
+from gibbsmin.figures.boundary_lines import boundaries_of
 from gibbsmin.figures.labels import chemical, file_name, with_formulas
 from gibbsmin.figures.lines import draw_lines
 from gibbsmin.figures.look import house_look
@@ -36,6 +37,7 @@ __all__ = [
 ]
 
 MOST_KEY_SPECIES = 7  # where the request names none: as many as there are line colours
+SMALLEST_ACTIVITY_DRAWN = 0.01
 SMALLEST_KEY_FRACTION = 1e-6  # a species that nowhere exceeds this mole fraction is not chosen by itself
 
 
@@ -92,6 +94,7 @@ def figures_of(
         yield Drawn("composition", None, "no point of the grid is solved")
         return
     common = {"subtitle": title, "units": units}
+    over_maps = {**common, "boundaries": boundaries_of(dataset)}
     bases = [("mole_fraction", "composition", "Mole fraction")]
     if dry and "dry_mole_fraction" in dataset:
         bases.append(("dry_mole_fraction", "composition_dry", "Mole fraction in the dry gas"))
@@ -106,9 +109,39 @@ def figures_of(
         for each in names:
             field = dataset["mole_fraction"].sel(species=each)
             label = f"ole fraction of {chemical(each)}"
-            yield _map(field, f"map_{file_name(each)}", f"M{label} at equilibrium", f"m{label}", common)
+            yield _map(field, f"map_{file_name(each)}", f"M{label} at equilibrium", f"m{label}", over_maps)
+    for phase, variable in shown_phases(dataset):
+        yield _phase(dataset, phase, variable, over_maps)
     for quantity in quantities:
-        yield _quantity(dataset[quantity], quantity, common)
+        yield _quantity(dataset[quantity], quantity, over_maps)
+
+
+def shown_phases(dataset: xr.Dataset) -> list[tuple[str, str]]:
+    """Condensed phases with the variable that is drawn of each: its amount where it forms, else its activity.
+
+    The activity of a phase that is far from forming everywhere is not worth a figure.
+    """
+    if "phase" not in dataset.coords:
+        return []
+    shown = []
+    for number, name in enumerate(dataset["phase"].values):
+        amount, activity = (
+            dataset[each].isel(phase=number) for each in ("phase_amount_per_feed", "phase_activity")
+        )
+        if bool((amount > 0).any()):
+            shown.append((str(name), "phase_amount_per_feed"))
+        elif bool((activity > SMALLEST_ACTIVITY_DRAWN).any()):
+            shown.append((str(name), "phase_activity"))
+    return shown
+
+
+def _phase(dataset: xr.Dataset, phase: str, variable: str, common: Any) -> Drawn:
+    own = phase.removesuffix("(cd)")
+    label = chemical(own)
+    words = f"{label} per mol of feed, mol/mol" if variable.endswith("feed") else f"activity of {label}"
+    field = dataset[variable].sel(phase=phase, drop=True)
+    name = f"{file_name(own)}_{'amount' if variable.endswith('feed') else 'activity'}"
+    return _field(field, name, words[:1].upper() + words[1:], words, common)
 
 
 def _composition(
@@ -142,13 +175,18 @@ def _quantity(field: xr.DataArray, name: str, common: Any) -> Drawn:
     unit = str(field.attrs.get("units", "1"))
     label = words if unit == "1" else f"{words} ({unit})"
     title = words[:1].upper() + words[1:]
+    return _field(field, file_name(name), with_formulas(title), with_formulas(label), common)
+
+
+def _field(field: xr.DataArray, name: str, title: str, label: str, common: Any) -> Drawn:
+    """A map or, where the grid is a line, the course along it; title and label in matplotlib markup."""
     spanned = sum(size > 1 for size in field.sizes.values())
     if spanned >= 2:
-        return _map(field, f"map_{file_name(name)}", with_formulas(title), with_formulas(label), common)
-    figure = draw_lines(
-        {name: field}, title=with_formulas(title), value_label=label, name_lines=False, **common
-    )
-    return Drawn(f"course_{file_name(name)}", figure, "the grid is a single point" if spanned == 0 else "")
+        phase_edge = bool((field == 0).any())  # beyond it the amount is a true zero
+        return _map(field, f"map_{name}", title, label, {**common, "linear": phase_edge})
+    of_lines = {key: value for key, value in common.items() if key != "boundaries"}
+    figure = draw_lines({name: field}, title=title, value_label=label, name_lines=False, **of_lines)
+    return Drawn(f"course_{name}", figure, "the grid is a single point" if spanned == 0 else "")
 
 
 def _why_no_map(field: xr.DataArray) -> str:

@@ -68,15 +68,19 @@ class Levels:
         return number(float(f"{mantissa}e{exponent}"), digits=1)
 
 
-def choose_levels(values: NDArray[np.float64]) -> Levels | None:
-    """Levels for the finite values of a field, or None where it is constant (or nowhere known)."""
+def choose_levels(values: NDArray[np.float64], *, linear: bool = False) -> Levels | None:
+    """Levels for the finite values of a field, or None where it is constant (or nowhere known).
+
+    `linear` asks for even steps however wide the field is: decades would drown the edge of a phase, where its amount
+    goes to a true zero.
+    """
     known = values[np.isfinite(values)]
     if known.size == 0:
         return None
     low, high = float(known.min()), float(known.max())
     if high - low <= CONSTANT_WITHIN * max(abs(low), abs(high)):
         return None
-    if low >= 0 and high > 0:
+    if low >= 0 and high > 0 and not linear:
         positive = known[known > 0]
         wide = low == 0 or math.log10(high / low) > DECADES_FROM
         if wide and positive.min() < high:

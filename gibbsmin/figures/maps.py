@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Literal
 
 import numpy as np
@@ -17,6 +17,7 @@ from matplotlib.transforms import Affine2D
 from numpy.typing import NDArray
 
 from gibbsmin.figures.axes import SI_UNITS, Axis, DisplayUnit, axes_of, plan_panels
+from gibbsmin.figures.boundary_lines import BoundaryLines, draw_boundaries, legend
 from gibbsmin.figures.label_places import place_labels
 from gibbsmin.figures.levels import Levels, choose_levels
 from gibbsmin.figures.look import HATCH, HATCH_COLOUR, INK, MAP_COLOURS
@@ -39,19 +40,22 @@ def draw_map(
     subtitle: str = "",
     scale_label: str = "",
     units: Mapping[str, DisplayUnit] = SI_UNITS,
+    boundaries: Sequence[BoundaryLines] = (),
+    linear: bool = False,
 ) -> Figure | None:
     """A filled contour map of `field` [any unit] over its first two axes with more than one value.
 
     Parameters: `field` has the dimensions of the grid only, NaN where a point is not solved; `title` and
     `scale_label` may hold matplotlib markup, `subtitle` is taken literally; `units` says how temperature and
-    pressure are shown.
+    pressure are shown; `boundaries` are drawn over the map where they lie along one of its axes;
+    `linear` asks for even colour steps.
 
     Returns None where there is no map to draw: fewer than two axes with several values, or the same
     value everywhere.
     Raises ValueError for a field that is not on a grid.
     """
     axes = axes_of(field, units)
-    levels = choose_levels(np.asarray(field.values, dtype=float))
+    levels = choose_levels(np.asarray(field.values, dtype=float), linear=linear)
     if levels is None or sum(len(axis) > 1 for axis in axes.values()) < 2:
         return None
     across, up, dropped = _choose_axes(field, list(axes.values()), levels)
@@ -66,6 +70,7 @@ def draw_map(
         notes.append(
             f"drawn at {middle}: {dropped.title} changes it by less than {100 * _NO_CHANGE:g} % of the scale"
         )
+    notes += legend(boundaries, across, up)
     words = Words(
         title=title,
         subtitle=", ".join(filter(None, (subtitle, plan.fixed_words))),
@@ -79,6 +84,9 @@ def draw_map(
         values = field.isel({**held, **panel.held}).transpose(up.name, across.name).values.astype(float)
         drawn = _draw_panel(page.panels[panel.row, panel.column], across, up, values, levels, few)
         areas = areas or drawn
+        draw_boundaries(
+            page.panels[panel.row, panel.column], across, up, {**held, **panel.held}, boundaries, units
+        )
     page.label_axes(across.label, up.label)
     if areas is not None:
         _draw_colour_scale(page, areas, levels, scale_label)

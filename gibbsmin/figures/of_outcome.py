@@ -45,6 +45,7 @@ def figure_options(outcome: Outcome) -> dict[str, Any]:
     asked: set[str] = set()
     for results in (wanted.conversions, wanted.yields, wanted.selectivities, wanted.ratios):
         asked.update(result.name for result in results)
+    asked.update(f"dew point of {name}" for name in wanted.dew_points)
     # The variable's own name may differ (NetCDF takes no slash); its long_name is what the scenario says.
     quantities = [
         str(name)
@@ -64,9 +65,12 @@ def figure_options(outcome: Outcome) -> dict[str, Any]:
 
 def count_figures(outcome: Outcome) -> int:
     """How many pictures `write_outcome_figures` will make or leave out, for a progress bar."""
+    from gibbsmin.figures import shown_phases
+
     options, sizes = figure_options(outcome), outcome.dataset["status"].shape
     maps = len(options["key"]) if sum(size > 1 for size in sizes) >= 2 else 1
     count = 1 + ("dry_mole_fraction" in outcome.dataset) + maps + len(options["quantities"])
+    count += len(shown_phases(outcome.dataset))
     if outcome.reactions is not None:
         from gibbsmin.figures.of_reactions import count_outcome_figures
 
