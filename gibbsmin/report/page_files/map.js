@@ -187,7 +187,9 @@ function boundaryLines(state, across, up, x, y) {
     });
     const labelled = Math.floor(0.8 * (places.length - 1));
     const common = { type: 'scatter', mode: 'lines+text', hoverinfo: 'skip', name: each.label,
-      line: { width: 2.5, color: '#fff' }, textfont: { color: colour('ink') }, textposition: 'middle right' };
+      line: { width: 2.5, color: '#fff' }, textposition: 'bottom right',
+      // White with a dark edge reads on every colour of the scales.
+      textfont: { color: '#fff', size: 13, shadow: '0 0 3px #000, 0 0 2px #000, 0 0 2px #000' } };
     const own = each.along === up.name ? { x, y: places } : { x: places, y };
     const text = places.map((_, i) => (i === labelled ? plainText(each.label) : ''));
     return [{ ...common, ...own, mode: 'lines', line: { width: 5, color: 'rgba(255,255,255,0.85)' } },
