@@ -120,7 +120,8 @@ function filled(x, y, values, scale, quantity) {
 }
 
 // Verdicts have no contours: each point's cell has the colour of its own.
-const VERDICT_COLOURS = ['#3b8f6b', '#e0a526', '#b4552d', '#6f5a96', '#8c8c8c', '#3a4f66', '#c9c4b6'];
+// Of the set of Okabe and Ito, which colour-blind eyes tell apart.
+const VERDICT_COLOURS = ['#009e73', '#e69f00', '#d55e00', '#0072b2', '#999999', '#56b4e9', '#cc79a7'];
 function verdicts(x, y, z, _, quantity) {
   const count = quantity.flags.length;
   const colours = quantity.flags.map((__, i) => VERDICT_COLOURS[i % VERDICT_COLOURS.length]);
