@@ -1,4 +1,4 @@
-"""An ideal gas of our species inside Cantera, the only module that imports that library.
+"""An ideal gas of our species inside Cantera; with cantera_phases.py the only module that imports that library.
 
 Every species gets its coefficients as nine-coefficient polynomials (the seven-coefficient form is a special
 case), 1 bar as reference pressure, and a plain number for a name: Cantera's parser gives some characters a
@@ -52,16 +52,16 @@ class CanteraGas:
     def __init__(self, table: ThermoTable, temperatures: tuple[float, float]) -> None:
         import cantera
 
-        symbols = _symbols(table.elements, cantera.Element.element_symbols)
+        symbols = symbols_for(table.elements, cantera.Element.element_symbols)
         try:
-            with _silenced():
+            with silenced():
                 species = [
-                    _cantera_species(cantera, f"s{number}", each, symbols, temperatures)
+                    make_species(cantera, f"s{number}", each, symbols, temperatures)
                     for number, each in enumerate(table.species)
                 ]
                 self._gas: Any = cantera.Solution(thermo="ideal-gas", kinetics=None, species=species)
         except cantera.CanteraError as error:
-            raise NoAnswerError(f"Cantera refuses the species: {_gist(error)}") from error
+            raise NoAnswerError(f"Cantera refuses the species: {gist(error)}") from error
         self._error: type[Exception] = cantera.CanteraError
 
     @staticmethod
@@ -89,18 +89,18 @@ class CanteraGas:
             NoAnswerError: no convergence, or an answer that is not finite.
         """
         try:
-            with _silenced():
+            with silenced():
                 self._gas.TPX = temperature, pressure, fractions
                 self._gas.equilibrate("TP", solver=solver)
         except self._error as error:
-            raise NoAnswerError(f"Cantera's solver {solver} failed: {_gist(error)}") from error
+            raise NoAnswerError(f"Cantera's solver {solver} failed: {gist(error)}") from error
         found = np.array(self._gas.X)
         if not np.isfinite(found).all():
             raise NoAnswerError(f"Cantera's solver {solver} returned values that are not finite")
         return found, solver
 
 
-def _cantera_species(
+def make_species(
     cantera: Any, name: str, species: Species, symbols: dict[str, str], temperatures: tuple[float, float]
 ) -> Any:
     composition = {symbols[element]: count for element, count in species.composition.items()}
@@ -121,7 +121,7 @@ def _cantera_species(
     return result
 
 
-def _symbols(elements: tuple[str, ...], known: Any) -> dict[str, str]:
+def symbols_for(elements: tuple[str, ...], known: Any) -> dict[str, str]:
     """Symbols by which Cantera knows the elements; an isotope of ours borrows a spare one.
 
     Only the counts of atoms enter an equilibrium at given temperature and pressure, not their masses.
@@ -132,7 +132,7 @@ def _symbols(elements: tuple[str, ...], known: Any) -> dict[str, str]:
     }
 
 
-def _gist(error: Exception) -> str:
+def gist(error: Exception) -> str:
     """The one line of Cantera's boxed message that says what happened."""
     lines = [line.strip() for line in str(error).splitlines()]
     kept = [line for line in lines if line and not set(line) <= set("*") and "thrown by" not in line]
@@ -140,7 +140,7 @@ def _gist(error: Exception) -> str:
 
 
 @contextlib.contextmanager
-def _silenced() -> Iterator[None]:
+def silenced() -> Iterator[None]:
     """Keep what the C++ library writes to standard output by itself away from our results.
 
     Its solver vcs announces failures there; the exception says the same, and we keep that.

@@ -21,6 +21,7 @@ from gibbsmin.comparison import THRESHOLD, CheckedPoint, CheckStatus, Comparison
 from gibbsmin.outcome.composition import amount_at_equilibrium
 
 if TYPE_CHECKING:
+    from gibbsmin.comparison_phases import PhaseComparison
     from gibbsmin.species import ThermoTable
 
 Extent = Literal["sample", "all", "none"]
@@ -129,7 +130,7 @@ def cross_check(
 
     Args:
         dataset: as `gibbsmin.equilibrium` returns it.
-        table: thermodynamic functions of its species, in the same order.
+        table: thermodynamic functions of its gases, then of the condensed phases that take part, in that order.
         extent: "sample" (corners of the grid, largest gaps, and random others), "all" or "none".
         sample_size: number of points of a sample; the corners are checked even if they are more.
         tolerance: largest accepted relative difference of a mole fraction.
@@ -141,7 +142,13 @@ def cross_check(
         return CrossCheck(extent, tolerance, "", dims, ())
     solved = dataset["status"].values == 0
     chosen = choose_points(dataset, extent, sample_size, seed)
-    comparison = Comparison(dataset, table, dims, tolerance)
+    comparison: Comparison | PhaseComparison
+    if any(each.state != "g" for each in table.species):
+        from gibbsmin.comparison_phases import PhaseComparison
+
+        comparison = PhaseComparison(dataset, table, dims, tolerance)
+    else:
+        comparison = Comparison(dataset, table, dims, tolerance)
     points = []
     for index in chosen:
         points.append(comparison.at(index))

@@ -10,7 +10,7 @@ import xarray as xr
 
 import gibbsmin
 from gibbsmin import crosscheck
-from gibbsmin.cantera_gas import CanteraGas, NoAnswerError, _silenced
+from gibbsmin.cantera_gas import CanteraGas, NoAnswerError, silenced
 from gibbsmin.comparison import imbalance, stationarity
 from gibbsmin.crosscheck import choose_points, cross_check
 from gibbsmin.species import ThermoTable
@@ -269,7 +269,7 @@ def test_results_carry_the_outcome_as_cf_flags(reformed: xr.Dataset) -> None:
 
 
 def test_standard_output_stays_clean(capfd: pytest.CaptureFixture[str]) -> None:
-    with _silenced():
+    with silenced():
         ctypes.CDLL(None).puts(b"ERROR: FAILURE its = 1001!")
         print("and from Python")
     print("ours")

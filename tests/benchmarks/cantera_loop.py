@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from gibbsmin.cantera_gas import CanteraGas, _silenced
+from gibbsmin.cantera_gas import CanteraGas, silenced
 from gibbsmin.species import ThermoTable
 from tests.benchmarks.gases import Floats
 
@@ -38,7 +38,7 @@ class CanteraLoop:
         feeds = np.broadcast_to(feed, out.shape)
         points = zip(temperature.tolist(), pressure.tolist(), feeds, strict=True)
         fresh = True
-        with _silenced():
+        with silenced():
             for number, (T, p, X) in enumerate(points):
                 if fresh or not from_neighbour:
                     phase.TPX = T, p, X

@@ -162,11 +162,11 @@ class PosedToCantera:
 
     def solve(self, solver: str) -> Answer:
         """By one of Cantera's solvers; guarding standard output is not part of the time."""
-        from gibbsmin.cantera_gas import _silenced
+        from gibbsmin.cantera_gas import silenced
 
         case, phase = self._case, self._phase
         failure = ""
-        with _silenced():
+        with silenced():
             begin = time.perf_counter()
             try:
                 phase.TPX = case.temperature, case.pressure * 1e5, self._fractions
