@@ -48,8 +48,8 @@ NO_GAS_PART = 0.02
 
 
 @dataclass(frozen=True)
-class Problem:
-    """formula_matrix (E, S), element_amounts (E,) mol, potentials (S,) = mu0/RT (+ ln(p/bar) of a gas)."""
+class Posed:
+    """formula_matrix (E, S), element_amounts (E,) mol, potentials (S,) = mu0/RT (+ ln(p/p0) of a gas)."""
 
     formula_matrix: np.ndarray
     element_amounts: np.ndarray  # float64, or Fraction where no double holds an amount
@@ -57,6 +57,22 @@ class Problem:
     condensed: np.ndarray
     names: tuple[str, ...]
     elements: tuple[str, ...]
+
+    @property
+    def feed_size(self) -> float:
+        """Sum of the element amounts [mol]."""
+        return float(self.element_amounts.sum())
+
+    def solve(self) -> Any:
+        from gibbsmin import minimise
+
+        return minimise(self.formula_matrix, self.element_amounts, self.potentials, condensed=self.condensed)
+
+
+@dataclass(frozen=True)
+class Problem(Posed):
+    """One problem of the population; pressures are in bar."""
+
     family: str
     kind: str
     every_phase: bool
@@ -70,18 +86,6 @@ class Problem:
         return (
             f"{self.family}, {self.kind} ({self.seed}, {self.index}): {int((~self.condensed).sum())} gases, "
             f"{int(self.condensed.sum())} phases of {self.elements}, {self.temperature:.1f} K, {self.pressure:.2e} bar"
-        )
-
-    @property
-    def feed_size(self) -> float:
-        """Sum of the element amounts [mol]."""
-        return float(self.element_amounts.sum())
-
-    def solve(self) -> Any:
-        from gibbsmin import minimise
-
-        return minimise(
-            self.formula_matrix, self.element_amounts, self.potentials, condensed=self.condensed
         )
 
 
@@ -101,7 +105,9 @@ def pool() -> Pool:
     species = list(standard_library().condensed((*NON_METALS, "Cl", *METALS)))
     return Pool(
         names=tuple(s.name for s in species),
-        composition=np.array([[s.composition.get(e, 0) for e in population.ELEMENTS] for s in species], float),
+        composition=np.array(
+            [[s.composition.get(e, 0) for e in population.ELEMENTS] for s in species], float
+        ),
         potentials=ThermoTable(species).gibbs_RT(population.pool().temperature),
     )
 
@@ -161,7 +167,11 @@ def _draw(
         return None
     # half of the lists drawn evenly over their lengths, half evenly over the decades
     even = rng.random() < 0.5
-    length = (rng.integers(2, most + 1) if even else np.exp(rng.uniform(np.log(2), np.log(most + 1)))) if most else 0
+    length = (
+        (rng.integers(2, most + 1) if even else np.exp(rng.uniform(np.log(2), np.log(most + 1))))
+        if most
+        else 0
+    )
     chosen_gases = candidates[: int(length)]
 
     if family == "graphite":
@@ -173,8 +183,12 @@ def _draw(
     if len(of_elements) == 0:
         return None
 
-    A = np.vstack([gases.composition[np.ix_(chosen_gases, rows)], phases.composition[np.ix_(of_elements, rows)]]).T
-    c = np.concatenate([gases.potentials[at, chosen_gases] + np.log(pressure), phases.potentials[at, of_elements]])
+    A = np.vstack(
+        [gases.composition[np.ix_(chosen_gases, rows)], phases.composition[np.ix_(of_elements, rows)]]
+    ).T
+    c = np.concatenate(
+        [gases.potentials[at, chosen_gases] + np.log(pressure), phases.potentials[at, of_elements]]
+    )
     condensed = np.arange(len(c)) >= len(chosen_gases)
     listed = A.any(axis=1)
     A, elements = A[listed].astype(float), [e for e, k in zip(elements, listed, strict=True) if k]
@@ -182,7 +196,10 @@ def _draw(
     if len(columns) == 0:
         return None
     b = [
-        sum(Fraction(float(a)) * Fraction(int(n), 1 << FIXED_POINT_BITS) for a, n in zip(row, amounts, strict=True))
+        sum(
+            Fraction(float(a)) * Fraction(int(n), 1 << FIXED_POINT_BITS)
+            for a, n in zip(row, amounts, strict=True)
+        )
         for row in A[:, columns]
     ]
     as_doubles = np.array([float(v) for v in b])
@@ -301,7 +318,7 @@ def _status_name(answer: Any) -> str:
     return str(Status(int(answer.status[0])).name)
 
 
-def judge(case: Problem, answer: Any) -> tuple[list[str], dict[str, float]]:
+def judge(case: Posed, answer: Any) -> tuple[list[str], dict[str, float]]:
     """What is wrong with an answer (nothing: an empty list), and its measures, relative to the feed where they
     are amounts.
 
@@ -329,15 +346,12 @@ def judge(case: Problem, answer: Any) -> tuple[list[str], dict[str, float]]:
 
     reported, residual = float(answer.gap[0]) / case.feed_size, float(answer.balance_residual[0])
     certified = float(
-        optimality_gap(A, b, np.where(np.isinf(c), 0.0, c), n, pi, excluded=excluded[None], condensed=condensed)[0]
+        optimality_gap(
+            A, b, np.where(np.isinf(c), 0.0, c), n, pi, excluded=excluded[None], condensed=condensed
+        )[0]
     )
     own = _own_measures(case, n, log_a, pi, excluded)
-    measures = {
-        "gap": reported,
-        "residual": residual,
-        "certified gap": certified / case.feed_size,
-        **own,
-    }
+    measures = {"gap": reported, "residual": residual, "certified gap": certified / case.feed_size, **own}
     for what, largest in _LARGEST.items():
         if not measures[what] <= largest:
             reasons.append(f"{what} {measures[what]:.1e}")
@@ -354,13 +368,14 @@ _LARGEST = {
     "own gap": LARGEST_GAP,
     "below the bound": LARGEST_GAP / 10,  # primal energy below the dual one: impossible but for rounding
     "activity of a phase": 1e-9,  # excess over 1 of any phase
+    "activity of a present phase": 1e-9,  # |ln a|
     "sum of the gas": 1e-9,  # excess over 1 of the sum of mole fractions that the potentials demand
     "activities reported": 1e-9,  # |reported ln a - (a.pi - c)|
 }
 
 
 def _own_measures(
-    case: Problem, n: np.ndarray, log_a: np.ndarray, pi: np.ndarray, excluded: np.ndarray
+    case: Posed, n: np.ndarray, log_a: np.ndarray, pi: np.ndarray, excluded: np.ndarray
 ) -> dict[str, float]:
     wide = np.longdouble
     A, condensed, kept = case.formula_matrix.astype(wide), case.condensed, ~excluded
@@ -387,6 +402,7 @@ def _own_measures(
         "own gap": float(gap) / case.feed_size,
         "below the bound": -float(gap) / case.feed_size,
         "activity of a phase": float(highest),
+        "activity of a present phase": float(np.abs(level[phase & (n > 0.0)]).max(initial=0.0)),
         "sum of the gas": float(log_sum),
         "activities reported": float(np.max(reported, initial=0.0)),
     }
@@ -398,7 +414,7 @@ def _wide(value: Any) -> Any:
     return np.longdouble(high) + np.longdouble(float(exact - Fraction(high)))
 
 
-def _truly_excluded(case: Problem, claimed: np.ndarray) -> np.ndarray:
+def _truly_excluded(case: Posed, claimed: np.ndarray) -> np.ndarray:
     """Species of absent elements and without data; exact rational arithmetic where more are claimed."""
     b = case.element_amounts.astype(float)
     trivially = case.formula_matrix[b == 0.0].any(axis=0) | np.isposinf(case.potentials)
