@@ -93,7 +93,8 @@ def by_study(feeds: int, temperatures: int, pressures: int, folder: Path) -> Fig
     file = folder / "study.yaml"
     file.write_text(STUDY.format(feeds=feeds))
     study = load_study(file)
-    workers = workers_for(plan_study(study), None)
+    plan = plan_study(study)
+    workers = workers_for(plan, None, plan.chunks)
     done = run_study(study, folder / "results")
     summary = done.results.summary
     return {
