@@ -51,6 +51,16 @@ class Reading:
 
     def condensed(self, name: str, path: YamlPath) -> Species | None:
         """The solid or liquid called `name`, or None after a fault."""
+        try:
+            found = self.library.find(name)
+            if found.state == "g":
+                self.library.find_condensed(name)
+        except UnknownSpeciesError as error:
+            if error.query != name:  # the gas was found, but nothing condensed of its formula
+                self.fault(path, f"{name} is a gas, and no solid or liquid of its formula is known")
+                return None
+        except (AmbiguousSpeciesError, FormulaError):
+            pass  # told below
         return self._found(self.library.find_condensed, name, path, False)
 
     def _found(
