@@ -29,7 +29,9 @@ class Beside:
         self.b = self.A @ n
 
     def grid(self, **options: Any) -> Any:
-        return solve_grid(self.A, self.b[None], self.g, self.T, self.log_p, condensed=self.condensed, **options)
+        return solve_grid(
+            self.A, self.b[None], self.g, self.T, self.log_p, condensed=self.condensed, **options
+        )
 
     def potentials(self, row: Any, column: Any) -> Any:
         return self.g[row] + self.log_p[column, None] * ~self.condensed
@@ -43,7 +45,11 @@ REFORMING = Beside(
     np.geomspace(0.1, 100, 60),
 )
 WET_GAS = Beside(
-    "H2 H2O CO CO2 O2", "H2O(l)", {"H2": 1, "H2O": 2, "CO": 1}, np.linspace(300, 590, 120), np.geomspace(0.1, 50, 60)
+    "H2 H2O CO CO2 O2",
+    "H2O(l)",
+    {"H2": 1, "H2O": 2, "CO": 1},
+    np.linspace(300, 590, 120),
+    np.geomspace(0.1, 50, 60),
 )
 IRON = Beside(
     "H2 H2O O2 OH",
@@ -67,14 +73,18 @@ def test_map_agrees_with_single_points(name: str) -> None:
     gas = ~mixture.condensed
     visible = (single.amounts > 1e-290) & gas
     assert np.abs(mine / np.where(visible, single.amounts, 1.0) - 1.0)[visible].max() < 1e-11
-    np.testing.assert_allclose(mine[:, ~gas], single.amounts[:, ~gas], rtol=1e-10, atol=1e-12 * mixture.b.sum())
+    np.testing.assert_allclose(
+        mine[:, ~gas], single.amounts[:, ~gas], rtol=1e-10, atol=1e-12 * mixture.b.sum()
+    )
 
 
 @pytest.mark.parametrize("name", MAPS)
 def test_more_than_one_set_of_phases_occurs_and_every_point_has_its_proof(name: str) -> None:
     mixture = MAPS[name]
     solved = mixture.grid()
-    sets = np.unique(solved.amounts[0][..., mixture.condensed].reshape(-1, mixture.condensed.sum()) > 0, axis=0)
+    sets = np.unique(
+        solved.amounts[0][..., mixture.condensed].reshape(-1, mixture.condensed.sum()) > 0, axis=0
+    )
     assert len(sets) > 1
     assert (solved.gap <= 1e-10 * mixture.b.sum()).all()
     assert (solved.balance_residual <= 1e-12).all()
