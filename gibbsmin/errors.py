@@ -188,7 +188,9 @@ class MissingPackageError(GibbsminError):
     def __init__(self, package: str, purpose: str) -> None:
         self.package = package
         self.purpose = purpose
-        super().__init__(f"{purpose} needs the package {package}, which is not installed: pip install {package}")
+        super().__init__(
+            f"{purpose} needs the package {package}, which is not installed: pip install {package}"
+        )
 
 
 class ProblemError(GibbsminError):

@@ -46,7 +46,11 @@ def client() -> Iterator[Any]:
     distributed = pytest.importorskip("distributed")
     with (
         distributed.LocalCluster(
-            n_workers=2, threads_per_worker=1, processes=True, protocol="tcp://", dashboard_address="127.0.0.1:0"
+            n_workers=2,
+            threads_per_worker=1,
+            processes=True,
+            protocol="tcp://",
+            dashboard_address="127.0.0.1:0",
         ) as cluster,
         distributed.Client(cluster) as client,
     ):
