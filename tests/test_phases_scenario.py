@@ -134,7 +134,7 @@ def test_phases_and_boundaries_have_their_figures(outcome: Outcome, tmp_path: Pa
     (boundary,) = outcome.boundaries
     assert len(lines) == 1
     celsius = boundary.positions[:, 0] - 273.15
-    np.testing.assert_allclose(lines[0].get_xdata(), celsius, rtol=1e-9)
+    np.testing.assert_allclose(np.asarray(lines[0].get_xdata(), dtype=float), celsius, rtol=1e-9)
     words = " ".join(text.get_text() for text in figure.texts)
     assert "solid line: carbonate begins" in words
     assert write_outcome_figures(outcome, tmp_path).left_out == {}
