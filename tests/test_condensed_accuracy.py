@@ -16,7 +16,7 @@ from tests.condensed_population import Posed, Problem, problems
 from tests.condensed_reference import Equilibrium
 
 
-def judged(case: Posed, candidate: Any) -> Equilibrium:
+def judged(case: Posed, candidate: Any = None) -> Equilibrium:
     return condensed_reference.solve(
         case.formula_matrix, case.element_amounts.tolist(), case.potentials, case.condensed, candidate
     )
@@ -53,13 +53,27 @@ def test_many_more() -> None:
         judge_problem(case)
 
 
+def test_judge_without_a_candidate_comes_to_the_same() -> None:
+    """From the linear program alone, so that nothing of the answer enters. A few problems need a candidate."""
+    alone = 0
+    for case in problems(150, seed=36, most_gases=40):
+        answer = case.solve()
+        try:
+            truth = judged(case)
+        except condensed_reference.UnprovedError:
+            continue
+        condensed_reference.assert_agrees(answer, truth, case.condensed, case.feed_size)
+        alone += 1
+    assert alone >= 145
+
+
 # ------------------------------------------------------------------------------------- the judge, judged
 
 
 def test_judge_finds_the_phases_from_a_wrong_candidate() -> None:
     """Candidates that lack the present phase, or claim an absent one: the same proof in the end, or none."""
     found = refused = 0
-    for case in problems(150, seed=34, most_gases=30):
+    for case in problems(80, seed=34, most_gases=30):
         answer = case.solve()
         truth = judged(case, answer)
         if not truth.has_gas:
@@ -78,8 +92,8 @@ def test_judge_finds_the_phases_from_a_wrong_candidate() -> None:
                 again.amounts, truth.amounts, rtol=1e-14, atol=1e-300, err_msg=case.label
             )
             found += again.sets_tried > 1
-    assert found > 30
-    assert refused < found
+    assert found > 50
+    assert refused < found / 10
 
 
 def test_judge_against_closed_forms() -> None:
@@ -111,14 +125,16 @@ def test_judge_of_phases_alone() -> None:
     assert not truth.has_gas
 
 
-def test_judge_refuses_what_is_not_an_equilibrium() -> None:
-    """No gas, where the phase's own vapour would stand above the pressure."""
+def test_judge_does_not_believe_a_candidate() -> None:
+    """No gas, where the phase's own vapour stands above the pressure: all of it evaporates."""
     from tests.test_condensed_named_cases import invented
 
     case = invented("A", "A", [0.0, 0.5], {"A": 1.0})
     wrong = case.solve()
-    assert wrong.amounts[0].tolist() == [1.0, 0.0]
     wrong.amounts[0] = [0.0, 1.0]
     wrong.log_mole_fractions[0] = [0.5, 0.0]
-    with pytest.raises(condensed_reference.UnprovedError, match="gas would form"):
-        judged(case, wrong)
+    truth = judged(case, wrong)
+    np.testing.assert_array_equal(truth.amounts, [1.0, 0.0])
+    np.testing.assert_allclose(truth.log_activities, [0.0, -0.5], atol=1e-15)
+    with pytest.raises(AssertionError):
+        condensed_reference.assert_agrees(wrong, truth, case.condensed, case.feed_size)
