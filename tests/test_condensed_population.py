@@ -43,7 +43,7 @@ def test_ten_thousand_more_are_solved_and_proved() -> None:
 
 HARD_ONCE = {  # seed: indices
     # phases, or gases, that hold traces alone
-    "not proved by the first interior method": {
+    "not proved": {
         2: (2169, 2685, 5053, 6092, 8523, 9546),
         4: (566, 1215, 2293, 2490),
         5: (4534, 4893),
