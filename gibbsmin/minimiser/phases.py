@@ -26,12 +26,12 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gibbsmin.minimiser.components import Amounts, Components, Floats, Indices
+from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices
 from gibbsmin.minimiser.equilibria import Equilibria
 from gibbsmin.minimiser.interior import Inside, follow_path
 from gibbsmin.minimiser.posing import Posed
 from gibbsmin.minimiser.result import Minimum
-from gibbsmin.minimiser.vertex import PIVOT_SIZE
+from gibbsmin.minimiser.vertex import PIVOT_SIZE, UnboundedError, optimal_vertices
 
 NEGATIVE_AMOUNT = 1e-13
 """Amounts of phases above minus this part of the feed are zero: the phase is at its boundary."""
@@ -294,7 +294,7 @@ def _from_inside(
     phases = tuple(sorted(set(columns) & set(likely.tolist())))
     if inside.gas_total / size <= inside.gas_slack:
         return _gas_free(posed, condensed, inside, phases, b, c, size)
-    for guess in _guesses(phases, condensed, inside):
+    for guess in _guesses(posed, phases, condensed, inside, b, c):
         answer = _exchanged(posed, condensed, guess, b, c, size, solve_gas)
         if answer is not None:
             answer.steps += inside.steps
@@ -303,13 +303,64 @@ def _from_inside(
 
 
 def _guesses(
-    phases: tuple[int, ...], condensed: NDArray[np.bool_], inside: Inside
+    posed: Posed,
+    phases: tuple[int, ...],
+    condensed: NDArray[np.bool_],
+    inside: Inside,
+    b: Amounts,
+    c: Floats,
 ) -> Iterator[tuple[int, ...]]:
-    """The phases that the interior method shows, then with one more: a trace too small for it to show."""
+    """The phases that the interior method shows; then with those that traces call for, too few for it to show."""
     yield phases
+    with_traces = _with_trace_phases(posed, phases, condensed, inside, b, c)
+    if with_traces is not None:
+        yield with_traces
     absent = np.setdiff1d(np.flatnonzero(condensed), phases)
     for phase in absent[np.argsort(-inside.log_activities[absent], kind="stable")][:MOST_GUESSES]:
         yield tuple(sorted((*phases, int(phase))))
+
+
+def _with_trace_phases(
+    posed: Posed,
+    phases: tuple[int, ...],
+    condensed: NDArray[np.bool_],
+    inside: Inside,
+    b: Amounts,
+    c: Floats,
+) -> tuple[int, ...] | None:
+    """Add the phases that take part in the cheapest way to balance traces where the major species leave a zero.
+
+    As start.py does for a gas: among the species that touch the degenerate balances, the linear program of least cost;
+    a phase counts nothing in the sum, since its amount adds no mixing term.
+    """
+    weights = np.where(condensed, inside.log_activities - STAYS, inside.log_activities)
+    weights[list(phases)] = STAYS
+    components = inside.components.adapted(weights)
+    columns = components.columns
+    m = components.amounts(b[None, :])[0]
+    is_phase = np.isin(columns, phases)
+    rows = np.flatnonzero(~is_phase & (m == 0.0))
+    if is_phase.sum() != len(phases) or not rows.size:
+        return None
+    known = np.where(is_phase, 0.0, inside.log_activities[columns])
+    known[rows] = 0.0
+    touched = np.flatnonzero((np.abs(components.C[rows]) > PIVOT_SIZE).any(axis=0))
+    cost = components.offsets(c[None, :])[0] - known @ components.C
+    scale = posed.system.scale[touched]
+    counted = np.where(condensed[touched], 0.0, scale).astype(components.integer_C.dtype)
+    level = FormulaSystem(np.vstack([components.integer_C[np.ix_(rows, touched)], counted]), scale)
+    if level.rank <= len(rows):
+        return None
+    one = np.zeros((1, level.rank))
+    one[0, -1] = 1.0
+    try:
+        groups, _ = optimal_vertices(level, one, cost[None, touched])
+    except UnboundedError:
+        return None
+    for group in groups:
+        carried = touched[group.components.columns[group.amounts[0] > 0.0]]
+        return tuple(sorted({*phases, *carried[condensed[carried]].tolist()}))
+    return None
 
 
 def _exchanged(
@@ -357,8 +408,23 @@ def _gas_free(
     rest = np.delete(m[0], problem.phase_rows)
     if (held < -NEGATIVE_AMOUNT * size).any() or (np.abs(rest) > NEGATIVE_AMOUNT * size).any():
         return _as_it_is(inside, c)
-    answer = _as_it_is(inside, c)
-    return replace(answer, amounts=amounts)
+    # potentials at which the present phases are exactly saturated, the others' being as the interior point has them
+    potentials = inside.log_activities[components.columns] + c[components.columns]
+    potentials[problem.phase_rows] = c[components.columns[problem.phase_rows]]
+    log_activities = potentials @ components.C - c
+    log_activities[components.columns[problem.phase_rows]] = 0.0
+    gas = log_activities[problem.gas]
+    if (log_activities[condensed] > SUPERSATURATION).any() or (gas.size and _log_sum(gas) > SUPERSATURATION):
+        return replace(_as_it_is(inside, c), amounts=amounts)
+    steps = np.array([inside.steps])
+    return Equilibria(
+        components, amounts, log_activities[None, :], potentials[None, :], steps, np.array([True])
+    )
+
+
+def _log_sum(values: Floats) -> float:
+    highest = float(values.max())
+    return highest + float(np.log(np.exp(values - highest).sum()))
 
 
 def _as_it_is(inside: Inside, c: Floats) -> Equilibria:
