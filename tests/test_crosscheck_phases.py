@@ -152,3 +152,29 @@ def test_a_difference_is_found_where_our_amounts_are_falsified() -> None:
 def test_the_wish_for_a_species_that_cantera_refuses_is_told() -> None:
     with pytest.raises(NoAnswerError, match="failed"):
         Beside("CO CO2 O2", "C(gr)", {"CO": 1.0}, 900.0, 1e5).cantera("no such solver")
+
+
+def test_what_the_notes_of_the_examples_say_holds(outcome: Outcome) -> None:
+    dataset = outcome.dataset
+    name = outcome.scenario.title.split(",")[0]
+    if name.startswith("Reforming with lime"):
+        carbonate = dataset["phase_amount"].sel(phase="CaCO3(cd)") > 0
+        dry = dataset["dry_mole_fraction"].sel(species="H2")
+        assert float(dry.where(carbonate).max()) > 0.9
+        assert float(dataset["phase_amount"].sel(phase="C(gr)").max()) == 0.0
+        cold = dataset["phase_amount"].sel(phase="Ca(OH)2(cd)").isel(temperature=0)
+        assert (cold > 0).all()
+    elif name.startswith("Reduction of iron oxide"):
+        wustite = dataset["phase_amount"].sel(phase="Fe0.947O(cd)") > 0
+        T = dataset["temperature"] - 273.15
+        assert not bool(wustite.where(T < 595, False).any())
+        assert bool(wustite.where((T > 595) & (T < 610), False).any())
+    elif name.startswith("Cooling of a sulphur"):
+        form = dataset["phase_form"].sel(phase="S(cd)")
+        kelvin = dataset["temperature"].values
+        np.testing.assert_array_equal(form.values == "liquid", kelvin > 388.36)
+    else:
+        limit, steam, slip = outcome.boundaries
+        assert limit.crossings > 30
+        assert steam.crossings > 100
+        assert slip.crossings > 40

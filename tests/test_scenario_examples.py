@@ -22,11 +22,15 @@ FILES = sorted(scenario_folder().glob("*.yaml"))
 # what the examples must cover, and a result each of them has to ask for
 EXPECTED = {
     "ammonia_synthesis": "NH3",
+    "digester_gas_carbon_limits": "CO",
     "digester_gas_reforming": "CO",
     "furnace_flue_gas": "NO",
+    "iron_oxide_reduction": "H2",
+    "lime_in_reformer": "H2",
     "shift_high_temperature": "CO",
     "shift_low_temperature": "CO",
     "steam_reforming": "CH4",
+    "sulphur_cooler": "S8",
     "sulphur_recovery_furnace": "S2",
 }
 
