@@ -162,6 +162,7 @@ def test_boundaries_are_variables_rows_of_a_table_and_lines_of_the_summary(
     assert (
         f"carbon over temperature (C(gr) begins to form, along temperature): {len(own)} crossings" in summary
     )
+    assert "carbon over temperature (C(gr) begins to form" in outcome._repr_html_()
     assert "H2O(l) has data from 273.15 to 600 K; outside them it counts as absent" in summary
 
 

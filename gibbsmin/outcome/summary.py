@@ -62,9 +62,7 @@ def summary_text(outcome: Outcome) -> str:
         ]
         lines.append("  ".join(cells).rstrip())
     if outcome.boundaries:
-        from gibbsmin.boundaries.results import summary_lines as boundary_lines
-
-        lines += ["", *_filled(boundary_lines(outcome.boundaries))]
+        lines += ["", *_filled(_boundary_lines(outcome))]
     if outcome.reactions is not None:
         from gibbsmin.outcome.reactions import summary_lines
 
@@ -85,10 +83,17 @@ def summary_html(outcome: Outcome) -> str:
         f'{_STYLE}<div class="gibbsmin-outcome"><h3>{html.escape(outcome.scenario.title)}</h3>'
         + f'<div class="verdict">{"".join(_verdicts(outcome))}</div>'
         + f"<table><thead><tr>{head}</tr></thead><tbody>{body}</tbody></table>"
+        + (_list(_boundary_lines(outcome)) if outcome.boundaries else "")
         + f"<details><summary>What was asked</summary>{_list(facts(outcome))}</details>"
         + f"<details{shown}><summary>Evidence</summary>{_list(evidence_lines(outcome))}</details>"
         + f"<p><small>{html.escape(CAUTION)}</small></p></div>"
     )
+
+
+def _boundary_lines(outcome: Outcome) -> list[str]:
+    from gibbsmin.boundaries.results import summary_lines
+
+    return summary_lines(outcome.boundaries)
 
 
 def _verdicts(outcome: Outcome) -> Iterator[str]:
