@@ -23,7 +23,7 @@ from gibbsmin.minimiser.certificate import shift_weight
 from gibbsmin.minimiser.components import Amounts, Components, Floats
 from gibbsmin.minimiser.posing import Posed
 
-FIRST_MU, LAST_MU, SHRINK = 1.0, 1e-12, 0.2
+FIRST_MU, LAST_MU, SHRINK = 1e-5, 1e-12, 0.2
 """Barrier weights relative to the size of the feed, and the factor between one and the next."""
 
 STEPS_PER_MU = 40
@@ -41,17 +41,16 @@ SLOPE_PART = 0.1
 class Inside:
     """A point inside the constraints, near the minimum.
 
-    log_activities (S,): ln y of gas species, -s of phases; gas_total N and amounts (S,) [mol]; slack of the gas 1 - S.
-    staying (S,): phases whose amount no longer falls with mu.
+    log_activities (S,): ln y of gas species, -s of phases; amounts (S,) [mol].
+    staying (S,): phases whose amount no longer falls with mu; gas_stays: the same of the gas.
     """
 
     components: Components
     log_y: Floats  # (r,) of the components
     log_activities: Floats
-    gas_total: float
     amounts: Floats  # (S,)
-    gas_slack: float
     staying: NDArray[np.bool_]
+    gas_stays: bool
     steps: int
 
 
@@ -179,11 +178,11 @@ class _Walk:
     def inside(self, mu: float, before: Floats) -> Inside:
         """The end of the path; `before` (S,) are the amounts at the mu before the last."""
         log_all = self.log_all(self.log_y)
-        gas_slack, _ = self.slacks(log_all)
         amounts = self.amounts(mu)
-        staying = self.condensed & (amounts > np.sqrt(SHRINK) * before)
-        total = self.size * mu / gas_slack
-        return Inside(self.components, self.log_y, log_all, total, amounts, gas_slack, staying, self.steps)
+        falling = np.sqrt(SHRINK)
+        staying = self.condensed & (amounts > falling * before)
+        gas_stays = bool(amounts[~self.condensed].sum() > falling * before[~self.condensed].sum())
+        return Inside(self.components, self.log_y, log_all, amounts, staying, gas_stays, self.steps)
 
 
 NOISE = 1e-15

@@ -184,7 +184,7 @@ def next_phases(
 ) -> list[tuple[int, ...] | None]:
     """The phases to try next at each point (n,); the present ones where the answer stands, None where it is no help.
 
-    size (n,) mol measures what counts as nothing.
+    size (n,) mol: a negative amount up to NEGATIVE_AMOUNT of it stands; zero asks for none.
     """
     present = np.array(problem.present, dtype=np.intp)
     absent = np.setdiff1d(np.flatnonzero(condensed), present, assume_unique=True)
@@ -254,7 +254,12 @@ def settle(
             lost.extend(points.tolist())
             continue
         answer = solve_beside(problem, b[points], c[points], solve_gas)
-        following = next_phases(problem, answer, condensed, size[points])
+        following = next_phases(problem, answer, condensed, 0.0 * size[points])
+        if any(
+            each != phases and each in tried[p] for p, each in zip(points.tolist(), following, strict=True)
+        ):
+            # to and fro between two sets: at a boundary, where rounding decides
+            following = next_phases(problem, answer, condensed, size[points])
         stands = np.array([each == phases for each in following])
         if stands.any():
             yield points[stands], answer.take(stands)
@@ -292,7 +297,7 @@ def _from_inside(
     others = np.setdiff1d(np.arange(len(c)), order, assume_unique=True)
     columns = posed.system.independent_columns(np.concatenate([order, others]))
     phases = tuple(sorted(set(columns) & set(likely.tolist())))
-    if inside.gas_total / size <= inside.gas_slack:
+    if not inside.gas_stays:
         return _gas_free(posed, condensed, inside, phases, b, c, size)
     for guess in _guesses(posed, phases, condensed, inside, b, c):
         answer = _exchanged(posed, condensed, guess, b, c, size, solve_gas)
@@ -381,7 +386,9 @@ def _exchanged(
         if problem is None:
             return None
         answer = solve_beside(problem, b[None, :], c[None, :], solve_gas)
-        (following,) = next_phases(problem, answer, condensed, np.array([size]))
+        (following,) = next_phases(problem, answer, condensed, np.zeros(1))
+        if following in tried:
+            (following,) = next_phases(problem, answer, condensed, np.array([size]))
         if following == problem.present:
             return answer
     return None
