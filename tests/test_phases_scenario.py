@@ -9,7 +9,7 @@ import pytest
 from matplotlib.figure import Figure
 
 import gibbsmin
-from gibbsmin.errors import ConditionsError, ScenarioError
+from gibbsmin.errors import ScenarioError
 from gibbsmin.figures import figures_of, shown_phases
 from gibbsmin.figures.boundary_lines import boundaries_of, joined
 from gibbsmin.figures.of_outcome import count_figures, figure_options, write_outcome_figures
@@ -174,11 +174,3 @@ def test_runs_of_one_direction_stay_apart() -> None:
     direction = np.ones((4, 2), dtype=np.int8)
     lines = joined(y, places, direction)
     assert sorted(line.along.tolist() for line in lines) == [[0, 1, 2, 3], [10, 11, 12, 13]]
-
-
-def test_a_study_refuses_condensed_phases_rather_than_leaving_them_out() -> None:
-    from gibbsmin.study.model import Keep
-    from gibbsmin.study.preparing import Preparing
-
-    with pytest.raises(ConditionsError, match="cannot have condensed phases"):
-        Preparing(Keep()).add("case", {}, parse_scenario(LIME))
