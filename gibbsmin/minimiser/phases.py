@@ -191,7 +191,7 @@ def next_phases(
     out: list[tuple[int, ...] | None] = []
     for point, solved in enumerate(answer.solved):
         if not solved:
-            out.append(None)
+            out.append(_for_gas(problem, answer, point))
             continue
         held = answer.amounts[point, present]
         if held.size and held.min() < -NEGATIVE_AMOUNT * size[point]:
@@ -203,6 +203,20 @@ def next_phases(
             continue
         out.append(problem.present)
     return out
+
+
+def _for_gas(problem: GasProblem, answer: Equilibria, point: int) -> tuple[int, ...] | None:
+    """Phases that fix all potentials, with a gas above saturation: the one that the gas uses up first goes."""
+    gas = answer.log_activities[point, problem.gas]
+    if problem.gas_rows.size or not problem.gas.size or not np.isfinite(gas).any():
+        return None
+    columns = problem.components.columns
+    used = problem.components.C[:, problem.gas] @ np.exp(gas - gas.max())
+    held = answer.amounts[point, columns]
+    if _log_sum(gas) <= SUPERSATURATION or (held < 0.0).any() or not (used > PIVOT_SIZE).any():
+        return None
+    ratio = np.divide(held, used, where=used > PIVOT_SIZE, out=np.full(len(used), np.inf))
+    return _without(problem.present, int(columns[np.argmin(ratio)]))
 
 
 def _without(phases: tuple[int, ...], phase: int) -> tuple[int, ...]:
@@ -317,9 +331,11 @@ def _guesses(
 ) -> Iterator[tuple[int, ...]]:
     """The phases that the interior method shows; then with those that traces call for, too few for it to show."""
     yield phases
-    with_traces = _with_trace_phases(posed, phases, condensed, inside, b, c)
-    if with_traces is not None:
-        yield with_traces
+    more = _with_trace_phases(posed, phases, condensed, inside, b, c)
+    while more is not None:  # traces of the next level, and so on
+        yield more
+        further = _with_trace_phases(posed, more, condensed, inside, b, c)
+        more = further if further != more else None
     absent = np.setdiff1d(np.flatnonzero(condensed), phases)
     for phase in absent[np.argsort(-inside.log_activities[absent], kind="stable")][:MOST_GUESSES]:
         yield tuple(sorted((*phases, int(phase))))
