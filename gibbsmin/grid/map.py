@@ -18,10 +18,12 @@ from gibbsmin.minimiser.minimise import solve_gas_beside
 from gibbsmin.minimiser.nearby import abundant_components, minimise_near, pose_like
 from gibbsmin.minimiser.posing import Posed
 
-CHUNK = 1600
-"""Points polished together: their arrays stay in a core's second-level cache, and the calls are few."""
+CHUNK = 9600
+"""Points polished together. Arrays that outgrow the second-level cache cost less than threads that wait for each
+other between short calls: with 1,600 points two threads were slower than one, with 9,600 they are 1.2 times faster.
+"""
 
-PRESSURES = 64
+PRESSURES = 128
 """Pressures of a chunk at the most, so that its points resemble each other."""
 
 WORTHWHILE = 3.0

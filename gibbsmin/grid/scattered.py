@@ -22,7 +22,7 @@ WORTHWHILE = 1000
 SAMPLE_PART, LARGEST_SAMPLE = 40, 256
 """One point in so many is solved from nothing, up to this number."""
 
-CHUNK = 1500
+CHUNK = 3000
 """Points polished together."""
 
 LONGEST = 1.0
