@@ -19,7 +19,7 @@ from gibbsmin.minimiser.posing import Posed
 WORTHWHILE = 1000
 """A sample pays if there are at least this many points."""
 
-SAMPLE_PART, LARGEST_SAMPLE = 40, 256
+SAMPLE_PART, LARGEST_SAMPLE = 40, 200
 """One point in so many is solved from nothing, up to this number."""
 
 CHUNK = 3000
@@ -28,9 +28,9 @@ CHUNK = 3000
 LONGEST = 1.0
 """Largest change of ln y of a component in one step."""
 
-MOST_STEPS = 6
+MOST_STEPS = 7
 
-STRAGGLERS = 0.03
+STRAGGLERS = 0.01
 """Part of a chunk that is left over rather than make the others wait."""
 
 LEFT_OVER = np.int8(-1)
