@@ -212,7 +212,7 @@ class Components:
         while True:
             gain = components.log_squares + (log_x[None, :] - log_x[components.columns][:, None])
             position, species = np.unravel_index(np.argmax(gain), gain.shape)
-            if gain[position, species] <= LOG_EXCHANGE:
+            if not gain[position, species] > LOG_EXCHANGE:  # nor where it is not a number
                 return components
             components = components.exchange(int(position), int(species))
 

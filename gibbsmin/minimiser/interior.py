@@ -23,7 +23,7 @@ from gibbsmin.minimiser.certificate import shift_weight
 from gibbsmin.minimiser.components import Amounts, Components, Floats
 from gibbsmin.minimiser.posing import Posed
 
-FIRST_MU, LAST_MU, SHRINK = 1e-5, 1e-12, 0.2
+FIRST_MU, LAST_MU, SHRINK = 1e-2, 1e-12, 0.2
 """Barrier weights relative to the size of the feed, and the factor between one and the next."""
 
 STEPS_PER_MU = 40
@@ -126,7 +126,10 @@ class _Walk:
                 (gas_C * n) @ gas_C.T + np.outer(held, held) / mu + (phase_C * (mu / slack**2)) @ phase_C.T
             )
             scale = 1.0 / np.sqrt(np.diag(hessian))
-            direction = scale * np.linalg.solve(hessian * scale[:, None] * scale, scale * gradient)
+            scaled = hessian * scale[:, None] * scale
+            if not np.isfinite(scaled).all():  # on the wall, by rounding: the path ends here
+                return
+            direction = scale * np.linalg.lstsq(scaled, scale * gradient)[0]
             slope = float(gradient @ direction)
             self.steps += 1
             self._advance(direction, slope, log_all, mu)
@@ -138,9 +141,11 @@ class _Walk:
         towards = change[self.condensed] / np.maximum(-log_all[self.condensed], np.finfo(np.float64).tiny)
         length = min(1.0, TO_THE_WALL / max(towards.max(initial=0.0), np.finfo(np.float64).tiny))
         before = self._barrier(self.log_y, log_all, mu)
+        least = (1.0 - TO_THE_WALL) * self.slacks(log_all)[0]
         while length > np.finfo(np.float64).eps:
             log_y = self.log_y + length * direction
-            after = self._barrier(log_y, log_all + length * change, mu)
+            new = log_all + length * change
+            after = self._barrier(log_y, new, mu) if self.slacks(new)[0] >= least else -np.inf
             if after >= before + SLOPE_PART * length * slope - NOISE * abs(before):
                 self.log_y = log_y
                 return
