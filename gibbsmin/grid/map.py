@@ -168,11 +168,12 @@ def tiles(nodes: Nodes, n_T: int, n_p: int) -> Iterator[Tile]:
         yield Tile(T_part, p_part, components)
 
 
-def rectangles(n_T: int, n_p: int) -> Iterator[tuple[slice, slice]]:
-    """The parts of a map that are solved as one, by ranges of temperature and pressure."""
+def rectangles(n_T: int, n_p: int, chunk: int | None = None) -> Iterator[tuple[slice, slice]]:
+    """The parts of a map that are solved as one, by ranges of temperature and pressure: about `chunk` points each."""
+    chunk = CHUNK if chunk is None else chunk
     parts = -(-n_p // PRESSURES)
     edges = [n_p * part // parts for part in range(parts + 1)]
-    height = max(1, CHUNK * parts // n_p)
+    height = max(1, chunk * parts // n_p)
     for p_first, p_last in pairwise(edges):
         for T_first in range(0, n_T, height):
             yield slice(T_first, min(T_first + height, n_T)), slice(p_first, p_last)

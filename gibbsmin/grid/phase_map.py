@@ -25,7 +25,10 @@ from gibbsmin.minimiser.components import Amounts
 from gibbsmin.minimiser.phases import NEGATIVE_AMOUNT, SUPERSATURATION, GasProblem
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE, Posed
 
-LOOKS = 16
+CHUNK = 3200
+"""Points solved as one: fewer than without phases, so that most parts lie on one side of every boundary."""
+
+LOOKS = 10
 """Points in each direction at which the map is looked at for the phases that occur."""
 
 
@@ -159,7 +162,7 @@ def phase_tasks(
     maps, looks_T, looks_p, seen = prepared
 
     def work() -> Iterator[Callable[[], int]]:
-        for tile in rectangles(len(T), len(log_pressure)):
+        for tile in rectangles(len(T), len(log_pressure), CHUNK):
             near = seen[_around(looks_T, tile[0])][:, _around(looks_p, tile[1])]
             numbers, counts = np.unique(near[near >= 0], return_counts=True)
             candidates = [maps[number] for number in numbers[np.argsort(-counts, kind="stable")]]
@@ -192,15 +195,28 @@ def _solve_tile(
     g = gibbs_RT[tile[0]]
     lnp = log_pressure[tile[1]]
     shape = (len(g), len(lnp))
-    left = np.ones(len(g) * len(lnp), dtype=bool)
+    left = np.ones(shape, dtype=bool)
     for each in candidates:
-        _take_valid(each, tile, g, lnp, left, out)
+        here = _bounds(left)
+        some = left[here].ravel()
+        part = tuple(
+            slice(whole.start + inner.start, whole.start + inner.stop)
+            for whole, inner in zip(tile, here, strict=True)
+        )
+        _take_valid(each, (part[0], part[1]), g[here[0]], lnp[here[1]], some, out)
+        left[here] = some.reshape(left[here].shape)
         if not left.any():
             return left.size
-    row, column = np.divmod(np.flatnonzero(left), shape[1])
+    row, column = np.nonzero(left)
     found = minimise(A, b, g[row] + lnp[column, None] * ~condensed, condensed=condensed)
     out.fill((row + tile[0].start, column + tile[1].start), found)
     return left.size
+
+
+def _bounds(left: NDArray[np.bool_]) -> tuple[slice, slice]:
+    """The smallest rectangle that holds all points left."""
+    rows, columns = np.flatnonzero(left.any(axis=1)), np.flatnonzero(left.any(axis=0))
+    return slice(int(rows[0]), int(rows[-1]) + 1), slice(int(columns[0]), int(columns[-1]) + 1)
 
 
 def _take_valid(
@@ -237,11 +253,17 @@ def _take_valid(
     pi = np.full((len(posed.A), len(good)), np.nan)
     pi[posed.A[:, posed.kept].any(axis=1)] = 0.0
     pi[posed.system.rows] = np.linalg.inv(square.T) @ potentials
-    values = np.zeros((out.amounts.shape[-1], len(good)))
-    values[posed.kept[each.gas]] = polished.y * total_amount
-    values[posed.kept[each.phases]] = np.maximum(held, 0.0)
     by_species = np.moveaxis(out.amounts, -1, 0)[(slice(None), *at)]
-    np.copyto(by_species, values.reshape(-1, *shape), where=mask)
+    everywhere: bool | NDArray[np.bool_] = True if good.all() else mask
+    nothing = np.ones(len(by_species), dtype=bool)
+    nothing[posed.kept[each.gas]] = nothing[posed.kept[each.phases]] = False
+    for species in np.flatnonzero(nothing):
+        np.copyto(by_species[species], 0.0, where=everywhere)
+    total = total_amount.reshape(shape)
+    for y, species in zip(polished.y, posed.kept[each.gas], strict=True):
+        np.multiply(y.reshape(shape), total, out=by_species[species], where=everywhere)
+    for amount, species in zip(held, posed.kept[each.phases], strict=True):
+        np.maximum(amount.reshape(shape), 0.0, out=by_species[species], where=everywhere)
     by_element = np.moveaxis(out.element_potentials, -1, 0)[(slice(None), *at)]
     np.copyto(by_element, pi.reshape(-1, *shape), where=mask)
     np.copyto(out.gap[at], gap.reshape(shape), where=mask)
