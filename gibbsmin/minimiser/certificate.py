@@ -77,13 +77,13 @@ def optimality_gap(
     difference = np.subtract(log_x, level, where=counted, out=np.zeros(n.shape))
     above_dual = (n * difference).sum(axis=1)  # G(n) / RT - (A n).pi
     imbalance = ((n @ A.T - b) * pi).sum(axis=1)
-    excess = np.maximum(_log_sum(level[:, is_gas]), level[:, ~is_gas].max(axis=1, initial=-np.inf))
+    excess = np.maximum(log_sum(level[:, is_gas]), level[:, ~is_gas].max(axis=1, initial=-np.inf))
     reach = b @ shift_weight(A)
     # a negative sum is rounding: no composition lies below the minimum
     return np.asarray(np.maximum(above_dual + imbalance + np.maximum(excess, 0.0) * reach, 0.0))
 
 
-def _log_sum(level: Floats) -> Floats:
+def log_sum(level: Floats) -> Floats:
     """(n,) ln sum exp over the last axis of (n, s); -inf where there is nothing to sum."""
     highest = level.max(axis=1, initial=-np.inf)
     scale = np.where(np.isfinite(highest), highest, 0.0)

@@ -26,6 +26,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from gibbsmin.minimiser.certificate import log_sum
 from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices
 from gibbsmin.minimiser.equilibria import Equilibria
 from gibbsmin.minimiser.interior import Inside, follow_path
@@ -171,9 +172,7 @@ def _without_gas(problem: GasProblem, b: Amounts, c: Floats) -> Equilibria:
     log_activities[:, phases] = 0.0
     solved = (m[:, problem.empty_rows] == 0.0).all(axis=1)
     if problem.gas.size:
-        gas = log_activities[:, problem.gas]
-        highest = gas.max(axis=1)
-        solved &= highest + np.log(np.exp(gas - highest[:, None]).sum(axis=1)) <= SUPERSATURATION
+        solved &= log_sum(log_activities[:, problem.gas]) <= SUPERSATURATION
     return Equilibria(
         components, amounts, log_activities, potentials, np.zeros(len(c), dtype=np.intp), solved
     )
@@ -213,7 +212,7 @@ def _for_gas(problem: GasProblem, answer: Equilibria, point: int) -> tuple[int, 
     columns = problem.components.columns
     used = problem.components.C[:, problem.gas] @ np.exp(gas - gas.max())
     held = answer.amounts[point, columns]
-    if _log_sum(gas) <= SUPERSATURATION or (held < 0.0).any() or not (used > PIVOT_SIZE).any():
+    if log_sum(gas[None])[0] <= SUPERSATURATION or (held < 0.0).any() or not (used > PIVOT_SIZE).any():
         return None
     ratio = np.divide(held, used, where=used > PIVOT_SIZE, out=np.full(len(used), np.inf))
     return _without(problem.present, int(columns[np.argmin(ratio)]))
@@ -437,17 +436,14 @@ def _gas_free(
     log_activities = potentials @ components.C - c
     log_activities[components.columns[problem.phase_rows]] = 0.0
     gas = log_activities[problem.gas]
-    if (log_activities[condensed] > SUPERSATURATION).any() or (gas.size and _log_sum(gas) > SUPERSATURATION):
+    if (log_activities[condensed] > SUPERSATURATION).any() or (
+        gas.size and log_sum(gas[None])[0] > SUPERSATURATION
+    ):
         return replace(_as_it_is(inside, c), amounts=amounts)
     steps = np.array([inside.steps])
     return Equilibria(
         components, amounts, log_activities[None, :], potentials[None, :], steps, np.array([True])
     )
-
-
-def _log_sum(values: Floats) -> float:
-    highest = float(values.max())
-    return highest + float(np.log(np.exp(values - highest).sum()))
 
 
 def _as_it_is(inside: Inside, c: Floats) -> Equilibria:
