@@ -22,11 +22,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.minimiser.certificate import shift_weight
-from gibbsmin.minimiser.cholesky import Factors, diagonal
+from gibbsmin.minimiser.cholesky import Factors, Reals, diagonal, product
 from gibbsmin.minimiser.components import Components
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE, Posed
 
 Floats = NDArray[np.float64]
+Indices = NDArray[np.intp]
 
 SETTLED = 1e-2
 """Largest change of any ln y by a step with its own Hessian that lets the next, without, come near LAST_ERROR."""
@@ -140,19 +141,21 @@ class Rectangle:
 
 @dataclass(frozen=True)
 class Scattered:
-    """Points without order: gibbs_RT (n, s) and log_pressures (n,) of each."""
+    """Points without order: gibbs_RT (s, n) and log_pressures (n,) of each."""
 
     gibbs_RT: Floats  # noqa: N815 - the field's own symbol
     log_pressures: Floats
 
     def offsets(self, components: Components) -> tuple[Floats, Floats]:
-        return np.ascontiguousarray(components.offsets(self.gibbs_RT).T)[:, None, :], self.log_pressures
+        standard = self.gibbs_RT - components.C.T @ self.gibbs_RT[components.columns]
+        standard[components.columns] = 0.0
+        return standard[:, None, :], self.log_pressures
 
     def potentials(self, components: Components) -> Floats:
-        return self.gibbs_RT[:, components.columns].T + self.log_pressures
+        return self.gibbs_RT[components.columns] + self.log_pressures
 
     def largest_potential(self) -> Floats:
-        return np.asarray(np.abs(self.gibbs_RT).max(axis=1) + np.abs(self.log_pressures))
+        return np.asarray(np.abs(self.gibbs_RT).max(axis=0) + np.abs(self.log_pressures))
 
 
 @dataclass
@@ -182,6 +185,39 @@ def _scratch(species: int, points: int) -> list[Floats]:
     if not kept or kept[0].shape != (species, points):
         kept = _work_space.arrays = [np.empty((species, points)) for _ in range(3)]
     return kept
+
+
+@dataclass
+class NewtonStep:
+    """A step on both conditions at once, for n points: balances N C y = m of all components, and sum y = 1."""
+
+    log_y: Reals  # (r, n) change of ln y of the components
+    total_ratio: Reals  # (n,) factor of N
+    condition: Reals  # (n,) largest diagonal of H = C diag(y) C^T beside the component itself
+    factors: Factors  # of H = L L^T
+    balance: list[Reals]  # (r, n) L^-1 C y
+    by_balance: Reals  # (n,) y C^T H^-1 C y
+
+    @classmethod
+    def of(cls, sums: Reals, target: Reals, log_y: Reals) -> NewtonStep:
+        """From the sums of y, C y and H (packed) at ln y (r, n) of the components; target m / N (r, n)."""
+        r = len(log_y)
+        total, packed = sums[0], sums[1 + r :]
+        condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
+        factors = Factors.of_packed(packed)
+        wanted = factors.forward(target)
+        balance = factors.forward(sums[1 : 1 + r])
+        by_balance = product(balance, balance)
+        ratio = (product(balance, wanted) - 1.0 + total) / by_balance
+        change = factors.backward([want / ratio - have for want, have in zip(wanted, balance, strict=True)])
+        return cls(change, ratio, condition, factors, balance, by_balance)
+
+    def repeated(self, sums: Floats, target: Floats) -> tuple[Floats, Floats]:
+        """Changes of ln y (r, n) and ln N (n,) by a further step that takes the Hessian as it was."""
+        missing = self.factors.forward(target - sums[1:])
+        change = (product(self.balance, missing) - 1.0 + sums[0]) / self.by_balance
+        parts = [want - have * change for want, have in zip(missing, self.balance, strict=True)]
+        return self.factors.backward(parts), change
 
 
 def polish(
@@ -217,17 +253,10 @@ def polish(
     with np.errstate(all="ignore"):  # what goes wrong in a point shows in `usable`
         while True:
             np.exp(exponents, out=y)
-            table = feed.to_all_sums @ y
-            total, balance, packed = table[0], table[1 : 1 + r], table[1 + r :]
-            condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
-            factors = Factors.of_packed(packed)
-            to_target = factors.solve(m * np.exp(-log_total))
-            to_balance = factors.solve(balance)
-            by_balance = (balance * to_balance).sum(axis=0)
-            ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / by_balance
-            first = to_target / ratio - to_balance
+            step = NewtonStep.of(feed.to_all_sums @ y, m * np.exp(-log_total), log_y)
+            first, ratio = step.log_y, step.total_ratio
             reach = np.maximum(feed.components.largest @ np.abs(first), np.abs(ratio - 1.0))
-            usable &= (condition < ILL_CONDITIONED) & (ratio > 0.0)
+            usable &= (step.condition < ILL_CONDITIONED) & (ratio > 0.0)
             if not usable.all():
                 first[:, ~usable], ratio[~usable] = 0.0, 1.0
             length = np.minimum(1.0, longest / np.abs(first).max(axis=0))
@@ -240,10 +269,7 @@ def polish(
             if steps == most_steps or unsettled <= stragglers * len(lnp):
                 break
         np.exp(exponents, out=y)
-        table = feed.to_balances[: 1 + r] @ y
-        to_missing = factors.solve(m * np.exp(-log_total) - table[1:])
-        change = ((balance * to_missing).sum(axis=0) - 1.0 + table[0]) / by_balance
-        second = to_missing - to_balance * change
+        second, change = step.repeated(feed.to_balances[: 1 + r] @ y, m * np.exp(-log_total))
         second_reach = feed.components.largest @ np.abs(second) + np.abs(change)
         usable &= (reach < settled) & (second_reach < settled)
         if not usable.all():

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from gibbsmin.grid.approach import approach, deciding_species
 from gibbsmin.grid.nodes import Floats, Indices
 from gibbsmin.grid.polish import SETTLED, Feed, Scattered, polish, prove
 from gibbsmin.grid.solution import GridSolution
@@ -16,19 +17,22 @@ from gibbsmin.minimiser.components import Amounts, Components
 from gibbsmin.minimiser.nearby import abundant_components, pose_like
 from gibbsmin.minimiser.posing import Posed
 
+DEBUG = False
+SEEDS = 24
 WORTHWHILE = 1000
 """A sample pays if there are at least this many points."""
 
 SAMPLE_PART, LARGEST_SAMPLE = 40, 200
 """One point in so many is solved from nothing, up to this number."""
 
-CHUNK = 3000
+BLOCK = 10000
+CHUNK = 2000
 """Points polished together."""
 
 LONGEST = 1.0
 """Largest change of ln y of a component in one step."""
 
-MOST_STEPS = 7
+MOST_STEPS = 2
 
 STRAGGLERS = 0.01
 """Part of a chunk that is left over rather than make the others wait."""
@@ -91,7 +95,7 @@ class Sample:
     """Solved points of a cloud.
 
     coordinates (k, d); values (k, s + 1) of ln x and, last, ln N less log_size; their slopes (k, d, s + 1);
-    `which` (k,) of the components serves each.
+    `which` (k,) of the components serves each; `deciding` (q,) positions of the species that matter in any.
     """
 
     posed: Posed
@@ -101,11 +105,24 @@ class Sample:
     slopes: Floats
     components: list[Components]
     which: Indices
+    deciding: Indices
+
+    @classmethod
+    def of(cls, posed: Posed, elements: Indices, coordinates: Floats, values: Floats) -> Sample:
+        log_x = values[:, :-1]
+        components = _shared_components(posed, log_x.T)
+        which = np.empty(len(values), dtype=np.intp)
+        for number, (_, members) in enumerate(components):
+            which[members] = number
+        every = [each for each, _ in components]
+        deciding = np.unique(np.concatenate([deciding_species(each, log_x[at]) for each, at in components]))
+        slopes = _slopes(coordinates, values)
+        return cls(posed, elements, coordinates, values, slopes, every, which, deciding)
 
     def nearest(self, coordinates: Floats) -> Indices:
         """(n,) the sampled point nearest to each point."""
         squares = (self.coordinates**2).sum(axis=1)
-        return np.asarray((squares - 2.0 * coordinates @ self.coordinates.T).argmin(axis=1))
+        return np.asarray((squares[:, None] - 2.0 * self.coordinates @ coordinates.T).argmin(axis=0))
 
     def estimate(self, components: Components, coordinates: Floats, near: Indices) -> Floats:
         """(r + 1, n) ln y of the components and ln N less log_size, by the tangent plane of the nearest point."""
@@ -128,8 +145,7 @@ def take_sample(cloud: Cloud) -> Sample | None:
         or cloud.condensed.any()
     ):
         return None
-    size = min(points // SAMPLE_PART, LARGEST_SAMPLE)
-    chosen = np.sort(np.random.default_rng(0).choice(points, size, replace=False))
+    chosen = np.random.default_rng(0).choice(points, SEEDS, replace=False)
     found = minimise(cloud.A, cloud.b[cloud.feed[chosen]], cloud.potentials(chosen))
     present = np.isfinite(found.log_mole_fractions)
     if not (found.solved.all() and (present == present[0]).all()):
@@ -137,13 +153,10 @@ def take_sample(cloud: Cloud) -> Sample | None:
     posed = pose_like(cloud.A, cloud.b[cloud.feed[chosen[0]]], found.log_mole_fractions[0])
     if len(posed.system.rows) != positive.sum():
         return None  # dependent rows: each feed would need its own choice
-    log_x = found.log_mole_fractions[:, posed.kept]
     elements = np.flatnonzero(positive)
-    components, which = _shared_components(posed, log_x)
     log_total = np.log(found.amounts.sum(axis=1)) - cloud.log_size(chosen, elements)
-    coordinates = cloud.features(chosen, elements)
-    values = np.column_stack([log_x, log_total])
-    return Sample(posed, elements, coordinates, values, _slopes(coordinates, values), components, which)
+    values = np.column_stack([found.log_mole_fractions[:, posed.kept], log_total])
+    return Sample.of(posed, elements, cloud.features(chosen, elements), values)
 
 
 def _slopes(coordinates: Floats, values: Floats) -> Floats:
@@ -159,67 +172,115 @@ def _slopes(coordinates: Floats, values: Floats) -> Floats:
     return np.asarray(np.linalg.solve(normal, right))
 
 
-def _shared_components(posed: Posed, log_x: Floats) -> tuple[list[Components], Indices]:
-    """Few choices of components that serve all sampled points; which one serves each."""
-    which = np.full(len(log_x), -1)
-    chosen: list[Components] = []
-    while (left := np.flatnonzero(which < 0)).size:
-        components = abundant_components(posed, log_x[left[0]], chosen[-1] if chosen else None)
+def _shared_components(
+    posed: Posed, log_x: Floats, species: Indices | None = None, known: Sequence[Components] = ()
+) -> list[tuple[Components, Indices]]:
+    """Few choices of components that serve all compositions ln x (q, n) of some species; the points of each."""
+    species = np.arange(len(posed.kept)) if species is None else species
+    left = np.arange(log_x.shape[1])
+    served = []
+    waiting = list(known)
+    while left.size:
+        if waiting:
+            components = waiting.pop(0)
+        else:
+            whole = np.full(len(posed.kept), -np.inf)
+            whole[species] = log_x[:, left[0]]
+            components = abundant_components(posed, whole, served[-1][0] if served else None)
+        here = log_x[:, left]
         gain = np.full(len(left), -np.inf)
-        for row, column in zip(components.log_squares, components.columns, strict=True):
-            gain = np.maximum(gain, (log_x[left] + row).max(axis=1) - log_x[left, column])
-        which[left[gain <= SHARED_GAIN]] = len(chosen)
-        which[left[0]] = len(chosen)
-        chosen.append(components)
-    return chosen, which
+        for row, column in zip(components.log_squares[:, species], components.columns, strict=True):
+            own = here[np.searchsorted(species, column)]
+            np.maximum(gain, (here + row[:, None]).max(axis=0) - own, out=gain)
+        good = gain <= SHARED_GAIN
+        if not waiting:
+            good[0] = True
+        if good.any():
+            served.append((components, left[good]))
+        left = left[~good]
+    return served
 
 
 def tasks(cloud: Cloud, sample: Sample, out: GridSolution) -> Iterator[Callable[[], int]]:
     """Work on chunks of similar points; each call solves its points into `out` and returns their number."""
-    points = len(cloud.feed)
-    nearest = np.concatenate(
-        [
-            sample.nearest(cloud.features(slice(first, first + CHUNK), sample.elements))
-            for first in range(0, points, CHUNK)
-        ]
-    )
-    which = sample.which[nearest]
-    order = np.argsort(which, kind="stable")
-    edges = np.searchsorted(which[order], np.arange(len(sample.components) + 1))
+    for first in range(0, len(cloud.feed), BLOCK):
+        index = np.arange(first, min(first + BLOCK, len(cloud.feed)))
+        yield lambda index=index: _solve_chunk(cloud, sample, index, out)  # type: ignore[misc]
+
+
+def _solve_chunk(cloud: Cloud, sample: Sample, index: Indices, out: GridSolution) -> int:
+    posed, deciding = sample.posed, sample.deciding
+    coordinates = cloud.features(index, sample.elements)
+    near = sample.nearest(coordinates)
+    which = sample.which[near]
+    log_x = np.empty((len(deciding), len(index)))
+    log_total = np.empty(len(index))
+    arrived = np.zeros(len(index), dtype=bool)
     for number, components in enumerate(sample.components):
-        group = order[edges[number] : edges[number + 1]]
-        for first in range(0, len(group), CHUNK):
-            index = group[first : first + CHUNK]
+        at = np.flatnonzero(which == number)
+        if at.size:
+            log_x[:, at], log_total[at], arrived[at] = _approach_from(
+                cloud, sample, components, index[at], coordinates[at], near[at]
+            )
+    out.status[index] = LEFT_OVER
+    at = np.flatnonzero(arrived)
+    if DEBUG: print(len(index), 'arrived', arrived.sum())
+    good = 0
+    for components, members in _shared_components(posed, log_x[:, at], deciding, sample.components):
+        for first in range(0, len(members), CHUNK):
+            here = at[members[first : first + CHUNK]]
+            log_y = log_x[np.searchsorted(deciding, components.columns)[:, None], here]
+            good += _polish_into(out, cloud, posed, components, index[here], log_y, log_total[here])
+    return good
 
-            def task(index: Indices = index, components: Components = components) -> int:
-                return _solve_chunk(cloud, sample, components, index, nearest[index], out)
 
-            yield task
-
-
-def _solve_chunk(
-    cloud: Cloud, sample: Sample, components: Components, index: Indices, near: Indices, out: GridSolution
-) -> int:
-    posed = sample.posed
+def _feed_and_points(
+    cloud: Cloud, posed: Posed, components: Components, index: Indices, species: Indices | slice
+) -> tuple[Feed, Scattered]:
     b = cloud.b[cloud.feed[index]]
     m = components.amounts(b[:, posed.system.rows])
-    feed = Feed(posed, components, b.astype(np.float64).T, m.T)
-    points = Scattered(
-        cloud.gibbs_RT[np.ix_(cloud.at_T[index], posed.kept)], cloud.log_pressure[cloud.at_p[index]]
-    )
-    start = sample.estimate(components, cloud.features(index, sample.elements), near)
+    feed = Feed(posed, components, np.ascontiguousarray(b.T, dtype=np.float64), np.ascontiguousarray(m.T))
+    gibbs = cloud.gibbs_RT.T[np.ix_(posed.kept[species], cloud.at_T[index])]
+    return feed, Scattered(gibbs, cloud.log_pressure[cloud.at_p[index]])
+
+
+def _approach_from(
+    cloud: Cloud, sample: Sample, components: Components, index: Indices, coordinates: Floats, near: Indices
+) -> tuple[Floats, Floats, NDArray[np.bool_]]:
+    deciding = sample.deciding
+    feed, points = _feed_and_points(cloud, sample.posed, components, index, deciding)
+    own = np.searchsorted(deciding, components.columns)
+    standard = points.gibbs_RT - components.C[:, deciding].T @ points.gibbs_RT[own]
+    standard[own] = 0.0
+    start = sample.estimate(components, coordinates, near)
     start[-1] += cloud.log_size(index, sample.elements)
+    log_y, log_total, arrived = approach(feed, deciding, standard, points.log_pressures, start[:-1], start[-1])
+    level = np.concatenate([log_y + points.log_pressures, points.log_pressures[None]])
+    return feed.to_exponents[deciding] @ level - standard, log_total, arrived
+
+
+def _polish_into(
+    out: GridSolution,
+    cloud: Cloud,
+    posed: Posed,
+    components: Components,
+    index: Indices,
+    log_y: Floats,
+    log_total: Floats,
+) -> int:
+    feed, points = _feed_and_points(cloud, posed, components, index, slice(None))
     polished = polish(
         feed,
         points,
-        start[:-1],
-        start[-1],
+        log_y,
+        log_total,
         longest=LONGEST,
         settled=SETTLED,
         most_steps=MOST_STEPS,
         stragglers=STRAGGLERS,
     )
     proved = prove(polished, points)
+    if DEBUG: print(len(index), polished.steps, proved.good.sum(), polished.usable.sum(), np.percentile(polished.first_reach,[50,90,99]), np.percentile(polished.second_reach,[50,90,99]),components.key)
     by_species = np.moveaxis(out.amounts, -1, 0)
     by_species[np.ix_(posed.excluded, index)] = 0.0
     polished.y *= proved.total_amount
@@ -229,7 +290,7 @@ def _solve_chunk(
     out.gap[index] = proved.gap
     out.balance_residual[index] = proved.balance_residual
     out.iterations[index] = polished.steps
-    out.status[index] = np.where(proved.good, Status.SOLVED, LEFT_OVER)
+    out.status[index[proved.good]] = Status.SOLVED
     return int(proved.good.sum())
 
 

@@ -32,6 +32,7 @@ from typing import TypeAlias
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from gibbsmin.broadcasting import unbuffered
 from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.errors import TemperatureRangeError
 from gibbsmin.species.elements import sort_elements
@@ -48,6 +49,9 @@ JOINED = 1e-4
 """Difference in g/RT within which two forms count as joined; joins of the shipped data are this accurate."""
 
 _TERMS = 9
+
+_BLOCK = 1024
+"""Temperatures evaluated together: the values of a hundred species then stay in a core's second-level cache."""
 
 
 class ThermoTable:
@@ -162,17 +166,10 @@ class ThermoTable:
     def _evaluate(self, T: ArrayLike, basis: Callable[[Array], tuple[Array, ...]], *, absent: float) -> Array:
         temperatures = _temperatures(T)
         self._check_range(temperatures)
-        values = np.empty((temperatures.size, len(self.species)))
+        by_species = np.empty((len(self.species), temperatures.size))
         for segment, rows in self._grouped(temperatures):
-            terms = basis(temperatures[rows])
-            part = terms[0][:, np.newaxis] * segment.coefficients[0]
-            product = np.empty_like(part)
-            for term, coefficients in zip(terms[1:], segment.coefficients[1:], strict=True):
-                np.multiply(term[:, np.newaxis], coefficients, out=product)
-                part += product
-            part[:, segment.form < 0] = absent
-            values[rows] = part
-        return values
+            by_species[:, rows] = segment.evaluate(temperatures[rows], basis, absent)
+        return by_species.T
 
     def _grouped(self, temperatures: Array) -> list[tuple[_Segment, slice | NDArray[np.intp]]]:
         """The segments that the temperatures fall into, each with the rows of its temperatures.
@@ -223,6 +220,21 @@ class _Segment:
 
     coefficients: Array
     form: NDArray[np.intp]
+
+    def evaluate(self, T: Array, basis: Callable[[Array], tuple[Array, ...]], absent: float) -> Array:
+        """Values (S, nT): `absent` of species without a form."""
+        values = np.empty((len(self.form), T.size))
+        product = np.empty((len(self.form), min(T.size, _BLOCK)))
+        with unbuffered():
+            for first in range(0, T.size, _BLOCK):
+                part = values[:, first : first + _BLOCK]
+                room = product[:, : part.shape[1]]
+                terms = basis(T[first : first + _BLOCK])
+                np.multiply(self.coefficients[0][:, np.newaxis], terms[0], out=part)
+                for term, coefficients in zip(terms[1:], self.coefficients[1:], strict=True):
+                    part += np.multiply(coefficients[:, np.newaxis], term, out=room)
+        values[self.form < 0] = absent
+        return values
 
 
 @dataclass(frozen=True)
