@@ -1,40 +1,60 @@
 """Newton steps on the few species that decide the balances, from far estimates to near ones.
 
 Most species of a mixture are traces: they follow from the potentials of the others and have no say in them. While an
-estimate is far off, steps that leave them out are as good as full ones and cost a quarter. What they leave, the share
-of the species left out, is for polish.py to settle with all species.
+estimate is far off, steps that leave them out and carry seven digits are as good as full ones at a fraction of the cost.
+What they leave, the share of the species left out and the rounding, is for polish.py to settle.
 """
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
+from gibbsmin.grid.nodes import Floats, Indices
+from gibbsmin.grid.polish import NewtonStep
+from gibbsmin.minimiser.cholesky import Reals, are_few, diagonal, solve_packed
 from gibbsmin.minimiser.components import Components
-from gibbsmin.grid.polish import Feed, Floats, Indices, NewtonStep
 
-DEBUG=False
 MINOR = 1e-6
 """A species that makes up less of every sum of the Hessian's diagonal is left out."""
 
-LONGEST = 1.5
-"""Largest change of ln y of a component in one step."""
+BOLD = 2.0
+"""Growth of ln y that a step may bring unabridged: more than is certain to descend, as polishing proves the outcome."""
+
+FALLING = -0.9
+"""A species whose ln y wants to fall by almost 1 is far too abundant: Newton steps gain one e-fold each, so extend them."""
+
+LONGEST_EXTENSION = 4.0
+
+DEEPEST = -10.0
+"""Fall of ln y that a step may bring: beyond it species come up that the step did not know of."""
+
+SMALLEST_RISE = 1e-3
 
 NEAR = 3e-3
 """A step this short leaves an error of about MINOR."""
-
-MOST_STEPS = 25
 
 STILL_OPEN = 0.7
 """Points that have arrived are put aside once they are more than the rest of this part."""
 
 
+@dataclass(frozen=True)
+class Approached:
+    """Points (n,) near their equilibrium: where not `arrived`, the rest means nothing."""
+
+    log_y: Floats  # (r, n) of the components
+    log_total: Floats  # (n,)
+    condition: Floats  # (n,) largest diagonal of the Hessian beside the component itself
+    arrived: NDArray[np.bool_]
+
+
 def deciding_species(components: Components, log_x: Floats) -> Indices:
     """Positions of the species that matter in any of the compositions ln x (k, s), components among them."""
-    C = components.C
     highest = log_x.max(axis=1, keepdims=True)
-    squares = np.abs(C) * np.exp(log_x - highest)[:, None, :]
-    squares *= np.abs(C)
+    squares = components.C**2 * np.exp(log_x - highest)[:, None, :]
     share = squares / squares.sum(axis=2, keepdims=True)
     decide = (share >= MINOR).any(axis=(0, 1))
     decide[components.columns] = True
@@ -42,53 +62,88 @@ def deciding_species(components: Components, log_x: Floats) -> Indices:
 
 
 def approach(
-    feed: Feed, species: Indices, standard: Floats, log_pressure: Floats, log_y: Floats, log_total: Floats
-) -> tuple[Floats, Floats, NDArray[np.bool_]]:
+    components: Components,
+    species: Indices,
+    offsets: Floats,
+    log_pressure: Floats,
+    m: Floats,
+    log_y: Floats,
+    log_total: Floats,
+    kind: type[np.floating[Any]],
+    most_steps: int,
+) -> Approached:
     """Take Newton steps with some of the species until they are short.
 
     Parameters
     ----------
     species : positions (q,) of those that count.
-    standard : (q, n) Delta of these species.
+    offsets : (q, n) Delta of these species.
     log_pressure : (n,) ln(p / p0).
-    log_y, log_total : (r, n), (n,) estimates of ln y of the components and of ln(N / mol); overwritten.
-
-    Returns
-    -------
-    log_y, log_total, and whether each point arrived (n,).
+    m : (r, n) mol of the components.
+    log_y, log_total : (r, n), (n,) estimates of ln y of the components and of ln(N / mol).
+    kind : of the numbers to calculate with.
+    most_steps : after which the points that have not arrived are given up.
     """
-    to_exponents = np.ascontiguousarray(feed.to_exponents[species])
-    to_sums = np.ascontiguousarray(feed.to_all_sums[:, species])
-    m = feed.m
-    place = np.arange(len(log_total))
-    arrived = np.zeros(len(log_total), dtype=bool)
-    level = np.concatenate([log_y + log_pressure, log_pressure[None]])
-    here_y, here_total = log_y, log_total
-    room = np.empty_like(standard)
+    n = len(log_total)
+    out = Approached(np.empty(log_y.shape), np.empty(n), np.empty(n), np.zeros(n, dtype=bool))
+    to_change = components.C[:, species].T.astype(kind)
+    to_exponents = np.column_stack([to_change, -np.ones(len(species), kind)])
+    to_sums = components.sums[species].T.astype(kind)
+    # a total of 1 mol keeps the numbers within reach of single precision
+    target = (m * np.exp(-log_total)).astype(kind)
+    offsets, lnp = offsets.astype(kind), log_pressure.astype(kind)
+    here_y, here_total = log_y.astype(kind), np.zeros(n, kind)
+    level = np.concatenate([here_y + lnp, lnp[None]])
+    place = np.arange(n)
     with np.errstate(all="ignore"):  # points that go wrong do not arrive
-        for k in range(MOST_STEPS):
-            if DEBUG: print(len(place), end=' ')
-            np.matmul(to_exponents, level, out=room)
-            room -= standard
-            np.exp(room, out=room)
-            step = NewtonStep.of(to_sums @ room, m * np.exp(-here_total), here_y)
-            reach = np.abs(step.log_y).max(axis=0)
-            length = np.minimum(1.0, LONGEST / reach)
-            step.log_y *= length
-            here_y += step.log_y
-            level[:-1] += step.log_y
-            here_total += length * np.log(step.total_ratio)
-            is_open = ~(reach < NEAR) & (step.total_ratio > 0.0)
+        for _ in range(most_steps):
+            y = to_exponents @ level
+            y -= offsets
+            np.exp(y, out=y)
+            change, ratio, condition = _newton_step(to_sums @ y, target * np.exp(-here_total), here_y)
+            reach = np.abs(change).max(axis=0)
+            change *= _length(to_change @ change)
+            here_y += change
+            level[:-1] += change
+            here_total += np.log(ratio)
+            possible = ratio > 0.0
+            is_open = ~(reach < NEAR) & possible
             count = np.count_nonzero(is_open)
             if count > STILL_OPEN * len(place):
                 continue
-            log_y[:, place], log_total[place] = here_y, here_total
-            arrived[place] = (reach < NEAR) & (step.total_ratio > 0.0)
+            out.log_y[:, place], out.log_total[place] = here_y, here_total
+            out.condition[place] = condition
+            out.arrived[place] = (reach < NEAR) & possible
             if not count:
                 break
             left = np.flatnonzero(is_open)
-            place = place[left]
+            place, target, offsets = place[left], target[:, left], offsets[:, left]
             level, here_y, here_total = level[:, left], here_y[:, left], here_total[left]
-            standard, m = standard[:, left], m[:, left]
-            room = np.empty_like(standard)
-    return log_y, log_total, arrived
+    out.log_total[:] += log_total
+    return out
+
+
+def _newton_step(sums: Reals, target: Reals, log_y: Reals) -> tuple[Reals, Reals, Reals]:
+    """Change of ln y (r, n), factor of N and condition (n,), as of NewtonStep."""
+    r, n = log_y.shape
+    if not are_few(n, r):
+        step = NewtonStep.of(sums, target, log_y)
+        return step.log_y, step.total_ratio, step.condition
+    total, balance, packed = sums[0], sums[1 : 1 + r], sums[1 + r :]
+    condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
+    try:
+        to_target, to_balance = solve_packed(packed, target, balance)
+    except np.linalg.LinAlgError:  # of a point that goes wrong
+        lost = np.full(n, np.nan, log_y.dtype)
+        return np.zeros_like(log_y), lost, lost
+    ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / (balance * to_balance).sum(axis=0)
+    return to_target / ratio - to_balance, ratio, condition
+
+
+def _length(change: Reals) -> Reals:
+    """(n,) part of a step to take, whose whole would change ln y by (q, n)."""
+    rise = np.maximum(change.max(axis=0), SMALLEST_RISE)
+    fall = change.min(axis=0)
+    extended = np.where(fall < FALLING, np.clip(1.0 / rise, 1.0, LONGEST_EXTENSION), 1.0)
+    length = np.where(rise > BOLD, np.log1p(rise / BOLD) * (BOLD / rise), extended)
+    return np.asarray(np.minimum(length, DEEPEST / np.minimum(fall, FALLING)).astype(change.dtype))

@@ -14,6 +14,7 @@ All arrays of a chunk fit in the cache of a core; each line below is one pass ov
 from __future__ import annotations
 
 import threading
+from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Protocol
@@ -155,7 +156,8 @@ class Scattered:
         return self.gibbs_RT[components.columns] + self.log_pressures
 
     def largest_potential(self) -> Floats:
-        return np.asarray(np.abs(self.gibbs_RT).max(axis=0) + np.abs(self.log_pressures))
+        largest = np.maximum(self.gibbs_RT.max(axis=0), -self.gibbs_RT.min(axis=0))
+        return np.asarray(largest + np.abs(self.log_pressures))
 
 
 @dataclass
@@ -172,19 +174,21 @@ class Polished:
     log_total: Floats  # (n,)
     first_reach: Floats  # (n,) largest change of any ln y by the last step with a Hessian of its own
     second_reach: Floats  # (n,) the same of the step that reuses it
-    usable: NDArray[np.bool_]  # (n,) whether the steps could be taken
+    stepped: NDArray[np.bool_]  # (n,) whether the steps could be taken
+    usable: NDArray[np.bool_]  # (n,) whether they were as short as they had to be
     steps: int
 
 
 _work_space = threading.local()
 
 
-def _scratch(species: int, points: int) -> list[Floats]:
+def _scratch(species: int, points: int) -> Iterator[Floats]:
     """Three arrays (species, points) that a thread keeps: fresh memory would cost more than the arithmetic."""
-    kept: list[Floats] = getattr(_work_space, "arrays", [])
-    if not kept or kept[0].shape != (species, points):
-        kept = _work_space.arrays = [np.empty((species, points)) for _ in range(3)]
-    return kept
+    size = species * points
+    kept: Floats | None = getattr(_work_space, "numbers", None)
+    if kept is None or kept.shape[1] < size:
+        kept = _work_space.numbers = np.empty((3, size))
+    return (row[:size].reshape(species, points) for row in kept)
 
 
 @dataclass
@@ -248,7 +252,7 @@ def polish(
     # ln y_j = sum_i C_ij (ln y_i + ln p) - Delta_j - ln p
     np.matmul(feed.to_exponents, np.concatenate([log_y + lnp, lnp[None, :]]), out=exponents)
     exponents.reshape(len(exponents), standard.shape[1], -1)[...] -= standard
-    usable = np.ones(len(lnp), dtype=bool)
+    stepped = np.ones(len(lnp), dtype=bool)
     steps = 0
     with np.errstate(all="ignore"):  # what goes wrong in a point shows in `usable`
         while True:
@@ -256,22 +260,22 @@ def polish(
             step = NewtonStep.of(feed.to_all_sums @ y, m * np.exp(-log_total), log_y)
             first, ratio = step.log_y, step.total_ratio
             reach = np.maximum(feed.components.largest @ np.abs(first), np.abs(ratio - 1.0))
-            usable &= (step.condition < ILL_CONDITIONED) & (ratio > 0.0)
-            if not usable.all():
-                first[:, ~usable], ratio[~usable] = 0.0, 1.0
+            stepped &= (step.condition < ILL_CONDITIONED) & (ratio > 0.0)
+            if not stepped.all():
+                first[:, ~stepped], ratio[~stepped] = 0.0, 1.0
             length = np.minimum(1.0, longest / np.abs(first).max(axis=0))
             first *= length
             log_total = log_total + length * np.log(ratio)
             log_y = log_y + first
             exponents += np.matmul(feed.to_change, first, out=growth)
             steps += 1
-            unsettled = np.count_nonzero(usable & (reach >= settled))
+            unsettled = np.count_nonzero(stepped & (reach >= settled))
             if steps == most_steps or unsettled <= stragglers * len(lnp):
                 break
         np.exp(exponents, out=y)
         second, change = step.repeated(feed.to_balances[: 1 + r] @ y, m * np.exp(-log_total))
         second_reach = feed.components.largest @ np.abs(second) + np.abs(change)
-        usable &= (reach < settled) & (second_reach < settled)
+        usable = stepped & (reach < settled) & (second_reach < settled)
         if not usable.all():
             second[:, ~usable], change[~usable] = 0.0, 0.0
         np.matmul(feed.to_change, second, out=growth)
@@ -279,7 +283,7 @@ def polish(
         growth += 1.0
         y *= growth
     log_total += np.log1p(change)
-    return Polished(feed, y, exponents, log_y + second, log_total, reach, second_reach, usable, steps + 1)
+    return Polished(feed, y, exponents, log_y + second, log_total, reach, second_reach, stepped, usable, steps + 1)
 
 
 @dataclass

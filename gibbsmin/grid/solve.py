@@ -17,9 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 from threadpoolctl import ThreadpoolController
 
+from gibbsmin.broadcasting import unbuffered
 from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
 from gibbsmin.grid.phase_map import phase_tasks
-from gibbsmin.grid.scattered import Cloud, left_over, take_sample, tasks
+from gibbsmin.grid.scattered import ROUNDS, Cloud, left_over, take_sample, tasks
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 
@@ -170,10 +171,12 @@ def solve_points(
     )
     out = GridSolution.blank((len(feed_index),), *formula_matrix.shape)
     with _workers(threads, len(feed_index)) as pool:
-        sample = take_sample(cloud)
         rest = np.arange(len(feed_index))
-        if sample is not None:
-            _run(pool, tasks(cloud, sample, out), progress)
+        for _ in range(ROUNDS):
+            sample = take_sample(cloud, rest)
+            if sample is None:
+                break
+            _run(pool, tasks(cloud, sample, rest, out), progress)
             rest = left_over(out)
         _run(pool, _from_nothing(cloud, rest, out), progress)
     return out
@@ -212,10 +215,14 @@ def _workers(threads: int | None, points: int) -> Iterator[ThreadPoolExecutor | 
 def _run(
     pool: ThreadPoolExecutor | None, work: Iterable[Callable[[], int]], progress: Progress | None
 ) -> None:
-    done = (task() for task in work) if pool is None else pool.map(lambda task: task(), work)
-    for count in done:
+    for count in map(_done, work) if pool is None else pool.map(_done, work):
         if progress is not None:
             progress(count)
+
+
+def _done(task: Callable[[], int]) -> int:
+    with unbuffered():
+        return task()
 
 
 def available_cores() -> int:

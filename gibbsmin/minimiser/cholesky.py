@@ -20,8 +20,8 @@ from numpy.typing import NDArray
 
 from gibbsmin.minimiser.components import Floats, Indices
 
-FEW = 12
-"""Below this many systems the library's solver costs less than the loop."""
+FEW = 4
+"""Below this many systems for each entry of a matrix the library's solver costs less than the loop."""
 
 Reals = NDArray[np.floating[Any]]
 """Doubles or single-precision numbers; results are of the same kind."""
@@ -85,17 +85,22 @@ def product(first: Sequence[Reals], second: Sequence[Reals]) -> Reals:
     return total
 
 
-def solve_packed(packed: Floats, first: Floats, second: Floats) -> tuple[Floats, Floats]:
+def are_few(systems: int, width: int) -> bool:
+    """Whether the library's solver is the quicker one for systems (r, r), r = `width`."""
+    return systems < FEW * width**2
+
+
+def solve_packed(packed: Reals, first: Reals, second: Reals) -> tuple[Reals, Reals]:
     """Solve H x = first and H x = second.
 
     Parameters: packed (r (r + 1) / 2, n), lower triangles row by row; first, second (r, n).
     """
     r, n = first.shape
-    if n >= FEW:
+    if not are_few(n, r):
         factors = Factors.of_packed(packed)
         return factors.solve(first), factors.solve(second)
     scale = 1.0 / np.sqrt(diagonal(packed))
-    matrix = np.empty((r, r, n))
+    matrix = np.empty((r, r, n), packed.dtype)
     rows, columns = _lower_triangle(r)
     matrix[rows, columns] = packed
     matrix[columns, rows] = packed

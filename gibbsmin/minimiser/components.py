@@ -133,6 +133,11 @@ class Components:
         out: Floats = m * self.system.scale[self.columns] / float(self._determinant)
         return out
 
+    def rough_amounts(self, element_amounts: Amounts) -> Floats:
+        """m = B^-1 b (r, n) of element amounts (r, n) without that care: sums that cancel are off by their rounding."""
+        to_m = self._float_adjugate * (self.system.scale[self.columns] / float(self._determinant))[:, None]
+        return np.asarray(to_m @ element_amounts.astype(np.float64))
+
     def _amounts_with_care(self, b: Amounts, m: Floats, doubtful: NDArray[np.bool_]) -> Floats:
         points, positions = np.nonzero(doubtful)
         if b.dtype != object and self._exact_weights:
