@@ -115,7 +115,7 @@ def test_most_points_of_a_map_take_the_short_way() -> None:
 def small_chunks(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(gibbsmin.grid.map, "CHUNK", 97)
     monkeypatch.setattr(gibbsmin.grid.map, "PRESSURES", 13)
-    monkeypatch.setattr(gibbsmin.grid.scattered, "CHUNK", 97)
+    monkeypatch.setattr(gibbsmin.grid.scattered, "BLOCK", 97)
 
 
 def test_chunks_do_not_matter(small_chunks: None, request: pytest.FixtureRequest) -> None:
@@ -173,6 +173,76 @@ def test_scattered_points_agree_with_single_points() -> None:
     single = minimise(REFORMING.A, b, REFORMING.g[at_T] + log_p[:, None])
     assert (solved.status == Status.SOLVED).all()
     assert (solved.gap <= 1e-10 * b.sum(axis=1)).all()
+    np.testing.assert_allclose(solved.amounts, single.amounts, rtol=1e-12)
+
+
+def test_blocks_of_scattered_points_do_not_matter(small_chunks: None, request: pytest.FixtureRequest) -> None:
+    b, log_p, feed, at_T, at_p = scattered_problem(1000, 12)
+    chopped = solve_points(REFORMING.A, b, REFORMING.g, REFORMING.T, log_p, feed, at_T, at_p)
+    request.getfixturevalue("monkeypatch").undo()
+    whole = solve_points(REFORMING.A, b, REFORMING.g, REFORMING.T, log_p, feed, at_T, at_p)
+    np.testing.assert_allclose(chopped.amounts, whole.amounts, rtol=1e-12)
+
+
+def test_threads_do_not_matter_for_scattered_points(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(gibbsmin.grid.scattered, "BLOCK", 300)
+    b, log_p, feed, at_T, at_p = scattered_problem(2000, 13)
+    one, three = (
+        solve_points(REFORMING.A, b, REFORMING.g, REFORMING.T, log_p, feed, at_T, at_p, threads=threads)
+        for threads in (1, 3)
+    )
+    np.testing.assert_array_equal(one.amounts, three.amounts)
+
+
+def test_progress_counts_every_scattered_point_once() -> None:
+    b, log_p, feed, at_T, at_p = scattered_problem(2000, 14)
+    b[::7] = REFORMING.A[:, 0]  # nothing but methane: of another kind than the others
+    seen: list[int] = []
+    solve_points(REFORMING.A, b, REFORMING.g, REFORMING.T, log_p, feed, at_T, at_p, progress=seen.append)
+    assert sum(seen) == 2000
+
+
+CLOUDS: dict[str, tuple[list[str], float, float]] = {
+    "nitrogen and oxygen": (["N", "O"], 300.0, 6000.0),
+    "hydrocarbons": (["C", "H"], 300.0, 3000.0),
+    "halogens": (["H", "Cl", "F"], 400.0, 5000.0),
+    "deposition": (["Si", "H", "Cl", "Ar"], 700.0, 2500.0),
+    "sulphur": (["C", "H", "N", "O", "S"], 400.0, 2000.0),
+}
+
+
+@pytest.mark.parametrize("name", CLOUDS)
+def test_scattered_points_of_any_elements_agree_with_single_points(name: str) -> None:
+    """Feeds over four decades of every element, wide ranges of temperature and pressure: neighbours are far."""
+    elements, low, high = CLOUDS[name]
+    gases = standard_library().gases(elements, largest_carbon_number=3)
+    table = ThermoTable([each for each in gases if each.lower <= low and each.upper >= high])
+    rng = np.random.default_rng(15)
+    count = 1500
+    T = rng.uniform(low, high, count)
+    log_p = rng.uniform(np.log(1e-3), np.log(100.0), count)
+    b = 10.0 ** rng.uniform(-4, 0, (count, len(table.elements)))
+    g, A, at = table.gibbs_RT(T), table.formula_matrix, np.arange(count)
+    solved = solve_points(A, b, g, T, log_p, at, at, at)
+    single = minimise(A, b, g + log_p[:, None])
+    assert (solved.status == Status.SOLVED).all()
+    visible = single.amounts > 1e-290
+    difference = np.abs(solved.amounts / np.where(visible, single.amounts, 1.0) - 1.0)[visible]
+    assert difference.max() < 1e-12 * max(1.0, np.abs(g).max() / 100)  # potentials of 1000 round to 1e-13
+
+
+def test_species_that_only_some_feeds_exclude_are_not_left_out_of_the_others() -> None:
+    """CO, CO2 and O2: as much carbon as oxygen leaves nothing but CO, more oxygen brings in all three."""
+    A = np.array([[1.0, 1.0, 0.0], [1.0, 2.0, 2.0]])
+    rng = np.random.default_rng(16)
+    count = 400
+    b = np.ones((count, 2))
+    b[::50, 1] = rng.uniform(1.1, 3.0, count // 50)
+    g = rng.uniform(-5.0, 5.0, (count, 3))
+    at = np.arange(count)
+    solved = solve_points(A, b, g, np.linspace(500.0, 900.0, count), np.zeros(count), at, at, at)
+    single = minimise(A, b, g)
+    assert (single.amounts[::50] > 0.0).all()
     np.testing.assert_allclose(solved.amounts, single.amounts, rtol=1e-12)
 
 

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.grid.nodes import Floats, Indices
-from gibbsmin.grid.polish import NewtonStep
+from gibbsmin.grid.polish import TOTAL_CHANGE, NewtonStep
 from gibbsmin.minimiser.cholesky import Reals, are_few, diagonal, solve_packed
 from gibbsmin.minimiser.components import Components
 
@@ -48,6 +48,7 @@ class Approached:
     log_y: Floats  # (r, n) of the components
     log_total: Floats  # (n,)
     condition: Floats  # (n,) largest diagonal of the Hessian beside the component itself
+    steps: NDArray[np.int32]  # (n,)
     arrived: NDArray[np.bool_]
 
 
@@ -85,7 +86,9 @@ def approach(
     most_steps : after which the points that have not arrived are given up.
     """
     n = len(log_total)
-    out = Approached(np.empty(log_y.shape), np.empty(n), np.empty(n), np.zeros(n, dtype=bool))
+    out = Approached(
+        np.empty(log_y.shape), np.empty(n), np.empty(n), np.empty(n, np.int32), np.zeros(n, dtype=bool)
+    )
     to_change = components.C[:, species].T.astype(kind)
     to_exponents = np.column_stack([to_change, -np.ones(len(species), kind)])
     to_sums = components.sums[species].T.astype(kind)
@@ -96,7 +99,7 @@ def approach(
     level = np.concatenate([here_y + lnp, lnp[None]])
     place = np.arange(n)
     with np.errstate(all="ignore"):  # points that go wrong do not arrive
-        for _ in range(most_steps):
+        for taken in range(1, most_steps + 1):
             y = to_exponents @ level
             y -= offsets
             np.exp(y, out=y)
@@ -106,14 +109,13 @@ def approach(
             here_y += change
             level[:-1] += change
             here_total += np.log(ratio)
-            possible = ratio > 0.0
-            is_open = ~(reach < NEAR) & possible
+            is_open = reach >= NEAR  # nor is a point that went wrong: NaN
             count = np.count_nonzero(is_open)
             if count > STILL_OPEN * len(place):
                 continue
             out.log_y[:, place], out.log_total[place] = here_y, here_total
-            out.condition[place] = condition
-            out.arrived[place] = (reach < NEAR) & possible
+            out.condition[place], out.steps[place] = condition, taken
+            out.arrived[place] = reach < NEAR
             if not count:
                 break
             left = np.flatnonzero(is_open)
@@ -137,6 +139,7 @@ def _newton_step(sums: Reals, target: Reals, log_y: Reals) -> tuple[Reals, Reals
         lost = np.full(n, np.nan, log_y.dtype)
         return np.zeros_like(log_y), lost, lost
     ratio = ((balance * to_target).sum(axis=0) - 1.0 + total) / (balance * to_balance).sum(axis=0)
+    ratio = np.clip(ratio, 1.0 / TOTAL_CHANGE, TOTAL_CHANGE)
     return to_target / ratio - to_balance, ratio, condition
 
 

@@ -10,7 +10,7 @@ from itertools import pairwise
 import numpy as np
 
 from gibbsmin.grid.nodes import SPACING_LN_P, SPACING_LN_T, Axis, Floats, choose_nodes
-from gibbsmin.grid.polish import SETTLED, Feed, Rectangle, polish, prove
+from gibbsmin.grid.polish import SETTLED, STEPS, Feed, Rectangle, polish, prove
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Amounts, Components
@@ -135,7 +135,7 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis, beside
         rows, lnp = g[tile.temperatures], p_axis.node_positions[tile.pressures]
         points = Rectangle(rows, lnp)
         feed = coarse.feed(tile.components)
-        done = polish(feed, points, log_y, total, longest=NODE_REACH, settled=NODE_REACH)
+        done = polish(feed, points, log_y, total, NODE_REACH)
         size = (len(rows), len(lnp))
         at = (tile.temperatures, tile.pressures)
         log_x[at] = done.log_x.T.reshape(*size, -1)
@@ -209,7 +209,7 @@ def solve_tile(nodes: Nodes, tile: Tile, gibbs_RT: Floats, log_pressure: Floats,
     lnp = log_pressure[tile.pressures]
     log_y, log_total = estimate(nodes, tile)
     points = Rectangle(g, lnp)
-    polished = polish(nodes.feed(tile.components), points, log_y, log_total, longest=SETTLED, settled=SETTLED)
+    polished = polish(nodes.feed(tile.components), points, log_y, log_total, SETTLED)
     proved = prove(polished, points)
     shape = (len(g), len(lnp))
     at = (tile.temperatures, tile.pressures)
@@ -223,7 +223,7 @@ def solve_tile(nodes: Nodes, tile: Tile, gibbs_RT: Floats, log_pressure: Floats,
     )
     out.gap[at] = proved.gap.reshape(shape)
     out.balance_residual[at] = proved.balance_residual.reshape(shape)
-    out.iterations[at] = polished.steps
+    out.iterations[at] = STEPS
     out.status[at] = Status.SOLVED
     left = np.flatnonzero(~proved.good)
     if left.size:

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from gibbsmin.grid.map import Nodes, Tile, components_at, estimate, is_dense, rectangles, solve_nodes
 from gibbsmin.grid.nodes import Axis, Floats, Indices
-from gibbsmin.grid.polish import LAST_ERROR, ROUNDING, SETTLED, TINY, Polished, Rectangle, polish
+from gibbsmin.grid.polish import LAST_ERROR, ROUNDING, SETTLED, STEPS, TINY, Polished, Rectangle, polish
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.certificate import shift_weight
@@ -235,7 +235,7 @@ def _take_valid(
     points = Rectangle(problem.potentials(g)[:, nodes.posed.kept], lnp)
     log_y, log_total = estimate(nodes, own_tile)
     feed = nodes.feed(own_tile.components)
-    polished = polish(feed, points, log_y, log_total, longest=SETTLED, settled=SETTLED)
+    polished = polish(feed, points, log_y, log_total, SETTLED)
     potentials = np.empty((len(problem.components.columns), len(log_total)))
     potentials[problem.phase_rows] = np.repeat(g[:, each.phases].T, len(lnp), axis=1)
     with np.errstate(all="ignore"):  # points that are not usable may hold anything
@@ -268,7 +268,7 @@ def _take_valid(
     np.copyto(by_element, pi.reshape(-1, *shape), where=mask)
     np.copyto(out.gap[at], gap.reshape(shape), where=mask)
     np.copyto(out.balance_residual[at], residual.reshape(shape), where=mask)
-    np.copyto(out.iterations[at], polished.steps, where=mask)
+    np.copyto(out.iterations[at], STEPS, where=mask)
     np.copyto(out.status[at], np.int8(Status.SOLVED), where=mask)
 
 

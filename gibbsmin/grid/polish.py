@@ -39,6 +39,9 @@ LAST_ERROR = 1e-13
 ILL_CONDITIONED = 1e5
 """A diagonal of the Hessian above this multiple of the component itself: other components are called for."""
 
+TOTAL_CHANGE = 10.0
+"""Largest factor by which one step changes N."""
+
 TINY = 1e-290
 """Turnover below this is beyond what a double resolves."""
 
@@ -102,8 +105,12 @@ class Feed:
 class Points(Protocol):
     """Points (n,) whose species have potentials c = g / RT + ln p."""
 
-    def offsets(self, components: Components) -> tuple[Floats, Floats]:
-        """Delta of the standard potentials: an array (s, m, 1) or (s, 1, n) for n = m * k points, and ln p (n,)."""
+    @property
+    def log_pressures(self) -> Floats:
+        """(n,) ln(p / p0)."""
+
+    def exponents(self, feed: Feed, log_y: Floats, out: Floats) -> None:
+        """Set `out` (s, n) to ln y_j = sum_i C_ij (ln y_i + ln p) - Delta_j - ln p."""
 
     def potentials(self, components: Components) -> Floats:
         """(r, n) potentials of the components."""
@@ -126,9 +133,11 @@ class Rectangle:
     def log_pressures(self) -> Floats:
         return np.tile(self.log_pressure, len(self.gibbs_RT))
 
-    def offsets(self, components: Components) -> tuple[Floats, Floats]:
-        standard = np.ascontiguousarray(components.offsets(self.gibbs_RT).T)
-        return standard[:, :, None], self.log_pressures
+    def exponents(self, feed: Feed, log_y: Floats, out: Floats) -> None:
+        lnp = self.log_pressures
+        np.matmul(feed.to_exponents, np.concatenate([log_y + lnp, lnp[None]]), out=out)
+        standard = np.ascontiguousarray(feed.components.offsets(self.gibbs_RT).T)
+        out.reshape(len(out), len(self.gibbs_RT), -1)[...] -= standard[:, :, None]
 
     def potentials(self, components: Components) -> Floats:
         standard = self.gibbs_RT[:, components.columns].T
@@ -147,10 +156,12 @@ class Scattered:
     gibbs_RT: Floats  # noqa: N815 - the field's own symbol
     log_pressures: Floats
 
-    def offsets(self, components: Components) -> tuple[Floats, Floats]:
-        standard = self.gibbs_RT - components.C.T @ self.gibbs_RT[components.columns]
-        standard[components.columns] = 0.0
-        return standard[:, None, :], self.log_pressures
+    def exponents(self, feed: Feed, log_y: Floats, out: Floats) -> None:
+        lnp = self.log_pressures
+        own = feed.components.columns
+        np.matmul(feed.to_exponents, np.concatenate([log_y + lnp + self.gibbs_RT[own], lnp[None]]), out=out)
+        out -= self.gibbs_RT
+        out[own] = log_y
 
     def potentials(self, components: Components) -> Floats:
         return self.gibbs_RT[components.columns] + self.log_pressures
@@ -176,7 +187,6 @@ class Polished:
     second_reach: Floats  # (n,) the same of the step that reuses it
     stepped: NDArray[np.bool_]  # (n,) whether the steps could be taken
     usable: NDArray[np.bool_]  # (n,) whether they were as short as they had to be
-    steps: int
 
 
 _work_space = threading.local()
@@ -213,6 +223,7 @@ class NewtonStep:
         balance = factors.forward(sums[1 : 1 + r])
         by_balance = product(balance, balance)
         ratio = (product(balance, wanted) - 1.0 + total) / by_balance
+        ratio = np.clip(ratio, 1.0 / TOTAL_CHANGE, TOTAL_CHANGE)
         change = factors.backward([want / ratio - have for want, have in zip(wanted, balance, strict=True)])
         return cls(change, ratio, condition, factors, balance, by_balance)
 
@@ -224,54 +235,35 @@ class NewtonStep:
         return self.factors.backward(parts), change
 
 
-def polish(
-    feed: Feed,
-    points: Points,
-    log_y: Floats,
-    log_total: Floats,
-    *,
-    longest: float,
-    settled: float,
-    most_steps: int = 1,
-    stragglers: float = 0.0,
-) -> Polished:
-    """Take Newton steps until all of them are short, then one more that reuses the last Hessian.
+STEPS = 2
+"""Steps that polishing takes."""
+
+
+def polish(feed: Feed, points: Points, log_y: Floats, log_total: Floats, settled: float) -> Polished:
+    """Take a Newton step, and one more that reuses its Hessian.
 
     Parameters
     ----------
     log_y, log_total : (r, n), (n,) estimates of ln y of the components and of ln(N / mol).
-    longest : largest change of ln y of a component that a step may bring; longer steps are shortened to it.
-    settled : change of any ln y in one step below which no further Hessian is formed.
-    most_steps : Hessians at the most; a point whose last step was not settled is not usable.
-    stragglers : part of the points that is not waited for.
+    settled : change of any ln y by a step beyond which a point is not usable; the first step is shortened to it.
     """
     m = feed.m
     r = len(m)
-    standard, lnp = points.offsets(feed.components)
-    exponents, y, growth = _scratch(len(feed.to_change), len(lnp))
-    # ln y_j = sum_i C_ij (ln y_i + ln p) - Delta_j - ln p
-    np.matmul(feed.to_exponents, np.concatenate([log_y + lnp, lnp[None, :]]), out=exponents)
-    exponents.reshape(len(exponents), standard.shape[1], -1)[...] -= standard
-    stepped = np.ones(len(lnp), dtype=bool)
-    steps = 0
-    with np.errstate(all="ignore"):  # what goes wrong in a point shows in `usable`
-        while True:
-            np.exp(exponents, out=y)
-            step = NewtonStep.of(feed.to_all_sums @ y, m * np.exp(-log_total), log_y)
-            first, ratio = step.log_y, step.total_ratio
-            reach = np.maximum(feed.components.largest @ np.abs(first), np.abs(ratio - 1.0))
-            stepped &= (step.condition < ILL_CONDITIONED) & (ratio > 0.0)
-            if not stepped.all():
-                first[:, ~stepped], ratio[~stepped] = 0.0, 1.0
-            length = np.minimum(1.0, longest / np.abs(first).max(axis=0))
-            first *= length
-            log_total = log_total + length * np.log(ratio)
-            log_y = log_y + first
-            exponents += np.matmul(feed.to_change, first, out=growth)
-            steps += 1
-            unsettled = np.count_nonzero(stepped & (reach >= settled))
-            if steps == most_steps or unsettled <= stragglers * len(lnp):
-                break
+    exponents, y, growth = _scratch(len(feed.to_change), len(log_total))
+    points.exponents(feed, log_y, exponents)
+    with np.errstate(all="ignore"):  # what goes wrong in a point shows in `stepped` and `usable`
+        np.exp(exponents, out=y)
+        step = NewtonStep.of(feed.to_all_sums @ y, m * np.exp(-log_total), log_y)
+        first, ratio = step.log_y, step.total_ratio
+        reach = np.maximum(feed.components.largest @ np.abs(first), np.abs(ratio - 1.0))
+        stepped = (step.condition < ILL_CONDITIONED) & np.isfinite(reach)
+        if not stepped.all():
+            first[:, ~stepped], ratio[~stepped] = 0.0, 1.0
+        length = np.minimum(1.0, settled / np.abs(first).max(axis=0))
+        first *= length
+        log_total = log_total + length * np.log(ratio)
+        log_y = log_y + first
+        exponents += np.matmul(feed.to_change, first, out=growth)
         np.exp(exponents, out=y)
         second, change = step.repeated(feed.to_balances[: 1 + r] @ y, m * np.exp(-log_total))
         second_reach = feed.components.largest @ np.abs(second) + np.abs(change)
@@ -282,8 +274,8 @@ def polish(
         exponents += growth
         growth += 1.0
         y *= growth
-    log_total += np.log1p(change)
-    return Polished(feed, y, exponents, log_y + second, log_total, reach, second_reach, stepped, usable, steps + 1)
+        log_total += np.log1p(change)
+    return Polished(feed, y, exponents, log_y + second, log_total, reach, second_reach, stepped, usable)
 
 
 @dataclass

@@ -18,9 +18,10 @@ from numpy.typing import NDArray
 from threadpoolctl import ThreadpoolController
 
 from gibbsmin.broadcasting import unbuffered
+from gibbsmin.grid.cloud import Cloud
 from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
 from gibbsmin.grid.phase_map import phase_tasks
-from gibbsmin.grid.scattered import ROUNDS, Cloud, left_over, take_sample, tasks
+from gibbsmin.grid.scattered import ROUNDS, left_over, take_sample, tasks
 from gibbsmin.grid.solution import Floats, GridSolution
 from gibbsmin.minimiser import minimise
 

@@ -18,12 +18,12 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gibbsmin.minimiser.components import Floats, Indices
+from gibbsmin.minimiser.components import Indices
 
 FEW = 4
 """Below this many systems for each entry of a matrix the library's solver costs less than the loop."""
 
-Reals = NDArray[np.floating[Any]]
+Reals = NDArray[Any]
 """Doubles or single-precision numbers; results are of the same kind."""
 
 
