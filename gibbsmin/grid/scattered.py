@@ -58,27 +58,25 @@ def take_sample(cloud: Cloud, points: Indices) -> Sample | None:
         or cloud.condensed.any()
     ):
         return None
-    species = ~np.asarray((cloud.A[absent] > 0).any(axis=0))
     chosen = np.random.default_rng(0).permutation(points)[: SEEDS + NEAR_SEED]
     for seed in chosen[:SEEDS]:
-        sample = _seed(cloud, seed, present, species)
+        sample = _seed(cloud, seed, present)
         if sample is not None:
             return _widened(sample, cloud, chosen[SEEDS:])
     return None
 
 
-def _seed(
-    cloud: Cloud, point: np.intp, elements: NDArray[np.bool_], species: NDArray[np.bool_]
-) -> Sample | None:
-    """One solved point; None if its balance excludes species by more than the absence of elements.
+def _seed(cloud: Cloud, point: np.intp, elements: NDArray[np.bool_]) -> Sample | None:
+    """One solved point; None if the balances of its species depend on each other.
 
-    Other points may hold these; nor do dependent element rows serve, of which each feed would need its own choice.
+    Each feed would then need its own choice of balances. It is also the sign of a balance that excludes species beyond
+    those of absent elements, which other points may hold: what it leaves lies on a face of the cone of all mixtures.
     """
     at = np.array([point])
     b = cloud.b[cloud.feed[point]]
     found = minimise(cloud.A, b, cloud.potentials(at))
     log_x = found.log_mole_fractions[0]
-    if not (found.solved[0] and (np.isfinite(log_x) == species).all()):
+    if not found.solved[0]:
         return None
     posed = pose_like(cloud.A, b, log_x)
     if len(posed.system.rows) != elements.sum():
