@@ -114,7 +114,8 @@ class ThermoTable:
         Raises TemperatureRangeError outside the range of a gas unless the table extrapolates.
         """
         values = self._evaluate(T, _gibbs_basis, absent=np.inf)
-        values -= self._entropy_shift
+        if self._entropy_shift.any():
+            values -= self._entropy_shift
         return values
 
     def enthalpy_RT(self, T: ArrayLike) -> Array:  # noqa: N802
@@ -166,12 +167,19 @@ class ThermoTable:
     def _evaluate(self, T: ArrayLike, basis: Callable[[Array], tuple[Array, ...]], *, absent: float) -> Array:
         temperatures = _temperatures(T)
         self._check_range(temperatures)
-        by_species = np.empty((len(self.species), temperatures.size))
-        for segment, rows in self._grouped(temperatures):
-            by_species[:, rows] = segment.evaluate(temperatures[rows], basis, absent)
-        return by_species.T
+        groups = self._grouped(temperatures)
+        values = np.empty((len(self.species), temperatures.size))
+        first = 0
+        for segment, rows in groups:
+            segment.evaluate(temperatures[rows], basis, absent, values[:, first : first + rows.size])
+            first += rows.size
+        if len(groups) > 1:
+            back = np.argsort(np.concatenate([rows for _, rows in groups]))
+            for row in values:
+                row[...] = row.take(back)
+        return values.T
 
-    def _grouped(self, temperatures: Array) -> list[tuple[_Segment, slice | NDArray[np.intp]]]:
+    def _grouped(self, temperatures: Array) -> list[tuple[_Segment, NDArray[np.intp]]]:
         """The segments that the temperatures fall into, each with the rows of its temperatures.
 
         Segment 2k lies between limits k - 1 and k, segment 2k + 1 is limit k itself.
@@ -181,7 +189,7 @@ class ThermoTable:
         if numbers.size == 0:
             return []
         if (numbers == numbers[0]).all():
-            return [(self._segment(int(numbers[0])), slice(None))]
+            return [(self._segment(int(numbers[0])), np.arange(numbers.size))]
         order = np.argsort(numbers, kind="stable")
         cuts = np.flatnonzero(np.diff(numbers[order])) + 1
         return [(self._segment(int(numbers[rows[0]])), rows) for rows in np.split(order, cuts)]
@@ -221,9 +229,10 @@ class _Segment:
     coefficients: Array
     form: NDArray[np.intp]
 
-    def evaluate(self, T: Array, basis: Callable[[Array], tuple[Array, ...]], absent: float) -> Array:
-        """Values (S, nT): `absent` of species without a form."""
-        values = np.empty((len(self.form), T.size))
+    def evaluate(
+        self, T: Array, basis: Callable[[Array], tuple[Array, ...]], absent: float, values: Array
+    ) -> None:
+        """Set values (S, nT); `absent` of species without a form."""
         product = np.empty((len(self.form), min(T.size, _BLOCK)))
         with unbuffered():
             for first in range(0, T.size, _BLOCK):
@@ -234,7 +243,6 @@ class _Segment:
                 for term, coefficients in zip(terms[1:], self.coefficients[1:], strict=True):
                     part += np.multiply(coefficients[:, np.newaxis], term, out=room)
         values[self.form < 0] = absent
-        return values
 
 
 @dataclass(frozen=True)
