@@ -14,10 +14,11 @@ Source: component (basis) form of the balances: Smith & Missen, Chemical Reactio
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from fractions import Fraction
 from functools import cached_property, lru_cache
-from math import gcd, lcm, log
+from math import gcd, inf, lcm, log
+from operator import mul
 from typing import Any, Generic, TypeVar
 
 import numpy as np
@@ -53,11 +54,22 @@ LOST = 1e-20
 """Below this part even these are few: it is then summed exactly, and a zero found to be one."""
 
 
+FEW = 6
+"""So few points are mapped exactly in less time than the arrays take."""
+
 FEASIBLE_KEPT = 1024
 COMPONENTS_KEPT = 4096
 
 Key = TypeVar("Key")
 Value = TypeVar("Value")
+
+
+def quotient(numerator: int, denominator: int) -> float:
+    """The double nearest to a ratio; infinite beyond the largest."""
+    try:
+        return numerator / denominator
+    except OverflowError:
+        return inf if (numerator < 0) == (denominator < 0) else -inf
 
 
 def exact(value: Any) -> Fraction:
@@ -123,22 +135,33 @@ class Components:
         """
         if len(element_amounts) > 1 and (element_amounts == element_amounts[0]).all():
             return np.repeat(self.amounts(element_amounts[:1]), len(element_amounts), axis=0)
+        if len(element_amounts) <= FEW and np.isfinite(element_amounts.astype(np.float64)).all():
+            every = range(len(self.columns))
+            return np.array([self._rounded(b, every) for b in element_amounts.tolist()]).reshape(
+                len(element_amounts), -1
+            )
         weights = self._float_adjugate
         floats = element_amounts.astype(np.float64)
         m = floats @ weights.T
         size = np.abs(floats) @ np.abs(weights).T
         doubtful = (np.abs(m) < CANCELLATION * size) | ((size > 0.0) & (not self._exact_weights))
+        m *= self._factors
         if doubtful.any():
-            m = self._amounts_with_care(element_amounts, m, doubtful)
-        out: Floats = m * self.system.scale[self.columns] / float(self._determinant)
-        return out
+            self._mend(element_amounts, m, doubtful)
+        return m
 
     def rough_amounts(self, element_amounts: Amounts) -> Floats:
         """m = B^-1 b (r, n) of element amounts (r, n) without that care: sums that cancel are off by their rounding."""
-        to_m = self._float_adjugate * (self.system.scale[self.columns] / float(self._determinant))[:, None]
+        to_m = self._float_adjugate * self._factors[:, None]
         return np.asarray(to_m @ element_amounts.astype(np.float64))
 
-    def _amounts_with_care(self, b: Amounts, m: Floats, doubtful: NDArray[np.bool_]) -> Floats:
+    @cached_property
+    def _factors(self) -> Floats:
+        """(r,) scale over determinant, which turn adj(B) b into m."""
+        return np.asarray(self.system.scale[self.columns] / float(self._determinant))
+
+    def _mend(self, b: Amounts, m: Floats, doubtful: NDArray[np.bool_]) -> None:
+        """Replace the doubtful ones of amounts m (n, r) by accurate sums."""
         points, positions = np.nonzero(doubtful)
         if b.dtype != object and self._exact_weights:
             weights = self._float_adjugate[positions]
@@ -146,21 +169,25 @@ class Components:
             with np.errstate(over="ignore", invalid="ignore"):  # amounts near the largest double
                 accurate = dot(weights, terms)
                 enough = np.abs(accurate) >= LOST * (np.abs(weights) * np.abs(terms)).sum(axis=1)
-            m[points, positions] = accurate
+            m[points, positions] = accurate * self._factors[positions]
             lost = ~(enough & np.isfinite(accurate))
             points, positions = points[lost], positions[lost]
-        rows = self._adjugate.tolist()
         for point, component in zip(points, positions, strict=True):
-            sum_of_terms = sum(
-                (
-                    weight * exact(value)
-                    for weight, value in zip(rows[component], b[point], strict=True)
-                    if weight
-                ),
-                Fraction(0),
-            )
-            m[point, component] = float(sum_of_terms)
-        return m
+            (m[point, component],) = self._rounded(b[point].tolist(), [component])
+
+    def _rounded(self, b: Sequence[Any], positions: Iterable[int]) -> list[float]:
+        """Amounts m_i of some components for the finite element amounts b of one point, rounded once."""
+        ratios = [value.as_integer_ratio() for value in b]
+        common = lcm(*(denominator for _, denominator in ratios))
+        numbers = [numerator * (common // denominator) for numerator, denominator in ratios]
+        rows, scale = self._exact_rows
+        below = common * int(self._determinant)
+        return [quotient(sum(map(mul, rows[i], numbers)) * scale[i], below) for i in positions]
+
+    @cached_property
+    def _exact_rows(self) -> tuple[list[list[int]], list[int]]:
+        """Rows of the adjugate and the scales of the components, as integers of any size."""
+        return self._adjugate.tolist(), [int(factor) for factor in self.system.scale[self.columns]]
 
     def scaled_amounts(self, element_amounts: Amounts, positions: Indices) -> list[Fraction]:
         """adj(B) b of one point, exactly: the amounts of some components times determinant over scale."""
