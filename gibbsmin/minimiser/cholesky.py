@@ -95,25 +95,41 @@ def solve_packed(packed: Reals, first: Reals, second: Reals) -> tuple[Reals, Rea
 
     Parameters: packed (r (r + 1) / 2, n), lower triangles row by row; first, second (r, n).
     """
-    r, n = first.shape
-    if not are_few(n, r):
-        factors = Factors.of_packed(packed)
-        return factors.solve(first), factors.solve(second)
-    scale = 1.0 / np.sqrt(diagonal(packed))
-    matrix = np.empty((r, r, n), packed.dtype)
-    rows, columns = _lower_triangle(r)
-    matrix[rows, columns] = packed
-    matrix[columns, rows] = packed
-    matrix *= scale[:, None] * scale
-    right = np.stack([first, second], axis=1) * scale[:, None]
-    solution = np.linalg.solve(matrix.transpose(2, 0, 1), right.transpose(2, 0, 1)).transpose(1, 2, 0)
-    solution = solution * scale[:, None]
-    return solution[:, 0], solution[:, 1]
+    if are_few(first.shape[1], len(first)):
+        x, y = solve_few(packed.T, first.T, second.T)
+        return x.T, y.T
+    factors = Factors.of_packed(packed)
+    return factors.solve(first), factors.solve(second)
+
+
+def solve_few(packed: Reals, first: Reals, second: Reals) -> tuple[Reals, Reals]:
+    """The same by the library, with the systems first: packed (n, r (r + 1) / 2); first, second (n, r)."""
+    r = first.shape[1]
+    scale = 1.0 / np.sqrt(packed[:, diagonal_entries(r)])
+    matrix = packed[:, _square_entries(r)]
+    matrix *= scale[:, :, None]
+    matrix *= scale[:, None, :]
+    right = np.empty((*first.shape, 2), first.dtype)
+    right[:, :, 0] = first
+    right[:, :, 1] = second
+    right *= scale[:, :, None]
+    solution = np.linalg.solve(matrix, right)
+    solution *= scale[:, :, None]
+    return solution[:, :, 0], solution[:, :, 1]
 
 
 @cache
-def _lower_triangle(size: int) -> tuple[Indices, Indices]:
-    return np.tril_indices(size)
+def diagonal_entries(width: int) -> Indices:
+    """(r,) places of the diagonal in a packed lower triangle."""
+    return np.array([i * (i + 3) // 2 for i in range(width)], dtype=np.intp)
+
+
+@cache
+def _square_entries(width: int) -> Indices:
+    """(r, r) places of all entries of a symmetric matrix in its packed lower triangle."""
+    row, column = np.indices((width, width))
+    low, high = np.minimum(row, column), np.maximum(row, column)
+    return np.asarray(high * (high + 1) // 2 + low)
 
 
 def _width(entries: int) -> int:
@@ -123,4 +139,4 @@ def _width(entries: int) -> int:
 
 def diagonal(packed: Reals) -> Reals:
     """(r, n) diagonals of packed lower triangles (r (r + 1) / 2, n)."""
-    return packed[[i * (i + 3) // 2 for i in range(_width(len(packed)))]]
+    return packed[diagonal_entries(_width(len(packed)))]

@@ -172,7 +172,7 @@ class Components:
             m[points, positions] = accurate * self._factors[positions]
             lost = ~(enough & np.isfinite(accurate))
             points, positions = points[lost], positions[lost]
-        for point, component in zip(points, positions, strict=True):
+        for point, component in zip(points, positions.tolist(), strict=True):
             (m[point, component],) = self._rounded(b[point].tolist(), [component])
 
     def _rounded(self, b: Sequence[Any], positions: Iterable[int]) -> list[float]:

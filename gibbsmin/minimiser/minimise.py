@@ -16,9 +16,10 @@ from numpy.typing import ArrayLike, NDArray
 
 from gibbsmin.errors import ProblemError
 from gibbsmin.minimiser.components import Amounts, Floats, Indices, exact
+from gibbsmin.minimiser.grouping import alike
 from gibbsmin.minimiser.newton import Batch, minimise_batches
 from gibbsmin.minimiser.phases import settle
-from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, Answers, Posed, alike
+from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, Answers, Posed
 from gibbsmin.minimiser.result import Minimum, Status
 from gibbsmin.minimiser.start import StartGroup, estimates
 from gibbsmin.minimiser.vertex import UnboundedError, nearest_balanced
@@ -163,8 +164,8 @@ class _Problem:
 
     def solve_posed(self, posed: Posed, points: Indices) -> None:
         """Estimate all points; those whose balance excludes more species are posed anew without these."""
-        independent = self.b[np.ix_(points, posed.system.rows)]
-        costs = self.c[np.ix_(points, posed.kept)]
+        independent = self.b[points[:, None], posed.system.rows]
+        costs = self.c[points[:, None], posed.kept]
         starts, impossible = estimates(posed.system, independent, costs)
         for members in _same_amounts(self.b, points[impossible]):
             self.retry_nearest(posed, members)

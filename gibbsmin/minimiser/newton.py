@@ -36,8 +36,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from gibbsmin.minimiser.cholesky import solve_packed
+from gibbsmin.minimiser.cholesky import are_few, diagonal_entries, solve_few, solve_packed
 from gibbsmin.minimiser.components import LOG_EXCHANGE, Amounts, Components, Floats, Indices
+from gibbsmin.minimiser.grouping import alike
 
 STEP_TOLERANCE = 1e-8
 """A step below this (largest change of any ln y) is the last: convergence is quadratic, the error left is its square."""
@@ -79,6 +80,8 @@ EXPONENT_LIMIT = 300.0
 
 DEEP_TRACE = -600.0
 """Components below this ln y would underflow; their rows are then formed relative to the component itself."""
+
+NO_POINTS, NO_CHOICES = np.zeros(0, dtype=np.intp), np.zeros((0, 2), dtype=np.intp)
 
 SLOPE_NOISE = 1e-12
 """A balance closed to this part of its terms could be rounding and is no reason for a longer step."""
@@ -216,8 +219,8 @@ def _step(batch: Batch, sums: Sums, log_all: Floats) -> NDArray[np.bool_]:
     direction = to_target / ratio[:, None] - to_balance
     reach = np.abs(direction) @ batch.components.largest
     length = np.ones(len(reach))
-    far = np.flatnonzero(reach > -FALLING)
-    if far.size:
+    if reach.max() > -FALLING:
+        far = np.flatnonzero(reach > -FALLING)
         length[far], reach[far] = _long_steps(
             batch.components, log_all[far], sums.shift[far], target[far], direction[far]
         )
@@ -232,9 +235,9 @@ def _step(batch: Batch, sums: Sums, log_all: Floats) -> NDArray[np.bool_]:
 
 def _directions(batch: Batch, sums: Sums, target: Floats, log_all: Floats) -> tuple[Floats, Floats]:
     """H^-1 (m / N) and H^-1 C y."""
-    deep = (batch.log_y - sums.shift[:, None]).min(axis=1) < DEEP_TRACE
-    if not deep.any():
+    if batch.log_y.min() - sums.shift.max() >= DEEP_TRACE:
         return _solved(sums.packed, target, sums.balance)
+    deep = (batch.log_y - sums.shift[:, None]).min(axis=1) < DEEP_TRACE
     first, second = np.empty_like(target), np.empty_like(target)
     plain = ~deep
     if plain.any():
@@ -254,6 +257,8 @@ def _directions(batch: Batch, sums: Sums, target: Floats, log_all: Floats) -> tu
 
 
 def _solved(packed: Floats, first: Floats, second: Floats) -> tuple[Floats, Floats]:
+    if are_few(*first.shape):
+        return solve_few(packed, first, second)
     x, y = solve_packed(*(np.ascontiguousarray(array.T) for array in (packed, first, second)))
     return x.T, y.T
 
@@ -263,7 +268,7 @@ def _ratio_of_totals(batch: Batch, sums: Sums, to_target: Floats, to_balance: Fl
     by_target = np.einsum("ni,ni->n", sums.balance, to_target)
     by_balance = np.einsum("ni,ni->n", sums.balance, to_balance)
     ratio: Floats = (by_target - np.exp(-sums.shift) + sums.total) / by_balance
-    ratio = np.clip(ratio, 1.0 / TOTAL_CHANGE, TOTAL_CHANGE)
+    ratio = np.minimum(np.maximum(ratio, 1.0 / TOTAL_CHANGE), TOTAL_CHANGE)
     nested = batch.steps >= JOINT_STEPS
     if nested.any():
         index = np.flatnonzero(nested)
@@ -321,12 +326,12 @@ def _long_steps(
 def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Indices]:
     """Positions of points whose components should change, and for each (position of component, species)."""
     r = len(batch.components.columns)
-    diagonal = sums.packed[:, [i * (i + 3) // 2 for i in range(r)]]
     log_own = batch.log_y - sums.shift[:, None]
-    alarm = ((diagonal > EXCHANGE_ALARM * np.exp(log_own)) | (log_own < DEEP_TRACE)).any(axis=1)
-    index = np.flatnonzero(alarm)
-    if not index.size:
-        return index, np.zeros((0, 2), dtype=np.intp)
+    alarm = sums.packed[:, diagonal_entries(r)] > EXCHANGE_ALARM * np.exp(log_own)
+    alarm |= log_own < DEEP_TRACE
+    if not alarm.any():
+        return NO_POINTS, NO_CHOICES
+    index = np.flatnonzero(alarm.any(axis=1))
     log_squares = batch.components.log_squares
     best = np.full(len(index), LOG_EXCHANGE)
     choice = np.full((len(index), 2), -1, dtype=np.intp)
@@ -343,8 +348,7 @@ def _exchanges(batch: Batch, sums: Sums, log_all: Floats) -> tuple[Indices, Indi
 
 
 def _exchanged(batch: Batch, choices: Indices, log_all: Floats, b: Amounts, c: Floats) -> Iterator[Batch]:
-    for position, species in np.unique(choices, axis=0):
-        index = np.flatnonzero((choices == (position, species)).all(axis=1))
+    for (position, species), index in alike(choices, np.arange(len(choices))):
         components = batch.components.exchange(int(position), int(species))
         part = batch.take(index)
         yield Batch(

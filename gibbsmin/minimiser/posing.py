@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from gibbsmin.minimiser.certificate import optimality_gap
 from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices, formula_system
 from gibbsmin.minimiser.equilibria import Equilibria
+from gibbsmin.minimiser.grouping import alike
 from gibbsmin.minimiser.newton import STEP_LIMIT, Batch
 from gibbsmin.minimiser.result import Minimum, Status
 
@@ -175,7 +176,7 @@ class Posed:
     ) -> None:
         answers.amounts[at[chosen]] = 0.0
         answers.log_mole_fractions[at[chosen]] = -np.inf
-        places = np.ix_(at[chosen], self.kept)
+        places = at[chosen][:, None], self.kept
         answers.amounts[places] = amounts[chosen]
         answers.log_mole_fractions[places] = log_x[chosen]
         answers.element_potentials[at[chosen]] = pi[chosen]
@@ -184,19 +185,9 @@ class Posed:
         """(n, E) pi from a_i.pi of the components (n, r); NaN for absent elements, 0 for rows that depend on others."""
         pi = np.full((len(of_components), len(self.A)), np.nan)
         pi[:, self.A[:, self.kept].any(axis=1)] = 0.0
-        square = self.A[np.ix_(self.system.rows, self.kept[components.columns])]
+        square = self.A[self.system.rows[:, None], self.kept[components.columns]]
         pi[:, self.system.rows] = np.linalg.solve(square.T, of_components.T).T
         return pi
-
-
-def alike(patterns: NDArray[np.generic], points: Indices) -> list[tuple[Indices, Indices]]:
-    """Points grouped by equal rows of `patterns`: (row, points) pairs."""
-    if not len(points):
-        return []
-    if (patterns == patterns[0]).all():
-        return [(patterns[0], points)]
-    unique, which = np.unique(patterns, axis=0, return_inverse=True)
-    return [(pattern, points[which.ravel() == k]) for k, pattern in enumerate(unique)]
 
 
 def _consistent(system: FormulaSystem, b: Amounts) -> NDArray[np.bool_]:

@@ -18,6 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices
+from gibbsmin.minimiser.grouping import alike
 from gibbsmin.minimiser.vertex import PIVOT_SIZE, VertexGroup, optimal_vertices
 
 
@@ -62,15 +63,17 @@ def estimates(system: FormulaSystem, b: Amounts, c: Floats) -> tuple[list[StartG
 def _fill_degenerate(vertex: VertexGroup, log_y: Floats, excluded: NDArray[np.bool_]) -> None:
     """Replace the -inf of components with zero amount by the estimate of the next level, in place."""
     empty = np.isneginf(log_y)
-    for pattern in np.unique(empty[empty.any(axis=1)], axis=0):
-        members = np.flatnonzero((empty == pattern).all(axis=1))
+    if not empty.any():
+        return
+    any_empty = np.flatnonzero(empty.any(axis=1))
+    for pattern, members in alike(empty[any_empty], any_empty):
         rows = np.flatnonzero(pattern)
         C = vertex.components.C
         touched = np.flatnonzero((np.abs(C[rows]) > PIVOT_SIZE).any(axis=0))
-        full = np.flatnonzero(~pattern)
+        full = np.flatnonzero(pattern == 0)
         cost = (
-            vertex.reduced_costs[np.ix_(members, touched)]
-            - log_y[np.ix_(members, full)] @ C[np.ix_(full, touched)]
+            vertex.reduced_costs[members[:, None], touched]
+            - log_y[members[:, None], full] @ C[full[:, None], touched]
         )
         level = _trace_system(vertex.components, tuple(rows.tolist()), tuple(touched.tolist()))
         groups: list[VertexGroup] = []
@@ -79,8 +82,9 @@ def _fill_degenerate(vertex: VertexGroup, log_y: Floats, excluded: NDArray[np.bo
             ones = np.zeros((len(members), level.rank))
             ones[:, -1] = 1.0
             groups, impossible = optimal_vertices(level, ones, cost)
-        excluded[np.ix_(members[impossible], touched)] = True
-        log_y[np.ix_(members[impossible], rows)] = 0.0
+        if impossible.size:
+            excluded[members[impossible][:, None], touched] = True
+            log_y[members[impossible][:, None], rows] = 0.0
         for group in groups:
             with np.errstate(divide="ignore"):
                 log_z = np.log(group.amounts)
@@ -88,11 +92,12 @@ def _fill_degenerate(vertex: VertexGroup, log_y: Floats, excluded: NDArray[np.bo
             _fill_degenerate(group, log_z, left_out)
             chosen = touched[group.components.columns]
             points = members[group.points]
-            excluded[np.ix_(points, touched)] |= left_out
+            if left_out.any():
+                excluded[points[:, None], touched] |= left_out
             # C_D^T log_y_D - cost = log kappa + log_z for the species of this vertex; log kappa is the last unknown
-            square = np.vstack([C[np.ix_(rows, chosen)], -np.ones(len(chosen))])
+            square = np.vstack([C[rows[:, None], chosen], -np.ones(len(chosen))])
             known = cost[group.points][:, group.components.columns] + log_z
-            log_y[np.ix_(points, rows)] = np.linalg.solve(square.T, known.T).T[:, :-1]
+            log_y[points[:, None], rows] = np.linalg.solve(square.T, known.T).T[:, :-1]
 
 
 def _trace_system(components: Components, rows: tuple[int, ...], touched: tuple[int, ...]) -> FormulaSystem:

@@ -19,6 +19,7 @@ from typing import Any
 import numpy as np
 
 from gibbsmin.minimiser.components import Amounts, Components, Floats, FormulaSystem, Indices, exact
+from gibbsmin.minimiser.grouping import by_value
 
 COST_TOLERANCE = 1e-9
 """Reduced costs above minus this (in RT) count as non-negative: the vertex only has to be a good start."""
@@ -84,7 +85,7 @@ def _descend(queue: list[_Visit], b: Amounts, c: Floats) -> list[VertexGroup]:
         reduced = costs - costs[:, components.columns] @ components.C
         reduced[:, components.columns] = 0.0
         entering = np.argmin(reduced, axis=1)
-        done = reduced[np.arange(len(points)), entering] >= -COST_TOLERANCE
+        done = reduced.min(axis=1) >= -COST_TOLERANCE
         if done.any():
             groups.append(VertexGroup(components, points[done], amounts[done], reduced[done]))
         moving = np.flatnonzero(~done)
@@ -98,12 +99,10 @@ def _pivots(
     visit: _Visit, moving: Indices, amounts: Floats, b: Amounts, entering: Indices
 ) -> Iterator[_Visit]:
     """Exchange one component for the entering species, point by point, grouped by outcome."""
-    for species in np.unique(entering):
-        members = np.flatnonzero(entering == species)
-        leaving = _leaving(visit, amounts[members], b[members], int(species))
-        for position in np.unique(leaving):
-            components = visit.components.exchange(int(position), int(species))
-            yield _Visit(components, visit.first, visit.points[moving[members[leaving == position]]])
+    for species, members in by_value(entering, np.arange(len(moving))):
+        leaving = _leaving(visit, amounts[members], b[members], species)
+        for position, leavers in by_value(leaving, visit.points[moving[members]]):
+            yield _Visit(visit.components.exchange(position, species), visit.first, leavers)
 
 
 def _leaving(visit: _Visit, amounts: Floats, b: Amounts, entering: int) -> Indices:
@@ -127,7 +126,7 @@ def _leaving(visit: _Visit, amounts: Floats, b: Amounts, entering: int) -> Indic
             exact_ratios = components.exact_ratios(b[point], candidates[near], entering)
             decided[case] = [ratio == min(exact_ratios) for ratio in exact_ratios]
         tied[point, near] = decided[case]
-    keys = components.C[np.ix_(candidates, visit.first.columns)] / column[candidates][:, None]
+    keys = components.C[candidates[:, None], visit.first.columns] / column[candidates][:, None]
     rank = np.empty(len(candidates), dtype=np.intp)
     rank[np.lexsort(np.round(keys, 9).T[::-1])] = np.arange(len(candidates))
     return np.asarray(candidates[np.argmin(np.where(tied, rank, len(candidates)), axis=1)])
