@@ -72,6 +72,13 @@ def quotient(numerator: int, denominator: int) -> float:
         return inf if (numerator < 0) == (denominator < 0) else -inf
 
 
+def _as_integers(values: Sequence[Any]) -> tuple[list[int], int]:
+    """Finite numbers as integers over a common denominator."""
+    ratios = [value.as_integer_ratio() for value in values]
+    common = lcm(*(denominator for _, denominator in ratios))
+    return [numerator * (common // denominator) for numerator, denominator in ratios], common
+
+
 def exact(value: Any) -> Fraction:
     return value if isinstance(value, Fraction) else Fraction(float(value))
 
@@ -109,6 +116,11 @@ class Components:
         return np.ascontiguousarray(
             np.concatenate([np.ones((1, C.shape[1])), C, C[lower[0]] * C[lower[1]]]).T
         )
+
+    @cached_property
+    def steepness(self) -> Floats:
+        """(S,) 1 / length of the edge of the linear program along which a species comes in at the cost of components."""
+        return np.asarray(1.0 / np.sqrt(1.0 + (self.C**2).sum(axis=0)))
 
     @cached_property
     def largest(self) -> Floats:
@@ -177,9 +189,7 @@ class Components:
 
     def _rounded(self, b: Sequence[Any], positions: Iterable[int]) -> list[float]:
         """Amounts m_i of some components for the finite element amounts b of one point, rounded once."""
-        ratios = [value.as_integer_ratio() for value in b]
-        common = lcm(*(denominator for _, denominator in ratios))
-        numbers = [numerator * (common // denominator) for numerator, denominator in ratios]
+        numbers, common = _as_integers(b)
         rows, scale = self._exact_rows
         below = common * int(self._determinant)
         return [quotient(sum(map(mul, rows[i], numbers)) * scale[i], below) for i in positions]
@@ -220,11 +230,11 @@ class Components:
 
     def exact_ratios(self, element_amounts: Amounts, positions: Indices, species: int) -> list[Fraction]:
         """m_i / C_ij of one species j for the components at some positions i, up to a common factor."""
-        b = [exact(value) for value in element_amounts]
+        numbers, _ = _as_integers(element_amounts.tolist())
+        rows, _ = self._exact_rows
         return [
-            sum((int(w) * value for w, value in zip(self._adjugate[i], b, strict=True)), Fraction(0))
-            / int(self.integer_C[i, species])
-            for i in positions
+            Fraction(sum(map(mul, rows[i], numbers)), int(self.integer_C[i, species]))
+            for i in positions.tolist()
         ]
 
     @cached_property

@@ -84,7 +84,7 @@ def _descend(queue: list[_Visit], b: Amounts, c: Floats) -> list[VertexGroup]:
         costs = c[points]
         reduced = costs - costs[:, components.columns] @ components.C
         reduced[:, components.columns] = 0.0
-        entering = np.argmin(reduced, axis=1)
+        entering = np.argmin(reduced * components.steepness, axis=1)
         done = reduced.min(axis=1) >= -COST_TOLERANCE
         if done.any():
             groups.append(VertexGroup(components, points[done], amounts[done], reduced[done]))
