@@ -23,6 +23,9 @@ CHUNK = 9600
 other between short calls: with 1,600 points two threads were slower than one, with 9,600 they are 1.2 times faster.
 """
 
+NUMBERS = 1_000_000
+"""Species times points of a chunk at the most: hundreds of species go by fewer points."""
+
 PRESSURES = 128
 """Pressures of a chunk at the most, so that its points resemble each other."""
 
@@ -163,14 +166,14 @@ def _refined(coarse: Nodes, gibbs_RT: Floats, T_axis: Axis, p_axis: Axis, beside
 def tiles(nodes: Nodes, n_T: int, n_p: int) -> Iterator[Tile]:
     """Cut a map into tiles of similar points; each gets components that suit the node nearest to its middle."""
     components: Components | None = None
-    for T_part, p_part in rectangles(n_T, n_p):
+    chunk = max(1, min(CHUNK, NUMBERS // len(nodes.posed.kept)))
+    for T_part, p_part in rectangles(n_T, n_p, chunk):
         components = components_at(nodes, T_part, p_part, components)
         yield Tile(T_part, p_part, components)
 
 
-def rectangles(n_T: int, n_p: int, chunk: int | None = None) -> Iterator[tuple[slice, slice]]:
+def rectangles(n_T: int, n_p: int, chunk: int) -> Iterator[tuple[slice, slice]]:
     """The parts of a map that are solved as one, by ranges of temperature and pressure: about `chunk` points each."""
-    chunk = CHUNK if chunk is None else chunk
     parts = -(-n_p // PRESSURES)
     edges = [n_p * part // parts for part in range(parts + 1)]
     height = max(1, chunk * parts // n_p)

@@ -40,6 +40,9 @@ NEAR_SEED = 32
 BLOCK = 10_000
 """Points that go side by side: the few that are still on their way then cost little."""
 
+NUMBERS = 500_000
+"""Species times points that are polished together, at the most."""
+
 FEW_STEPS, MANY_STEPS = 14, 30
 """Steps with the deciding species in single precision, and for the points that need them with all in double."""
 
@@ -131,6 +134,11 @@ class _Estimates:
             self.steps[chosen],
         )
 
+    def parts(self, points: int) -> Iterator[_Estimates]:
+        """Some `points` at a time."""
+        for first in range(0, len(self.at), points):
+            yield self.take(np.arange(first, min(first + points, len(self.at))))
+
     @classmethod
     def joined(cls, every: list[_Estimates]) -> Iterator[_Estimates]:
         """Estimates in the same components as one."""
@@ -151,8 +159,9 @@ def _solve_block(cloud: Cloud, sample: Sample, index: Indices, out: GridSolution
     waiting = _near_equilibrium(cloud, sample, index, persistent=True)
     for _ in range(2):  # the few that are not proved at once are then near enough
         waiting = [
-            _polish_into(out, cloud, sample.posed, index, estimates)
+            _polish_into(out, cloud, sample.posed, index, part)
             for estimates in _Estimates.joined(waiting)
+            for part in estimates.parts(NUMBERS // len(sample.posed.kept))
         ]
     return int(np.count_nonzero(out.status[index] == Status.SOLVED))
 
