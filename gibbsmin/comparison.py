@@ -123,6 +123,13 @@ def _atoms_counted(formula_matrix: FloatArray, fed: FloatArray, fraction: FloatA
     return float((np.abs(formula_matrix) @ fraction)[fed != 0].sum())
 
 
+def _differences(ours: FloatArray, other: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Absolute and relative differences of the species that exceed THRESHOLD in either answer, else zero; (S,) each."""
+    counted = np.maximum(ours, other) > THRESHOLD
+    absolute = np.where(counted, np.abs(ours - other), 0.0)
+    return absolute, absolute / np.maximum(np.maximum(ours, other), THRESHOLD)
+
+
 class Comparison:
     """Both answers to the points of one data set."""
 
@@ -158,32 +165,12 @@ class Comparison:
     def at(self, index: tuple[int, ...]) -> CheckedPoint:
         T, p = float(self._temperature[index]), float(self._pressure[index])
         place = self._place(index, T, p)
-
-        def unanswered(reason: str) -> CheckedPoint:
-            return CheckedPoint(index, place, "no independent answer", reason=reason)
-
-        if self._gas is None:
-            return unanswered(self._failure)
-        if self._ions and T < LEAST_TEMPERATURE_WITH_IONS:
-            return unanswered(
-                f"skipped: with ions below {LEAST_TEMPERATURE_WITH_IONS:g} K Cantera's solver is not reliable"
-            )
-        standard = self._table.gibbs_RT(np.array([T]))[0]
         try:
-            # The polynomials give g/RT itself, so the gas constants of the two programs play no part.
-            theirs = self._gas.standard_gibbs_RT(T)
-            data = float((np.abs(theirs - standard) / np.maximum(1.0, np.abs(standard))).max())
-            self.data_difference = max(self.data_difference, data)
-            if not data <= SAME_DATA:
-                return unanswered(f"its standard potentials differ from ours by {data:.1e} RT")
-            other, solver = self._gas.equilibrate(T, p, self._start(index), "auto")
+            other, solver, standard = self._other_answer(index)
         except NoAnswerError as error:
-            return unanswered(str(error))
-
+            return CheckedPoint(index, place, "no independent answer", reason=str(error))
         ours = self._fraction[index]
-        counted = np.maximum(ours, other) > THRESHOLD
-        absolute = np.where(counted, np.abs(ours - other), 0.0)
-        relative = absolute / np.maximum(np.maximum(ours, other), THRESHOLD)
+        absolute, relative = _differences(ours, other)
         worst = int(relative.argmax())
         potentials = standard + np.log(p / STANDARD_PRESSURE)
         residual = self._residual(index, potentials, ours)
@@ -208,6 +195,38 @@ class Comparison:
             verdict,
             reason,
         )
+
+    def agreement(self, index: tuple[int, ...]) -> tuple[CheckStatus, float]:
+        """Status and largest relative difference of a point, without the evidence for either answer."""
+        try:
+            other, _, _ = self._other_answer(index)
+        except NoAnswerError:
+            return "no independent answer", float("nan")
+        _, relative = _differences(self._fraction[index], other)
+        worst = float(relative.max())
+        return ("confirmed" if worst <= self._tolerance else "differs"), worst
+
+    def _other_answer(self, index: tuple[int, ...]) -> tuple[FloatArray, str, FloatArray]:
+        """Cantera's mole fractions (S,), the solver that found them, and our standard potentials (S,).
+
+        Raises NoAnswerError.
+        """
+        T, p = float(self._temperature[index]), float(self._pressure[index])
+        if self._gas is None:
+            raise NoAnswerError(self._failure)
+        if self._ions and T < LEAST_TEMPERATURE_WITH_IONS:
+            raise NoAnswerError(
+                f"skipped: with ions below {LEAST_TEMPERATURE_WITH_IONS:g} K Cantera's solver is not reliable"
+            )
+        standard = self._table.gibbs_RT(np.array([T]))[0]
+        # The polynomials give g/RT itself, so the gas constants of the two programs play no part.
+        theirs = self._gas.standard_gibbs_RT(T)
+        data = float((np.abs(theirs - standard) / np.maximum(1.0, np.abs(standard))).max())
+        self.data_difference = max(self.data_difference, data)
+        if not data <= SAME_DATA:
+            raise NoAnswerError(f"its standard potentials differ from ours by {data:.1e} RT")
+        other, solver = self._gas.equilibrate(T, p, self._start(index), "auto")
+        return other, solver, standard
 
     def _judge(
         self,

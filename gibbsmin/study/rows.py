@@ -102,8 +102,7 @@ def _answers(chunk: Chunk, block: Block, table: ThermoTable) -> Iterator[tuple[s
             if compare is None:
                 points = _chosen_points(chunk, block, table)
                 compare = Comparison(points, table, ("point",), chunk.group.layout.tolerance)
-            answer = compare.at((k,))
-            yield answer.status, answer.relative
+            yield compare.agreement((k,))
         except Exception:
             yield _UNANSWERED, float("nan")
 
