@@ -1,21 +1,19 @@
 """Throughput of a study against that of its plain maps: `python -m tests.benchmarks_study [cases] [points a side]`
 or `... scaling`.
 
-Prints, and asserts nothing: the time of the same maps solved by the grid solver alone, on as many processes, then
-that of the study with everything (starting processes, reading, checking, storing, digests, summary), for what is
-kept by default and for all species, and the peak memory of all its processes together. Processor time is given as
-well, since other programs of the machine do not count in it.
+Prints, and asserts nothing: the time of the same maps solved by the grid solver alone, on as many processes that are
+already running, then that of the study with everything (reading, starting processes, checking, storing, digests,
+summary), for what is kept by default and for all species, and the peak memory of all its processes together. Processor
+time is given as well, since other programs of the machine do not count in it.
 """
 
 from __future__ import annotations
 
-import resource
 import shutil
 import sys
 import tempfile
 import threading
 import time
-from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor
 from multiprocessing import get_context
 from pathlib import Path
@@ -82,32 +80,43 @@ def plain_maps(job: tuple[Any, list[Any]]) -> int:
     return sum(solve_case(layout, table, case, 1).status.size for case in cases)
 
 
-def cpu_seconds() -> float:
-    """Processor time of this process and of its children that have ended."""
-    parts = (resource.getrusage(who) for who in (resource.RUSAGE_SELF, resource.RUSAGE_CHILDREN))
-    return sum(part.ru_utime + part.ru_stime for part in parts)
+class Watch:
+    """Memory and processor time of this process and all below it, looked at every fifth of a second."""
 
+    def __init__(self) -> None:
+        import psutil
 
-def peak_memory() -> Callable[[], float]:
-    """Start watching this process and its children; the function gives the peak of their sum so far [GiB]."""
-    import psutil
+        self._own = psutil.Process()
+        self._seconds: dict[tuple[int, float], float] = {}
+        self._peak = 0
+        threading.Thread(target=self._keep_looking, daemon=True).start()
 
-    own = psutil.Process()
-    peak = [0]
-
-    def watch() -> None:
+    def _keep_looking(self) -> None:
         while True:
-            total = 0
-            for process in [own, *own.children(recursive=True)]:
-                try:
-                    total += process.memory_full_info().pss
-                except psutil.Error:
-                    continue
-            peak[0] = max(peak[0], total)
+            self.look()
             time.sleep(0.2)
 
-    threading.Thread(target=watch, daemon=True).start()
-    return lambda: peak[0] / 2**30
+    def look(self) -> None:
+        import psutil
+
+        total = 0
+        for process in [self._own, *self._own.children(recursive=True)]:
+            try:
+                total += process.memory_full_info().pss
+                used = process.cpu_times()
+                self._seconds[process.pid, process.create_time()] = used.user + used.system
+            except psutil.Error:
+                continue
+        self._peak = max(self._peak, total)
+
+    def processor_seconds(self) -> float:
+        """Processor time so far, but for what processes used after they were last looked at."""
+        self.look()
+        return sum(self._seconds.values())
+
+    def peak_memory(self) -> float:
+        """Peak so far of the memory of all together [GiB]."""
+        return self._peak / 2**30
 
 
 def scaling(cases: int = 100, side: int = 100, attempts: int = 3) -> None:
@@ -160,28 +169,26 @@ def main() -> None:
         layout = study.layouts[0]
         print(f"{cases} cases x {side * side} points x {len(layout.species)} species, {WORKERS} processes")
         parts = [(layout, list(study.cases[i::50])) for i in range(50)]
-        before = cpu_seconds()
+        watch = Watch()
         with ProcessPoolExecutor(WORKERS, get_context("spawn")) as pool:
-            begun = time.perf_counter()
+            # what processes do once, imports and all, is no part of the speed of maps
+            list(pool.map(plain_maps, [(layout, list(study.cases[:5]))] * 2 * WORKERS))
+            before, begun = watch.processor_seconds(), time.perf_counter()
             points = sum(pool.map(plain_maps, parts))
-            plain = time.perf_counter() - begun
-        plain_cpu = cpu_seconds() - before
+            plain, plain_cpu = time.perf_counter() - begun, watch.processor_seconds() - before
         print(
             f"plain maps: {plain:.2f} s, {plain_cpu:.2f} s of processor, {plain / points * 1e6:.3f} us a point"
         )
-        memory = peak_memory()
         for composition, checks in (("key species", 0), ("key species", 1), ("all", 0)):
             file = write_study(folder, cases, side, composition, checks)
-            before = cpu_seconds()
-            begun = time.perf_counter()
+            before, begun = watch.processor_seconds(), time.perf_counter()
             run = run_study(file, folder / "out", workers=WORKERS)
-            took = time.perf_counter() - begun
-            cpu = cpu_seconds() - before
+            took, cpu = time.perf_counter() - begun, watch.processor_seconds() - before
             size = sum(path.stat().st_size for path in (folder / "out").rglob("*") if path.is_file())
             print(
                 f"study, {composition}, {checks} checked a case: {took:.2f} s, {plain / took:.0%} of the plain speed "
-                f"({cpu:.2f} s of processor, {plain_cpu / cpu:.0%}), "
-                f"{size / 1e9:.2f} GB, solved {run.all_solved}, peak so far {memory():.2f} GiB"
+                f"({cpu:.2f} s of processor, {plain_cpu / cpu:.0%}), {size / 1e9:.2f} GB, "
+                f"solved {run.all_solved}, peak so far {watch.peak_memory():.2f} GiB"
             )
             shutil.rmtree(folder / "out")
 

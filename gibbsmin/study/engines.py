@@ -12,6 +12,7 @@ import multiprocessing
 import os
 import pickle
 import signal
+import sys
 import threading
 from collections.abc import Iterator, Sequence
 from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wait
@@ -19,6 +20,7 @@ from concurrent.futures.process import BrokenProcessPool
 from contextlib import suppress
 from dataclasses import dataclass
 from multiprocessing.connection import wait as wait_for
+from multiprocessing.forkserver import ensure_running
 from pathlib import Path
 from typing import Any, Protocol
 
@@ -95,7 +97,7 @@ class Processes:
         self, left: dict[int, Chunk], work: Work, packer: _Packer
     ) -> Iterator[tuple[int, Receipt]]:
         pool = ProcessPoolExecutor(
-            min(self.workers, len(left)), multiprocessing.get_context("spawn"), initializer=_begin_worker
+            min(self.workers, len(left)), _process_context(), initializer=_begin_worker
         )
         clean = False
         try:
@@ -177,6 +179,25 @@ class Cluster:
                     futures.add(submit(following))
         finally:
             self._client.cancel(list(sources))
+
+
+def expect_processes() -> None:
+    """Let the server from which processes fork import the package while a study is still being read."""
+    if sys.platform == "linux":
+        _process_context()
+        ensure_running()
+
+
+def _process_context() -> Any:
+    """How processes begin: they never share the memory of this one, whose threads may be in the middle of anything.
+
+    On Linux they fork from a server that has imported the package once for all of them.
+    """
+    if sys.platform != "linux":
+        return multiprocessing.get_context("spawn")
+    context = multiprocessing.get_context("forkserver")
+    context.set_forkserver_preload(["gibbsmin.study.preloading"])
+    return context
 
 
 def connect(address: str) -> Any:

@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Any
 
 from gibbsmin.errors import StudyRefusedError, StudyStoppedError
 from gibbsmin.grid.solve import available_cores
-from gibbsmin.study.engines import Cluster, Engine, Processes, ThisProcess, Work, connect
+from gibbsmin.study.engines import Cluster, Engine, Processes, ThisProcess, Work, connect, expect_processes
 from gibbsmin.study.locking import LOCK_FILE, folder_lock
 from gibbsmin.study.model import Study
 from gibbsmin.study.planning import Plan, plan_study
@@ -99,6 +99,8 @@ def run_study(
         MissingPackageError: a cluster is named and distributed is not installed.
     """
     if not isinstance(study, Study):
+        if cluster is None and workers != 0:
+            expect_processes()
         study = load_study(study)
     home = Path(folder).resolve()
     check_study_folder(home, study.title, overwrite)
