@@ -119,7 +119,7 @@ class Watch:
         return self._peak / 2**30
 
 
-def scaling(cases: int = 100, side: int = 100, attempts: int = 3) -> None:
+def scaling(cases: int = 400, side: int = 100, attempts: int = 2) -> None:
     """The same study on a Dask cluster of one process and of two, over TCP; the best of some attempts in turn.
 
     If two workers take no more processor time together than one does, they take half the time where two cores are

@@ -250,7 +250,7 @@ def test_trouble_in_the_other_program_leaves_points_unanswered(
     def trouble(*_: object) -> None:
         raise ValueError("nothing fits")
 
-    monkeypatch.setattr("gibbsmin.comparison.Comparison.at", trouble)
+    monkeypatch.setattr("gibbsmin.comparison.Comparison.agreement", trouble)
     run = run_study(write_study(tmp_path), tmp_path / "out", workers=0)
     assert run.results.summary["no independent answer"].tolist() == [1] * 12
     assert run.all_solved
