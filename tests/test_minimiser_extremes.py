@@ -3,6 +3,7 @@ the range."""
 
 from __future__ import annotations
 
+from fractions import Fraction
 from typing import Any
 
 import numpy as np
@@ -180,3 +181,36 @@ def test_negative_ions_hold_all_electrons() -> None:
     check(A, [1.0, 1.0, 0.0], [0.0, 60.0, 0.0, -60.0, 80.0])
     check(A, [1.0, 0.5, 0.0], [0.0, 10.0, 0.0, -300.0, 200.0])
     check(A, [0.5, 1.0, 0.0], [0.0, 300.0, 0.0, -100.0, 200.0])
+
+
+EXTREME_MATRIX = np.array([[1.0, 2, 0, 1], [0.0, 0, 2, 2]])
+EXTREME_POTENTIALS = np.array([0.0, -1.0, -2.0, -30.0])
+
+
+@pytest.mark.parametrize("size", [1e-320, 1e-310, 1e-200, 1e200, 5e307])
+def test_amounts_at_the_ends_of_the_range_of_doubles(size: float) -> None:
+    """Warnings count as errors here: nothing overflows on the way, and the composition is that of one mole."""
+    answer = solve(EXTREME_MATRIX, [size, size], EXTREME_POTENTIALS)
+    one = solve(EXTREME_MATRIX, [1.0, 1.0], EXTREME_POTENTIALS)
+    np.testing.assert_allclose(answer.log_mole_fractions, one.log_mole_fractions, rtol=1e-12)
+    least = np.nextafter(0.0, 1.0)  # what a subnormal amount can be off by
+    np.testing.assert_allclose(answer.amounts, one.amounts * size, rtol=1e-12, atol=least)
+    assert (answer.gap <= 1e-10 * 2.0 * size + least).all()
+
+
+def test_extreme_exact_amounts_beside_ordinary_ones() -> None:
+    from gibbsmin import minimise
+
+    tiny = Fraction(1, 10**200)
+    amounts = np.array([[tiny, 2 * tiny], [Fraction(1), Fraction(2)]], dtype=object)
+    answer = minimise(EXTREME_MATRIX, amounts, EXTREME_POTENTIALS)
+    assert (answer.status == 0).all()
+    np.testing.assert_allclose(answer.log_mole_fractions[0], answer.log_mole_fractions[1], rtol=1e-12)
+
+
+def test_complex_numbers_are_refused() -> None:
+    from gibbsmin import minimise
+    from gibbsmin.errors import ProblemError
+
+    with pytest.raises(ProblemError, match="real"):
+        minimise(EXTREME_MATRIX, np.array([1.0 + 1.0j, 2.0]), EXTREME_POTENTIALS)

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from contextlib import suppress
 from dataclasses import dataclass, replace
+from fractions import Fraction
 from typing import Any
 
 import numpy as np
@@ -23,6 +24,9 @@ from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, Answers, Posed
 from gibbsmin.minimiser.result import Minimum, Status
 from gibbsmin.minimiser.start import StartGroup, estimates
 from gibbsmin.minimiser.vertex import UnboundedError, nearest_balanced
+
+LEAST_AMOUNT, MOST_AMOUNT = 1e-150, 1e150
+"""mol. Beyond these the sums of a problem may leave the range of doubles: it is then solved in a power of two of a mole."""
 
 CHUNK = 16384
 """Points sorted and started together: enough for many of them to share their components."""
@@ -69,6 +73,7 @@ def minimise(
     A, b, c = _checked(formula_matrix, element_amounts, potentials)
     is_condensed = _mask(condensed, A.shape[1])
     points = len(c)
+    b, exponent = _within_reach(b)
     answers = Answers.blank(points, *A.shape)
     problem = _Problem(A, is_condensed, b, c, answers)
     try:
@@ -79,7 +84,31 @@ def minimise(
         raise ProblemError(
             "some combination of species can be made from nothing: check the signs of the formula matrix"
         ) from None
+    if exponent.any():
+        answers.amounts = np.ldexp(answers.amounts, exponent[:, None])
+        answers.gap = np.ldexp(answers.gap, exponent)
     return answers.minimum()
+
+
+def _within_reach(b: Amounts) -> tuple[Amounts, NDArray[np.int32]]:
+    """Element amounts (N, E) whose sums and squares no double can hold, or only with loss, times a power of two.
+
+    Returns them with the exponents (N,) that undo it.
+    """
+    with np.errstate(invalid="ignore"):
+        largest = np.abs(b.astype(np.float64)).max(axis=1)
+    extreme = np.isfinite(largest) & (largest > 0.0) & ((largest < LEAST_AMOUNT) | (largest > MOST_AMOUNT))
+    exponent = np.zeros(len(b), dtype=np.int32)
+    if extreme.any():
+        exponent[extreme] = np.frexp(largest[extreme])[1]
+        b = b.copy()
+        for point in np.flatnonzero(extreme):
+            power = int(exponent[point])
+            if b.dtype == object:
+                b[point] = [exact(value) / Fraction(2) ** power for value in b[point]]
+            else:
+                b[point] = np.ldexp(b[point], -power)
+    return b, exponent
 
 
 def _checked(
@@ -87,6 +116,8 @@ def _checked(
 ) -> tuple[Floats, Amounts, Floats]:
     A = np.asarray(formula_matrix, dtype=np.float64)
     b = np.asarray(element_amounts)
+    if any(np.iscomplexobj(values) for values in (formula_matrix, b, potentials)):
+        raise ProblemError("element amounts, potentials and the formula matrix must be real numbers")
     if b.dtype != object:
         b = b.astype(np.float64)
     c = np.asarray(potentials, dtype=np.float64)
