@@ -351,7 +351,24 @@ def copy_files(files: Sequence[Path], folder: Path, *, overwrite: bool) -> list[
     folder.mkdir(parents=True, exist_ok=True)
     for path, target in zip(files, targets, strict=True):
         shutil.copyfile(path, target)
+        _point_at_schema(target)
     return targets
+
+
+def _point_at_schema(file: Path) -> None:
+    """Let a copy's first line, by which editors find the JSON Schema, name the installed one: no path leads there."""
+    first, _, rest = file.read_text(encoding="utf-8").partition("\n")
+    for package, name in _SCHEMAS.values():
+        before, mark, after = first.partition("$schema=")
+        if mark and after.endswith(f"{package.replace('.', '/')}/{name}"):
+            text = f"{before}{mark}{schema_file(package, name).as_uri()}\n{rest}"
+            file.write_text(text, encoding="utf-8")
+
+
+def schema_file(package: str, name: str) -> Path:
+    from importlib.resources import files
+
+    return Path(str(files(package).joinpath(name)))
 
 
 # --- schema
@@ -371,10 +388,7 @@ def _add_schema(parser: argparse.ArgumentParser) -> None:
 
 
 def _schema(options: argparse.Namespace) -> int:
-    from importlib.resources import files
-
-    package, name = _SCHEMAS[options.form]
-    print(files(package).joinpath(name).read_text(encoding="utf-8"), end="")
+    print(schema_file(*_SCHEMAS[options.form]).read_text(encoding="utf-8"), end="")
     return CONFIRMED
 
 

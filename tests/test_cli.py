@@ -10,6 +10,8 @@ import json
 import subprocess
 import sys
 from pathlib import Path
+from urllib.parse import urlsplit
+from urllib.request import url2pathname
 
 import numpy as np
 import pytest
@@ -405,6 +407,16 @@ def test_examples_are_copied_out_and_nothing_is_overwritten(
     assert Path("mine/steam_reforming.yaml").read_text(encoding="utf-8") == "changed"
     assert main(["scenarios", "--copy-to", "mine", "--overwrite"]) == 0
     assert files_in(Path("mine")) == {path.name for path in examples().values()}
+
+
+def test_a_copied_example_leads_editors_to_the_installed_schema(work: Path) -> None:
+    assert main(["scenarios", "steam_reforming", "--copy-to", "mine"]) == 0
+    copy = Path("mine/steam_reforming.yaml").read_text(encoding="utf-8").splitlines()
+    original = examples()["steam_reforming"].read_text(encoding="utf-8").splitlines()
+    assert copy[1:] == original[1:]
+    address = copy[0].partition("$schema=")[2]
+    assert address.startswith("file:")
+    assert json.loads(Path(url2pathname(urlsplit(address).path)).read_text(encoding="utf-8"))["$schema"]
 
 
 def test_an_unknown_example_is_refused(capsys: pytest.CaptureFixture[str]) -> None:

@@ -104,11 +104,12 @@ def approach(
             y -= offsets
             np.exp(y, out=y)
             change, ratio, condition = _newton_step(to_sums @ y, target * np.exp(-here_total), here_y)
-            reach = np.abs(change).max(axis=0)
+            log_ratio = np.log(ratio)
+            reach = np.maximum(np.abs(change).max(axis=0), np.abs(log_ratio))
             change *= _length(to_change @ change)
             here_y += change
             level[:-1] += change
-            here_total += np.log(ratio)
+            here_total += log_ratio
             is_open = reach >= NEAR  # nor is a point that went wrong: NaN
             count = np.count_nonzero(is_open)
             if count > STILL_OPEN * len(place):

@@ -46,6 +46,9 @@ NUMBERS = 500_000
 FEW_STEPS, MANY_STEPS = 14, 30
 """Steps with the deciding species in single precision, and for the points that need them with all in double."""
 
+MOST_LOST = 20_000
+"""Species times points that are tried again with all species."""
+
 LEFT_OVER = np.int8(-1)
 """Mark of points that are still to be solved."""
 
@@ -92,7 +95,7 @@ def _seed(cloud: Cloud, point: np.intp, elements: NDArray[np.bool_]) -> Sample |
 def _widened(sample: Sample, cloud: Cloud, points: Indices) -> Sample:
     """The sample with those of the points that come near their equilibrium from it: neighbours need not be exact."""
     coordinates, values = [sample.coordinates], [sample.values]
-    for each in _near_equilibrium(cloud, sample, points, persistent=False):
+    for each in _near_equilibrium(cloud, sample, points, deciding_known=False):
         index = points[each.at]
         components = each.components
         g = cloud.standard(sample.posed.kept, index)
@@ -156,7 +159,7 @@ class _Estimates:
 
 def _solve_block(cloud: Cloud, sample: Sample, index: Indices, out: GridSolution) -> int:
     out.status[index] = LEFT_OVER
-    waiting = _near_equilibrium(cloud, sample, index, persistent=True)
+    waiting = _near_equilibrium(cloud, sample, index, deciding_known=True)
     for _ in range(2):  # the few that are not proved at once are then near enough
         waiting = [
             _polish_into(out, cloud, sample.posed, index, part)
@@ -166,18 +169,18 @@ def _solve_block(cloud: Cloud, sample: Sample, index: Indices, out: GridSolution
     return int(np.count_nonzero(out.status[index] == Status.SOLVED))
 
 
-def _near_equilibrium(cloud: Cloud, sample: Sample, index: Indices, *, persistent: bool) -> list[_Estimates]:
+def _near_equilibrium(
+    cloud: Cloud, sample: Sample, index: Indices, *, deciding_known: bool
+) -> list[_Estimates]:
     """Those of some points that come near their equilibrium, in components that suit them."""
     posed = sample.posed
     coordinates = cloud.features(index, sample.elements)
-    b = cloud.b[cloud.feed[index]][:, posed.system.rows].T.astype(np.float64)
-    near = sample.nearest(coordinates, b)
+    b = cloud.b[cloud.feed[index]][:, posed.system.rows]
+    near = sample.nearest(coordinates, b.T.astype(np.float64))
     order = np.argsort(near, kind="stable")
-    index, near, coordinates, b = index[order], near[order], coordinates[order], b[:, order]
+    index, near, coordinates, b = index[order], near[order], coordinates[order], b[order]
     log_size = cloud.log_size(index, sample.elements)
-    attempts: list[tuple[Indices, Any, int]] = [(sample.deciding, np.float32, FEW_STEPS)]
-    if persistent:
-        attempts.append((np.arange(len(posed.kept)), np.float64, MANY_STEPS))
+    every = np.arange(len(posed.kept))
     found: list[_Estimates] = []
     for components, points, by_neighbour in sample.groups(near):
         log_y, log_total = sample.estimate(components, coordinates[points], by_neighbour)
@@ -189,12 +192,15 @@ def _near_equilibrium(cloud: Cloud, sample: Sample, index: Indices, *, persisten
             log_total,
             np.zeros(len(log_total), dtype=np.int32),
         )
-        for species, kind, most_steps in attempts:
-            m = components.rough_amounts(b[:, left.at])
-            arrived, left = _approached(cloud, sample, index, left, m, species, kind, most_steps)
+        if deciding_known:
+            m = components.amounts(b[left.at]).T
+            arrived, left = _approached(cloud, sample, index, left, m, sample.deciding, np.float32, FEW_STEPS)
             found += arrived
-            if not left.at.size:
-                break
+        # where many are lost they are of another kind, and the next sample is taken from among them
+        if 0 < left.at.size * every.size <= MOST_LOST:
+            m = components.amounts(b[left.at]).T
+            arrived, _ = _approached(cloud, sample, index, left, m, every, np.float64, MANY_STEPS)
+            found += arrived
     return [replace(each, at=order[each.at]) for each in found]
 
 

@@ -20,8 +20,8 @@ from gibbsmin.figures.axes import is_logarithmic
 from gibbsmin.figures.labels import number, plain, with_formulas
 from gibbsmin.figures.look import FAINT, INK, LINE_COLOURS, house_look
 from gibbsmin.figures.saving import PNG_DOTS_PER_INCH
+from gibbsmin.study.chunks import PHASE_VARIABLES
 from gibbsmin.study.ranking import Condition, field, has
-from gibbsmin.study.solving import PHASE_VARIABLES
 
 if TYPE_CHECKING:
     import pandas as pd

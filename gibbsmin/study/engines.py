@@ -25,8 +25,9 @@ from pathlib import Path
 from typing import Any, Protocol
 
 from gibbsmin.errors import MissingPackageError, StudyRefusedError
+from gibbsmin.study.chunks import Chunk, Group, Receipt
 from gibbsmin.study.model import Case
-from gibbsmin.study.solving import CaseSolver, Chunk, Group, Receipt, solve_case, solve_chunk
+from gibbsmin.study.solving import CaseSolver, solve_case, solve_chunk
 from gibbsmin.study.trail import MOST_DEATHS
 
 AHEAD = 3

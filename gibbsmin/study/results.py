@@ -13,8 +13,8 @@ from typing import TYPE_CHECKING, Any
 import xarray as xr
 
 from gibbsmin.errors import StudyRefusedError
+from gibbsmin.study.chunks import STORE
 from gibbsmin.study.shards import file_digest
-from gibbsmin.study.solving import STORE
 from gibbsmin.study.store import MANIFEST, PROGRAM, SUMMARY
 
 if TYPE_CHECKING:

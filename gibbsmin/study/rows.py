@@ -10,11 +10,11 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from gibbsmin.solving import composition_matrix
+from gibbsmin.study.block import Block, largest
 
 if TYPE_CHECKING:
     from gibbsmin.species import ThermoTable
-    from gibbsmin.study.model import Case
-    from gibbsmin.study.solving import Block, Chunk
+    from gibbsmin.study.chunks import Chunk
 
 
 def rows_of(
@@ -54,15 +54,6 @@ def rows_of(
             row[f"{name} lowest"] = _or_none(-largest(-array[i]))
             row[f"{name} highest"] = _or_none(largest(array[i]))
         yield row
-
-
-def largest(values: NDArray[Any]) -> float:
-    """Largest finite value, NaN if there is none."""
-    top = values.max()
-    if np.isfinite(top):
-        return float(top)
-    finite = values[np.isfinite(values)]
-    return float(finite.max()) if finite.size else float("nan")
 
 
 def _or_none(value: float) -> float | None:
@@ -105,12 +96,6 @@ def _answers(chunk: Chunk, block: Block, table: ThermoTable) -> Iterator[tuple[s
             yield compare.agreement((k,))
         except Exception:
             yield _UNANSWERED, float("nan")
-
-
-def checked_points(case: Case, points: int, count: int) -> NDArray[np.intp]:
-    """Points to check: random, but those of a case do not depend on anything else."""
-    generator = np.random.default_rng(int(case.digest[:16], 16))
-    return np.sort(generator.choice(points, size=min(count, points), replace=False))
 
 
 def _chosen_points(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset:

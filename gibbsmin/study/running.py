@@ -16,13 +16,14 @@ from typing import TYPE_CHECKING, Any
 
 from gibbsmin.errors import StudyRefusedError, StudyStoppedError
 from gibbsmin.grid.solve import available_cores
+from gibbsmin.study.chunks import Chunk, Receipt
 from gibbsmin.study.engines import Cluster, Engine, Processes, ThisProcess, Work, connect, expect_processes
 from gibbsmin.study.locking import LOCK_FILE, folder_lock
 from gibbsmin.study.model import Study
 from gibbsmin.study.planning import Plan, plan_study
 from gibbsmin.study.reading import load_study
 from gibbsmin.study.shards import write_whole
-from gibbsmin.study.solving import CaseSolver, Chunk, Receipt, solve_case
+from gibbsmin.study.solving import CaseSolver, solve_case
 from gibbsmin.study.store import (
     MANIFEST,
     PROGRAM,

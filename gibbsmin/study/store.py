@@ -28,9 +28,9 @@ import xarray as xr
 
 from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.scenario.reading import identifier
+from gibbsmin.study.chunks import RECEIPTS, STORE, Chunk, Group, Receipt, solver_table
 from gibbsmin.study.planning import Plan, axis_dims, point_dims
 from gibbsmin.study.shards import UNFINISHED, file_digest, write_whole
-from gibbsmin.study.solving import RECEIPTS, STORE, Chunk, Group, Receipt, solver_table
 from gibbsmin.study.trail import TRAILS
 
 MANIFEST = "manifest.json"
