@@ -26,8 +26,11 @@ SMALLEST_SQUARE = 1e-6
 SHORT = 100.0
 """Squared distance added to a neighbour whose components could not hold the elements of a point."""
 
-SHARED_GAIN = 1e3
-"""Components serve a point too if no species calls for an exchange by more than this factor."""
+FAIR_GAIN = 1e3
+"""Components serve a point on its way if no species calls for an exchange by more than this factor."""
+
+SUITING_GAIN = 5e2
+"""The same at its end, where they decide the rounding: six roundings times this factor were the most that was seen."""
 
 
 @dataclass(frozen=True)
@@ -50,7 +53,7 @@ class Sample:
     @classmethod
     def of(cls, posed: Posed, elements: Indices, coordinates: Floats, values: Floats) -> Sample:
         log_x = values[:, :-1]
-        shared = shared_components(posed, np.arange(log_x.shape[1]), log_x.T)
+        shared = shared_components(posed, np.arange(log_x.shape[1]), log_x.T, FAIR_GAIN)
         which = np.repeat(np.arange(len(shared)), [len(members) for _, members in shared])
         deciding = np.unique(np.concatenate([deciding_species(each, log_x[at]) for each, at in shared]))
         order = np.concatenate([members for _, members in shared])
@@ -118,11 +121,11 @@ def _slopes(coordinates: Floats, values: Floats) -> Floats:
 
 
 def shared_components(
-    posed: Posed, species: Indices, log_x: Floats, known: Sequence[Components] = ()
+    posed: Posed, species: Indices, log_x: Floats, most_gain: float, known: Sequence[Components] = ()
 ) -> list[tuple[Components, Indices]]:
     """Few choices of components that serve compositions ln x (q, n) of some species, and which of them each serves.
 
-    The `known` ones are tried first.
+    No species calls for an exchange by more than `most_gain`. The `known` ones are tried first.
     """
     served: list[tuple[Components, Indices]] = []
     waiting = list(known)
@@ -137,7 +140,7 @@ def shared_components(
         here = log_x[:, left]
         own = here[np.searchsorted(species, components.columns)]
         gain = np.array([(here + row[:, None]).max(axis=0) for row in components.log_squares[:, species]])
-        good = (gain - own).max(axis=0) <= log(SHARED_GAIN)
+        good = (gain - own).max(axis=0) <= log(most_gain)
         good[0] |= sure
         if good.any():
             served.append((components, left[good]))

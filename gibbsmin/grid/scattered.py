@@ -18,7 +18,7 @@ from gibbsmin.grid.approach import approach
 from gibbsmin.grid.cloud import Cloud
 from gibbsmin.grid.nodes import Floats, Indices
 from gibbsmin.grid.polish import SETTLED, STEPS, Feed, Scattered, polish, prove
-from gibbsmin.grid.sample import SHARED_GAIN, Sample, shared_components
+from gibbsmin.grid.sample import SUITING_GAIN, Sample, shared_components
 from gibbsmin.grid.solution import GridSolution
 from gibbsmin.minimiser import Status, minimise
 from gibbsmin.minimiser.components import Components
@@ -34,7 +34,7 @@ ROUNDS = 3
 SEEDS = 3
 """Points tried until one serves as the first neighbour."""
 
-NEAR_SEED = 32
+NEAR_SEED = 12
 """Points that it brings near their equilibrium, as neighbours for the others: more cost more than they gain."""
 
 BLOCK = 10_000
@@ -226,12 +226,14 @@ def _approached(
     offsets -= C.T @ offsets[own]
     offsets[own] = 0.0
     done = approach(components, species, offsets, lnp, m, start.log_y, start.log_total, kind, most_steps)
-    suited = done.arrived & (done.condition <= SHARED_GAIN)
+    suited = done.arrived & (done.condition <= SUITING_GAIN)
     found = [_Estimates(components, at, done.log_y, done.log_total, done.steps).take(suited)]
     others = np.flatnonzero(done.arrived & ~suited)
     if others.size:
         log_x = C.T @ (done.log_y[:, others] + lnp[others]) - offsets[:, others] - lnp[others]
-        for suiting, members in shared_components(sample.posed, species, log_x, sample.components):
+        for suiting, members in shared_components(
+            sample.posed, species, log_x, SUITING_GAIN, sample.components
+        ):
             own = np.searchsorted(species, suiting.columns)
             chosen = others[members]
             found.append(
