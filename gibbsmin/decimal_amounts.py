@@ -35,7 +35,7 @@ def element_amounts(feed: FloatArray, composition: FloatArray) -> tuple[FloatArr
         amounts are the first divided by the second. The factor is 1, and the amounts are rounded
         products, for a feed that has no such whole numbers below 2^53 (more than about 15 digits).
     """
-    decimals = _decimals(feed).max(axis=1, initial=0)
+    decimals = _decimals_of_feeds(feed)
     readable = decimals <= MOST_DECIMALS
     # One factor for all feeds keeps a sweep over the feed smooth for the solver; it is given up only
     # when the feed with most decimals would push another one beyond the whole numbers.
@@ -88,19 +88,30 @@ def _size(feed: FloatArray, composition: FloatArray) -> FloatArray:
     return largest
 
 
+def _decimals_of_feeds(feed: FloatArray) -> NDArray[np.int64]:
+    """Decimals that the amounts of each feed (F, J) need, (F,); MOST_DECIMALS + 1 where one of them is not read."""
+    decimals = np.zeros(len(feed), dtype=np.int64)
+    readable = np.arange(len(feed))
+    for amounts in feed.T:  # a feed that is not readable by one amount need not be looked at by the next
+        decimals[readable] = np.maximum(decimals[readable], _decimals(amounts[readable]))
+        readable = readable[decimals[readable] <= MOST_DECIMALS]
+    return decimals
+
+
 def _decimals(values: FloatArray) -> NDArray[np.int64]:
-    """Smallest k with value == m / 10^k for a whole m below 2^53, or MOST_DECIMALS + 1 if there is none.
+    """Smallest k with value == m / 10^k for a whole m below 2^53, or MOST_DECIMALS + 1 if there is none; (n,).
 
     m / 10^k is rounded once, so equality means that the double is the one nearest to the decimal number.
     """
-    decimals = np.full(values.shape, MOST_DECIMALS + 1)
-    open_ = np.ones(values.shape, dtype=bool)
+    decimals = np.full(len(values), MOST_DECIMALS + 1)
+    open_ = np.arange(len(values))
     for k in range(MOST_DECIMALS + 1):
         power = 10.0**k
-        whole = np.rint(values * power)
-        found = open_ & (whole < LARGEST_WHOLE_NUMBER) & (whole / power == values)
-        decimals[found] = k
-        open_ &= ~found
-        if not open_.any():
+        whole = np.rint(values[open_] * power)
+        possible = whole < LARGEST_WHOLE_NUMBER
+        found = possible & (whole / power == values[open_])
+        decimals[open_[found]] = k
+        open_ = open_[possible & ~found]
+        if not open_.size:
             break
     return decimals
