@@ -18,8 +18,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
-from threadpoolctl import threadpool_limits
 
+from gibbsmin.array_settings import one_thread_for_linear_algebra
 from gibbsmin.boundaries.crossings import find_crossings
 from gibbsmin.boundaries.results import Boundary
 from gibbsmin.constants import STANDARD_PRESSURE
@@ -112,7 +112,7 @@ def _trace(function: _Function, solved: _Solved) -> Boundary:
     values = np.moveaxis(values, along, -1)
     lead = values.shape[:-1]
     positions = function.scale(scenario.axes[along].array)
-    with threadpool_limits(1, user_api="blas"):
+    with one_thread_for_linear_algebra():
         found = find_crossings(positions, values.reshape(-1, len(positions)), function)
     others = tuple(axis for axis in scenario.axes if axis.name != wanted.along)
     return Boundary(

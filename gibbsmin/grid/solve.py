@@ -10,14 +10,12 @@ import os
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
-from functools import cache
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from threadpoolctl import ThreadpoolController
 
-from gibbsmin.broadcasting import unbuffered
+from gibbsmin.array_settings import one_thread_for_linear_algebra, unbuffered
 from gibbsmin.grid.cloud import Cloud
 from gibbsmin.grid.map import is_dense, solve_nodes, solve_tile, tiles
 from gibbsmin.grid.phase_map import phase_tasks
@@ -195,17 +193,11 @@ def _from_nothing(cloud: Cloud, points: Indices, out: GridSolution) -> Iterator[
         yield task
 
 
-@cache
-def _linear_algebra() -> ThreadpoolController:
-    """Finding the libraries once is enough: it costs as much as solving a point."""
-    return ThreadpoolController()
-
-
 @contextmanager
 def _workers(threads: int | None, points: int) -> Iterator[ThreadPoolExecutor | None]:
     """A pool of threads, or None where one is enough, while the linear algebra keeps to one thread."""
     count = threads or available_cores()
-    with _linear_algebra().limit(limits=1, user_api="blas"):
+    with one_thread_for_linear_algebra():
         if count == 1 or points < SMALLEST_TASK:
             yield None
         else:

@@ -15,6 +15,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from gibbsmin.array_settings import one_thread_for_linear_algebra
 from gibbsmin.errors import ProblemError
 from gibbsmin.minimiser.components import Amounts, Floats, Indices, exact
 from gibbsmin.minimiser.grouping import alike
@@ -77,9 +78,9 @@ def minimise(
     answers = Answers.blank(points, *A.shape)
     problem = _Problem(A, is_condensed, b, c, answers)
     try:
-        for first in range(0, points, CHUNK):
-            chunk = np.arange(first, min(first + CHUNK, points))
-            problem.solve(chunk)
+        with one_thread_for_linear_algebra():
+            for first in range(0, points, CHUNK):
+                problem.solve(np.arange(first, min(first + CHUNK, points)))
     except UnboundedError:
         raise ProblemError(
             "some combination of species can be made from nothing: check the signs of the formula matrix"

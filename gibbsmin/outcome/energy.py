@@ -16,8 +16,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
-from threadpoolctl import threadpool_limits
 
+from gibbsmin.array_settings import one_thread_for_linear_algebra
 from gibbsmin.outcome.phases import atoms_of
 from gibbsmin.outcome.response import composition_response, response_beside_phases
 
@@ -154,8 +154,7 @@ def heat_capacities(dataset: xr.Dataset, table: ThermoTable) -> xr.Dataset:
     h_RT = table.enthalpy_RT(T.values.ravel())
     gas_constants = np.array([each.gas_constant for each in table.species])
     shift = np.empty(len(n))
-    # Products of matrices this small take several times longer on several BLAS threads than on one.
-    with threadpool_limits(1, user_api="blas"), np.errstate(invalid="ignore"):
+    with one_thread_for_linear_algebra(), np.errstate(invalid="ignore"):
         for start in range(0, len(n), _POINTS_AT_ONCE):
             part = slice(start, start + _POINTS_AT_ONCE)
             response, total = composition_response(table.formula_matrix, n[part], -h_RT[flat_T[part]])
@@ -201,7 +200,7 @@ def heat_capacities_with_phases(dataset: xr.Dataset, table: ThermoTable, phases:
     names = [str(name) for name in dataset["element"].values]
     A, B = atoms_of(table.species, names).T, atoms_of(phases.species, names).T
     shift = np.full(len(n), np.nan)
-    with threadpool_limits(1, user_api="blas"), np.errstate(invalid="ignore"):
+    with one_thread_for_linear_algebra(), np.errstate(invalid="ignore"):
         for pattern in np.unique(present, axis=0):
             members = np.flatnonzero((present == pattern).all(axis=1) & np.isfinite(n).all(axis=1))
             independent = np.linalg.matrix_rank(B[:, pattern]) == pattern.sum()

@@ -32,7 +32,7 @@ from typing import TypeAlias
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from gibbsmin.broadcasting import unbuffered
+from gibbsmin.array_settings import unbuffered
 from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.errors import TemperatureRangeError
 from gibbsmin.species.elements import sort_elements
