@@ -117,6 +117,7 @@ def all_text(figure: Figure) -> str:
         ("CO", r"$\mathregular{CO}$"),
         ("H3O+", r"$\mathregular{H_{3}O^{+}}$"),
         ("SO3-", r"$\mathregular{SO_{3}^{-}}$"),
+        ("Fe0.947O", r"$\mathregular{Fe_{0.947}O}$"),
         ("(HCOOH)2", r"$\mathregular{(HCOOH)_{2}}$"),
         ("H2O(l)", r"$\mathregular{H_{2}O(l)}$"),
         ("C(gr)", r"$\mathregular{C(gr)}$"),
@@ -137,6 +138,7 @@ def test_formulas_within_a_phrase_get_subscripts_too() -> None:
         r"conversion of $\mathregular{CH_{4}}$ in pass 2 at \$5"
     )
     assert with_formulas("T90 and Q2") == "T90 and Q2"  # no elements
+    assert with_formulas("Fe0.947O at 1.5 bar.") == r"$\mathregular{Fe_{0.947}O}$ at 1.5 bar."
 
 
 @pytest.mark.parametrize(
@@ -311,6 +313,37 @@ def test_unsolved_points_are_blank_hatched_and_counted() -> None:
     areas = [path for each in figure.axes[0].collections if each is not hatched for path in each.get_paths()]
     assert any(area.contains_point(beside) for area in areas)
     assert not any(area.contains_point(point) for area in areas)
+
+
+def test_a_long_number_beside_the_colour_scale_leaves_room_for_its_title() -> None:
+    field = field_of(made_up(ratios=[2.0])) * -1e-4
+    figure = drawn_map(field, scale_label="error of a mole fraction")
+    figure.canvas.draw()
+    title = figure.axes[-1].yaxis.label.get_window_extent()
+    assert title.x1 <= figure.bbox.x1
+    numbers = [text.get_window_extent() for text in figure.axes[-1].get_yticklabels()]
+    assert max(number.x1 for number in numbers) <= title.x0
+
+
+def test_a_temperature_among_the_results_is_shown_in_the_unit_of_the_axis() -> None:
+    """A dew point beside an axis in degC; where it has no value the point is none the less solved."""
+    dataset = made_up(ratios=[2.0])
+    point = xr.zeros_like(dataset["pressure"]) + dataset["temperature"]
+    point = point.expand_dims({"steam_to_carbon": dataset["steam_to_carbon"]}, 0)
+    point = point.transpose(*dataset["status"].dims).copy()
+    point.attrs = {"units": "K", "long_name": "dew point of H2O"}
+    point[0, 0, 0] = np.nan
+    dataset["dew_point"] = point
+    drawn = {each.name: each for each in figures_of(dataset, quantities=["dew_point"], units=UNITS)}
+    figure = drawn["map_dew_point"].figure
+    assert figure is not None
+    assert "(°C)" in figure.axes[-1].get_ylabel()
+    assert "1 of 99 points without a value" in all_text(figure)
+    numbers = [float(text.get_text().replace("−", "-")) for text in figure.axes[-1].get_yticklabels()]
+    shown = dataset.temperature.values - 273.15
+    steps = np.diff(numbers)
+    assert np.allclose(steps, steps[0])  # no decades: zero degrees is no zero
+    assert shown.min() <= numbers[1] <= numbers[-2] <= shown.max()
 
 
 def test_a_map_without_any_solved_point_is_not_drawn() -> None:

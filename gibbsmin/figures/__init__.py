@@ -113,7 +113,7 @@ def figures_of(
     for phase, variable in shown_phases(dataset):
         yield _phase(dataset, phase, variable, over_maps)
     for quantity in quantities:
-        yield _quantity(dataset[quantity], quantity, over_maps)
+        yield _quantity(dataset[quantity], quantity, dataset["status"] == 0, over_maps)
 
 
 def shown_phases(dataset: xr.Dataset) -> list[tuple[str, str]]:
@@ -169,10 +169,15 @@ def _map(field: xr.DataArray, name: str, title: str, label: str, common: Any) ->
     return Drawn(name, figure, "" if figure else _why_no_map(field))
 
 
-def _quantity(field: xr.DataArray, name: str, common: Any) -> Drawn:
+def _quantity(field: xr.DataArray, name: str, solved: xr.DataArray, common: Any) -> Drawn:
     """A map of a requested quantity or, where the grid is a line, its course along that."""
     words = str(field.attrs.get("long_name", name.replace("_", " ")))
     unit = str(field.attrs.get("units", "1"))
+    if unit == "K":  # a temperature, not a difference: no result that can be asked for is one
+        shown = common["units"].get("temperature", SI_UNITS["temperature"])
+        field, unit, common = shown.show(field), shown.symbol, {**common, "linear": True}
+    if bool((solved & field.isnull()).any()):  # a dew point beyond the data of the liquid, say
+        common = {**common, "blank_means": "without a value"}
     label = words if unit == "1" else f"{words} ({unit})"
     title = words[:1].upper() + words[1:]
     return _field(field, file_name(name), with_formulas(title), with_formulas(label), common)
@@ -183,8 +188,8 @@ def _field(field: xr.DataArray, name: str, title: str, label: str, common: Any) 
     spanned = sum(size > 1 for size in field.sizes.values())
     if spanned >= 2:
         phase_edge = bool((field == 0).any())  # beyond it the amount is a true zero
-        return _map(field, f"map_{name}", title, label, {**common, "linear": phase_edge})
-    of_lines = {key: value for key, value in common.items() if key != "boundaries"}
+        return _map(field, f"map_{name}", title, label, {"linear": phase_edge, **common})
+    of_lines = {key: value for key, value in common.items() if key in ("subtitle", "units")}
     figure = draw_lines({name: field}, title=title, value_label=label, name_lines=False, **of_lines)
     return Drawn(f"course_{name}", figure, "the grid is a single point" if spanned == 0 else "")
 

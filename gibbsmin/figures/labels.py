@@ -9,8 +9,10 @@ from gibbsmin.species.elements import ATOMIC_NUMBERS
 
 _COUNT = re.compile(r"(?<=[A-Za-z)\]])(\d+(?:\.\d+)?)")
 _CHARGE = re.compile(r"[+-]+$")
-_FORMULA = re.compile(r"(?:\d-)*(?:\(?[A-Z][a-z]?\d*(?:\)\d*)?)+(?:\((?:g|l|s|cr|gr|am|aq)\))?[+-]?$|^e-$")
-_WORD = re.compile(r"[A-Za-z0-9()+-]+")
+_FORMULA = re.compile(
+    r"(?:\d-)*(?:\(?[A-Z][a-z]?(?:\d+(?:\.\d+)?)?(?:\)\d*)?)+(?:\((?:g|l|s|cr|gr|am|aq)\))?[+-]?$|^e-$"
+)
+_WORD = re.compile(r"(?:[A-Za-z0-9()+-]|(?<=\d)\.(?=\d))+")
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _MINUS = "\N{MINUS SIGN}"
 _SMALLEST_PLAIN, _LARGEST_PLAIN = 1e-3, 1e5  # outside, a number is printed with a power of ten

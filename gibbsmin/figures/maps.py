@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Literal
 
 import numpy as np
@@ -27,6 +28,7 @@ from gibbsmin.figures.ticks import set_scale
 
 _ONE_PANEL = Geometry(panel_width=4.2, panel_height=3.1, right=1.0)
 _PANELS = Geometry(panel_width=2.15, panel_height=1.95, right=1.0)
+_USUAL_DIGITS, _DIGIT = 6, 0.062  # of a number beside the colour scale, and the width of one [inch]
 _FEW_POINTS = 150  # up to so many points a map marks each, so that its resolution can be seen
 _NO_CHANGE = 0.02  # of the colour scale: what changes a field by less is no axis worth drawing
 _ENOUGH_FOR_AN_AXIS = 3
@@ -42,13 +44,14 @@ def draw_map(
     units: Mapping[str, DisplayUnit] = SI_UNITS,
     boundaries: Sequence[BoundaryLines] = (),
     linear: bool = False,
+    blank_means: str = "not solved",
 ) -> Figure | None:
     """A filled contour map of `field` [any unit] over its first two axes with more than one value.
 
     Parameters: `field` has the dimensions of the grid only, NaN where a point is not solved; `title` and
     `scale_label` may hold matplotlib markup, `subtitle` is taken literally; `units` says how temperature and
     pressure are shown; `boundaries` are drawn over the map where they lie along one of its axes;
-    `linear` asks for even colour steps.
+    `linear` asks for even colour steps; `blank_means` is what a NaN says about its point.
 
     Returns None where there is no map to draw: fewer than two axes with several values, or the same
     value everywhere.
@@ -77,8 +80,10 @@ def draw_map(
         notes=[*notes, *plan.notes],
         unsolved=int(blank.sum()),
         points=blank.size,
+        blank=blank_means,
     )
-    page = Page(plan, _PANELS if len(plan.panels) > 1 else _ONE_PANEL, words)
+    geometry = _PANELS if len(plan.panels) > 1 else _ONE_PANEL
+    page = Page(plan, replace(geometry, right=geometry.right + _more_room(levels)), words)
     areas = None
     for panel in plan.panels:
         values = field.isel({**held, **panel.held}).transpose(up.name, across.name).values.astype(float)
@@ -201,6 +206,12 @@ def _hatch_blank(axes: Axes, across: Axis, up: Axis, blank: NDArray[np.bool_]) -
     )
     hatched.set_gid("unsolved")
     axes.add_collection(hatched, autolim=False)
+
+
+def _more_room(levels: Levels) -> float:
+    """Inches that the colour scale's longest number takes beyond what there is room for."""
+    longest = max(len(levels.text(place)) for place in levels.numbered)
+    return _DIGIT * max(0, longest - _USUAL_DIGITS)
 
 
 def _draw_colour_scale(page: Page, areas: QuadContourSet, levels: Levels, label: str) -> None:

@@ -45,6 +45,7 @@ class Words:
     notes: Sequence[str] = ()
     unsolved: int = 0
     points: int = 0
+    blank: str = "not solved"
 
 
 class Page:
@@ -141,7 +142,7 @@ class Page:
                 edgecolor=HATCH_COLOUR,
                 hatch=HATCH,
                 linewidth=0.7,
-                label=f"blank and hatched: {words.unsolved} of {words.points} points not solved",
+                label=f"blank and hatched: {words.unsolved} of {words.points} points {words.blank}",
             )
             legend = self.figure.legend(
                 handles=[patch],

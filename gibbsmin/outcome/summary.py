@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from gibbsmin.outcome.composition import amount_at_equilibrium
+from gibbsmin.reactions.text import TEMPERATURE_UNITS
 from gibbsmin.species import ThermoTable
 
 if TYPE_CHECKING:
@@ -204,12 +205,16 @@ def _row(name: str, array: xr.DataArray, outcome: Outcome) -> list[str]:
     if not np.isfinite(values).any():
         return [name, units, "-", "-", "-"]
     shown, factor = SHOWN_UNITS.get(units, (units, 1.0))
+    low, high = np.nanmin(values) * factor, np.nanmax(values) * factor
+    if units == "K":  # a temperature, not a difference: no result that can be asked for is one
+        unit = TEMPERATURE_UNITS[outcome.scenario.temperature.display_unit]
+        shown, low, high = unit.symbol, (low - unit.zero) / unit.size, (high - unit.zero) / unit.size
     place = np.unravel_index(int(np.nanargmax(values)), values.shape)
     return [
         name,
         shown,
-        f"{np.nanmin(values) * factor:.4g}",
-        f"{np.nanmax(values) * factor:.4g}",
+        f"{low:.4g}",
+        f"{high:.4g}",
         in_words([int(position) for position in place], outcome.scenario),
     ]
 
