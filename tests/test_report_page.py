@@ -148,6 +148,28 @@ def test_chosen_points_show_composition_and_results(read: Read, small: Outcome) 
         )
 
 
+def test_dew_points_are_in_the_unit_of_the_grid_and_may_have_no_value(small: Outcome) -> None:
+    """A temperature result reads like the axis; a point without one is none the less solved."""
+    dew = small.dataset["conversion of CH4"] * 0.0 + 350.0
+    dew.attrs = {
+        "units": "K",
+        "long_name": "temperature at which water condenses",
+        "description": "asked for",
+    }
+    first = chosen_points(small.scenario)[0]
+    dew.values[first] = np.nan
+    dew.values[chosen_points(small.scenario)[1]] = 300.0
+    page = Read(report_html(replace(small, dataset=small.dataset.assign({"dew point of H2O": dew}))))
+    rows = {row[0]: row for row in page.tables["Lowest and highest value of each result over the grid"]}
+    assert rows["dew point of H₂O"][1:3] == ["–", "26.85 °C"]
+    assert rows["dew point of H₂O"][4] == "76.85 °C"
+    caption = next(
+        each for each in page.tables if each.startswith("Composition and results at chosen points")
+    )
+    (row,) = (each for each in page.tables[caption] if "water condenses" in each[0])
+    assert row[1:5] == ["–", "no value", "26.85 °C", "76.85 °C"]
+
+
 def test_evidence_names_the_worst_point_and_counts(read: Read, small: Outcome) -> None:
     check = small.crosscheck
     rows = dict(row for row in read.tables[f"Points solved again by {check.library}"] if len(row) == 2)

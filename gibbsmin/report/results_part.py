@@ -6,6 +6,7 @@ import itertools
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from gibbsmin.boundaries.results import rows, summary_lines
 from gibbsmin.figures import key_species
@@ -13,13 +14,15 @@ from gibbsmin.figures.labels import number
 from gibbsmin.outcome.summary import key_results
 from gibbsmin.report.markup import Markup, bullets, pretty_name, pretty_words, table, tag
 from gibbsmin.report.quantities import quantities, unit_shown
-from gibbsmin.report.quantity_text import axis_value, place
+from gibbsmin.report.quantity_text import axis_value, place, state_value
 
 if TYPE_CHECKING:
     import xarray as xr
 
     from gibbsmin.outcome import Outcome
     from gibbsmin.scenario.model import Axis, Scenario
+
+FloatArray = NDArray[np.float64]
 
 _MOST_SPECIES = 16
 _LEAST_FRACTION = 1e-6  # a species below it at all chosen points is left to the charts
@@ -49,8 +52,22 @@ def _extreme_row(name: str, array: xr.DataArray, outcome: Outcome) -> list[objec
     ends: list[object] = []
     for at in (int(np.nanargmin(values)), int(np.nanargmax(values))):
         index = [int(i) for i in np.unravel_index(at, values.shape)]
-        ends += [number(float(values.flat[at]) * factor), place(index, outcome.scenario) or "–"]
-    return [shown, unit or "–", *ends]
+        ends += [
+            _value(float(values.flat[at]) * factor, unit, outcome.scenario),
+            place(index, outcome.scenario) or "–",
+        ]
+    return [shown, _unit(unit), *ends]
+
+
+def _unit(unit: str) -> str:
+    """What the unit's column says: temperatures carry theirs, which the reader may change."""
+    return "–" if unit in ("", "K") else unit
+
+
+def _value(value: float, unit: str, scenario: Scenario, *, solved: bool = True) -> object:
+    if not np.isfinite(value):
+        return "no value" if solved else "not solved"
+    return state_value(value, unit, scenario) if unit == "K" else number(value)
 
 
 def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
@@ -71,11 +88,16 @@ def _at_chosen_points(outcome: Outcome) -> list[Markup | None]:
         [pretty_words(axis.title), "", *(axis_value(axis, index[position]) for index in points)]
         for position, axis in enumerate(scenario.axes)
     ]
-    rows += [[pretty_name(names[i]), "mol/mol", *(_figure(column[i]) for column in columns)] for i in ordered]
+    solved = dataset["status"].values == 0
+
+    def cells(values: FloatArray, unit: str) -> list[object]:
+        return [_value(float(values[at]), unit, scenario, solved=bool(solved[at])) for at in points]
+
+    rows += [[pretty_name(names[i]), "mol/mol", *cells(fraction[..., i], "")] for i in ordered]
     for each in quantities(dataset):
         if each.kind in _SHOWN_KINDS and not each.flags:
             values = each.values.transpose(*dataset["status"].dims).values
-            rows.append([each.label, each.unit or "–", *(_figure(values[index]) for index in points)])
+            rows.append([each.label, _unit(each.unit), *cells(values, each.unit)])
     where = _window_words(outcome.scenario, len(points))
     held = [axis.title for axis in scenario.further_axes if len(axis) > 1]
     if held:
@@ -109,10 +131,6 @@ def _window_words(scenario: Scenario, points: int) -> str:
         return "the only point"
     varied = any(len(axis) > 1 for axis in scenario.further_axes)
     return "corners of temperature and pressure" + ("" if varied else ", and their middle")
-
-
-def _figure(value: float) -> str:
-    return number(float(value)) if np.isfinite(value) else "not solved"
 
 
 def boundaries_part(outcome: Outcome) -> list[Markup | None]:
