@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -353,6 +354,21 @@ def test_units_switch_in_charts_controls_and_tables(small: OpenedPage) -> None:
     assert " °C" not in page.page.inner_text("#results")
     choose(page, "pressure-unit", "bar(g)")
     assert page.page.inner_text("#point-place").endswith("bar(g)")
+
+
+def test_a_temperature_among_the_results_follows_the_unit_of_the_axis(opened: Opener) -> None:
+    small = small_outcome()
+    dew = 300.0 + 0.1 * (small.dataset["temperature"] - 700.0) + 0.0 * small.dataset["gap"]
+    dew = dew.transpose(*small.dataset["status"].dims)
+    dew.attrs = {"units": "K", "long_name": "dew point of water", "description": "asked for"}
+    page = opened(replace(small, dataset=small.dataset.assign({"dew point of H2O": dew})))
+    choose(page, "quantity", "dew point of H2O")
+    expected = dew.isel(steam_to_carbon=1).transpose("pressure", "temperature").values
+    for unit, symbol, zero in (("degC", "°C", 273.15), ("K", "K", 0.0)):
+        choose(page, "temperature-unit", unit)
+        np.testing.assert_allclose(map_values(page), expected - zero, atol=2 * PACKED * 400.0)
+        bar = page.run("() => document.getElementById('map').data.find((trace) => trace.colorbar).colorbar")
+        assert bar["title"]["text"] == symbol
 
 
 def test_unsolved_points_boundaries_and_activities_are_shown(opened: Opener) -> None:

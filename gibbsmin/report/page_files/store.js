@@ -46,8 +46,13 @@ const quantities = [
   }))),
   ...data.quantities.map((each) => {
     const values = unpacked(each.values);
-    return { id: each.name, label: each.label, group: each.group, kind: each.kind, unit: each.unit, flags: each.flags,
-      at: (point) => values[point] };
+    // A temperature among the results is read in the unit chosen for the axis.
+    const own = each.unit === 'K'
+      ? { get unit() { return unitOf('temperature', state).symbol; },
+        at: (point) => unitOf('temperature', state).show(values[point]) }
+      : { unit: each.unit, at: (point) => values[point] };
+    return Object.defineProperties({ id: each.name, label: each.label, group: each.group, kind: each.kind,
+      flags: each.flags }, Object.getOwnPropertyDescriptors(own));
   }),
 ];
 const quantityNamed = Object.fromEntries(quantities.map((each) => [each.id, each]));
