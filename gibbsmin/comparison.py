@@ -9,13 +9,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
 from gibbsmin.cantera_gas import CanteraGas, NoAnswerError
+from gibbsmin.compared_points import ComparedPoints
 from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.outcome.response import abundant_components, in_components
 
@@ -139,32 +140,24 @@ class Comparison:
         self._table = table
         self._A = np.asarray(table.formula_matrix, dtype=np.float64)
         self._names = [each.name for each in table.species]
-        self._dims = dims
+        self._points = ComparedPoints(dataset, dims)
         self._tolerance = tolerance
         self._fraction = dataset["mole_fraction"].values
         self._gap = dataset["gap"].values / dataset["gas_amount"].values
         self._ions = any(each.charge for each in table.species)
-        # What a point's temperature, pressure and feed are, as views over all points.
-        like = dataset["status"]
-        self._temperature = dataset["temperature"].broadcast_like(like).transpose(*dims).values
-        self._pressure = dataset["pressure"].broadcast_like(like).transpose(*dims).values
-        self._feed = dataset["feed_amount"]
-        self._feed_names = [str(name) for name in dataset["feed_species"].values]
-        self._feed_atoms = dataset["feed_atoms"].values
-        self._axes = {dim: dataset[dim].values if dim in dataset.coords else None for dim in dims}
         self._starts: dict[tuple[int, ...], FloatArray] = {}
         self.data_difference = 0.0
         self._failure = ""
         self._gas: CanteraGas | None = None
         self.library = CanteraGas.library()
         try:
-            self._gas = CanteraGas(table, (float(self._temperature.min()), float(self._temperature.max())))
+            self._gas = CanteraGas(table, self._points.temperatures)
         except NoAnswerError as error:
             self._failure = str(error)
 
     def at(self, index: tuple[int, ...]) -> CheckedPoint:
-        T, p = float(self._temperature[index]), float(self._pressure[index])
-        place = self._place(index, T, p)
+        T, p = self._points.conditions(index)
+        place = self._points.place(index)
         try:
             other, solver, standard = self._other_answer(index)
         except NoAnswerError as error:
@@ -211,7 +204,7 @@ class Comparison:
 
         Raises NoAnswerError.
         """
-        T, p = float(self._temperature[index]), float(self._pressure[index])
+        T, p = self._points.conditions(index)
         if self._gas is None:
             raise NoAnswerError(self._failure)
         if self._ions and T < LEAST_TEMPERATURE_WITH_IONS:
@@ -284,14 +277,8 @@ class Comparison:
         return float(energy / _atoms_counted(self._A, self._fed_atoms(index), fraction))
 
     def _fed_atoms(self, index: tuple[int, ...]) -> FloatArray:
-        atoms: FloatArray = self._feed_at(index) @ self._feed_atoms
+        atoms: FloatArray = self._points.feed(index) @ self._points.feed_atoms
         return atoms
-
-    def _feed_at(self, index: tuple[int, ...]) -> FloatArray:
-        where = dict(zip(self._dims, index, strict=True))
-        key = tuple(where[str(dim)] for dim in self._feed.dims[:-1])
-        feed: FloatArray = self._feed.values[key]
-        return feed
 
     def _start(self, index: tuple[int, ...]) -> FloatArray:
         """A composition with the feed's element totals, made of the listed gases: the feed itself if it can
@@ -299,32 +286,26 @@ class Comparison:
 
         Never our own answer: then Cantera would only have to agree.
         """
-        where = dict(zip(self._dims, index, strict=True))
-        key = tuple(where[str(dim)] for dim in self._feed.dims[:-1])
+        key = self._points.feed_index(index)
         if key not in self._starts:
-            self._starts[key] = self._new_start(self._feed_at(index))
+            self._starts[key] = self._new_start(self._points.feed(index))
         return self._starts[key]
 
     def _new_start(self, feed: FloatArray) -> FloatArray:
         if all(
-            name in self._names for name, amount in zip(self._feed_names, feed, strict=True) if amount > 0
+            name in self._names
+            for name, amount in zip(self._points.feed_names, feed, strict=True)
+            if amount > 0
         ):
             start = np.zeros(len(self._names))
-            for name, amount in zip(self._feed_names, feed, strict=True):
+            for name, amount in zip(self._points.feed_names, feed, strict=True):
                 if amount > 0:
                     start[self._names.index(name)] += amount
             return np.asarray(start / start.sum())
         from scipy.optimize import nnls
 
-        atoms = feed @ self._feed_atoms
+        atoms = feed @ self._points.feed_atoms
         start, rest = nnls(self._A, atoms / np.abs(atoms).sum())
         if rest > 1e-12:
             raise NoAnswerError("the listed gases cannot make up the feed's element totals to start from")
         return np.asarray(start / start.sum())
-
-    def _place(self, index: tuple[int, ...], T: float, p: float) -> tuple[tuple[str, float], ...]:
-        place: dict[str, Any] = {}
-        for (dim, values), position in zip(self._axes.items(), index, strict=True):
-            value = position if values is None else values[position]
-            place[dim] = float(value) if np.issubdtype(np.asarray(value).dtype, np.number) else str(value)
-        return tuple({**place, "temperature": T, "pressure": p}.items())

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from gibbsmin.cantera_gas import CanteraGas, NoAnswerError
 from gibbsmin.cantera_phases import SOLVERS, CanteraMixtures
+from gibbsmin.compared_points import ComparedPoints
 from gibbsmin.comparison import SAME_DATA, THRESHOLD, CheckedPoint, Verdict, imbalance
 from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.outcome.composition import amount_at_equilibrium
@@ -86,43 +87,33 @@ class PhaseComparison:
         self._A = np.asarray(table.formula_matrix, dtype=np.float64)
         self._condensed = np.array([each.state != "g" for each in table.species])
         self._names = [each.name for each in table.species]
-        self._dims = dims
+        self._points = ComparedPoints(dataset, dims)
         self._tolerance = tolerance
         phases = dataset["phase_amount"].isel(phase=dataset["phase_takes_part"].values == 1)
         self._amounts = np.concatenate([dataset["amount"].values, phases.values], axis=-1)
         self._gap = (dataset["gap"] / amount_at_equilibrium(dataset)).transpose(*dims).values
-        like = dataset["status"]
-        self._temperature = dataset["temperature"].broadcast_like(like).transpose(*dims).values
-        self._pressure = dataset["pressure"].broadcast_like(like).transpose(*dims).values
-        self._feed = dataset["feed_amount"].transpose(..., "feed_species")
-        self._feed_names = [str(name) for name in dataset["feed_species"].values]
-        self._feed_atoms = dataset["feed_atoms"].values
-        self._axes = {dim: dataset[dim].values if dim in dataset.coords else None for dim in dims}
         self.data_difference = 0.0
         self.library = CanteraGas.library()
         self._failure = ""
         self._mixtures: CanteraMixtures | None = None
-        span = float(self._temperature.min()), float(self._temperature.max())
         try:
-            self._mixtures = CanteraMixtures(table, span)
+            self._mixtures = CanteraMixtures(table, self._points.temperatures)
         except NoAnswerError as error:
             self._failure = str(error)
 
     def at(self, index: tuple[int, ...]) -> CheckedPoint:
-        T, p = float(self._temperature[index]), float(self._pressure[index])
-        place = self._place(index, T, p)
+        place = self._points.place(index)
         try:
-            return self._compared(index, place, T, p)
+            return self._compared(index, place)
         except NoAnswerError as error:
             return CheckedPoint(index, place, "no independent answer", reason=str(error))
 
-    def _compared(
-        self, index: tuple[int, ...], place: tuple[tuple[str, float], ...], T: float, p: float
-    ) -> CheckedPoint:
+    def _compared(self, index: tuple[int, ...], place: tuple[tuple[str, float], ...]) -> CheckedPoint:
         if self._mixtures is None:
             raise NoAnswerError(self._failure)
-        feed = self._feed.values[self._feed_index(index)]
-        fed = feed @ self._feed_atoms
+        T, p = self._points.conditions(index)
+        feed = self._points.feed(index)
+        fed = feed @ self._points.feed_atoms
         standard = self._table.gibbs_RT(np.array([T]))[0]
         absent = np.abs(self._A[fed == 0]).sum(axis=0) > 0
         taken = np.isfinite(standard) & ~absent
@@ -238,13 +229,3 @@ class PhaseComparison:
                 result[allowed] = start * size
                 return result
         raise NoAnswerError("the listed species cannot make up the feed's element totals to start from")
-
-    def _feed_index(self, index: tuple[int, ...]) -> tuple[int, ...]:
-        where = dict(zip(self._dims, index, strict=True))
-        return tuple(where[str(dim)] for dim in self._feed.dims[:-1])
-
-    def _place(self, index: tuple[int, ...], T: float, p: float) -> tuple[tuple[str, float], ...]:
-        place: dict[str, float] = {}
-        for (dim, values), position in zip(self._axes.items(), index, strict=True):
-            place[dim] = float(position if values is None else values[position])
-        return tuple({**place, "temperature": T, "pressure": p}.items())
