@@ -14,9 +14,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gibbsmin.grid.nodes import Floats, Indices
-from gibbsmin.grid.polish import TOTAL_CHANGE, NewtonStep
-from gibbsmin.minimiser.cholesky import Reals, are_few, diagonal, solve_packed
+from gibbsmin.grid.polish import NewtonStep
+from gibbsmin.minimiser.cholesky import Reals, are_few, diagonal, solve_few
 from gibbsmin.minimiser.components import Components
+from gibbsmin.minimiser.newton import FALLING, TOTAL_CHANGE
 
 MINOR = 1e-6
 """A species that makes up less of every sum of the Hessian's diagonal is left out."""
@@ -24,10 +25,8 @@ MINOR = 1e-6
 BOLD = 2.0
 """Growth of ln y that a step may bring unabridged: more than is certain to descend, as polishing proves the outcome."""
 
-FALLING = -0.9
-"""A species whose ln y wants to fall by almost 1 is far too abundant: Newton steps gain one e-fold each, so extend them."""
-
-LONGEST_EXTENSION = 4.0
+MOST_EXTENDED = 4.0
+"""Factor by which a step is lengthened, at the most, where a species is far too abundant."""
 
 DEEPEST = -10.0
 """Fall of ln y that a step may bring: beyond it species come up that the step did not know of."""
@@ -135,7 +134,7 @@ def _newton_step(sums: Reals, target: Reals, log_y: Reals) -> tuple[Reals, Reals
     total, balance, packed = sums[0], sums[1 : 1 + r], sums[1 + r :]
     condition = (diagonal(packed) * np.exp(-log_y)).max(axis=0)
     try:
-        to_target, to_balance = solve_packed(packed, target, balance)
+        to_target, to_balance = (x.T for x in solve_few(packed.T, target.T, balance.T))
     except np.linalg.LinAlgError:  # of a point that goes wrong
         lost = np.full(n, np.nan, log_y.dtype)
         return np.zeros_like(log_y), lost, lost
@@ -148,6 +147,6 @@ def _length(change: Reals) -> Reals:
     """(n,) part of a step to take, whose whole would change ln y by (q, n)."""
     rise = np.maximum(change.max(axis=0), SMALLEST_RISE)
     fall = change.min(axis=0)
-    extended = np.where(fall < FALLING, np.clip(1.0 / rise, 1.0, LONGEST_EXTENSION), 1.0)
+    extended = np.where(fall < FALLING, np.clip(1.0 / rise, 1.0, MOST_EXTENDED), 1.0)
     length = np.where(rise > BOLD, np.log1p(rise / BOLD) * (BOLD / rise), extended)
     return np.asarray(np.minimum(length, DEEPEST / np.minimum(fall, FALLING)).astype(change.dtype))

@@ -25,10 +25,10 @@ from numpy.typing import NDArray
 from gibbsmin.minimiser.certificate import shift_weight
 from gibbsmin.minimiser.cholesky import Factors, Reals, diagonal, product
 from gibbsmin.minimiser.components import Components
+from gibbsmin.minimiser.newton import TOTAL_CHANGE
 from gibbsmin.minimiser.posing import BALANCE_TOLERANCE, GAP_TOLERANCE, Posed
 
 Floats = NDArray[np.float64]
-Indices = NDArray[np.intp]
 
 SETTLED = 1e-2
 """Largest change of any ln y by a step with its own Hessian that lets the next, without, come near LAST_ERROR."""
@@ -38,9 +38,6 @@ LAST_ERROR = 1e-13
 
 ILL_CONDITIONED = 1e5
 """A diagonal of the Hessian above this multiple of the component itself: other components are called for."""
-
-TOTAL_CHANGE = 10.0
-"""Largest factor by which one step changes N."""
 
 TINY = 1e-290
 """Turnover below this is beyond what a double resolves."""

@@ -95,9 +95,6 @@ def solve_packed(packed: Reals, first: Reals, second: Reals) -> tuple[Reals, Rea
 
     Parameters: packed (r (r + 1) / 2, n), lower triangles row by row; first, second (r, n).
     """
-    if are_few(first.shape[1], len(first)):
-        x, y = solve_few(packed.T, first.T, second.T)
-        return x.T, y.T
     factors = Factors.of_packed(packed)
     return factors.solve(first), factors.solve(second)
 

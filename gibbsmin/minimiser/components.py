@@ -201,22 +201,17 @@ class Components:
 
     def scaled_amounts(self, element_amounts: Amounts, positions: Indices) -> list[Fraction]:
         """adj(B) b of one point, exactly: the amounts of some components times determinant over scale."""
-        b = [exact(value) for value in element_amounts]
-        rows = self._adjugate.tolist()
-        return [
-            sum((weight * value for weight, value in zip(rows[i], b, strict=True)), Fraction(0))
-            for i in positions
-        ]
+        numbers, common = _as_integers(element_amounts.tolist())
+        rows, _ = self._exact_rows
+        return [Fraction(sum(map(mul, rows[i], numbers)), common) for i in positions.tolist()]
 
     def exact_amounts(self, element_amounts: Amounts) -> list[Fraction]:
         """m = B^-1 b of one point, exactly."""
-        b = [exact(value) for value in element_amounts]
-        scale = self.system.scale[self.columns]
+        numbers, common = _as_integers(element_amounts.tolist())
+        below = common * int(self._determinant)
         return [
-            sum((weight * value for weight, value in zip(row, b, strict=True)), Fraction(0))
-            * int(factor)
-            / int(self._determinant)
-            for row, factor in zip(self._adjugate.tolist(), scale, strict=True)
+            Fraction(sum(map(mul, row, numbers)) * factor, below)
+            for row, factor in zip(*self._exact_rows, strict=True)
         ]
 
     def element_amounts(self, m: list[Fraction]) -> list[Fraction]:

@@ -100,7 +100,7 @@ def run_study(
         MissingPackageError: a cluster is named and distributed is not installed.
     """
     if not isinstance(study, Study):
-        if cluster is None and workers != 0:
+        if cluster is None and (available_cores() if workers is None else workers) > 1:
             expect_processes()
         study = load_study(study)
     home = Path(folder).resolve()
