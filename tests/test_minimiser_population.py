@@ -18,6 +18,7 @@ from tests.population import (
     problems,
     run_population,
 )
+from tests.reproducible import assert_drawn_again
 
 
 @pytest.mark.parametrize("block", range(4))
@@ -74,12 +75,7 @@ def test_batches_of_every_kind_of_feed_at_once() -> None:
 
 
 def test_problems_are_reproducible_one_by_one() -> None:
-    for case in problems(30, seed=5, first=100):
-        again = problem(5, case.index)
-        np.testing.assert_array_equal(case.formula_matrix, again.formula_matrix)
-        np.testing.assert_array_equal(case.element_amounts, again.element_amounts)
-        np.testing.assert_array_equal(case.potentials, again.potentials)
-        assert case.names == again.names
+    assert_drawn_again(problems(30, seed=5, first=100), problem, seed=5)
 
 
 def test_population_is_as_declared() -> None:
