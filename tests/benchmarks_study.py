@@ -20,7 +20,7 @@ from pathlib import Path
 from typing import Any
 
 from gibbsmin.study import load_study, run_study
-from gibbsmin.study.chunks import solver_table
+from gibbsmin.study.conditions import solver_table
 from gibbsmin.study.solving import solve_case
 
 SCENARIO = """\

@@ -21,10 +21,8 @@ from gibbsmin.study.chunks import (
     Chunk,
     FloatArray,
     Group,
-    conditions_of,
-    feed_atoms,
-    gas_table,
 )
+from gibbsmin.study.conditions import conditions_of, feed_atoms, gas_table
 
 if TYPE_CHECKING:
     from gibbsmin.species import ThermoTable

@@ -10,14 +10,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from gibbsmin.labelled import Labelled
-from gibbsmin.solving import Conditions, composition_matrix, thermo_table
 from gibbsmin.study.shards import ArrayPlan
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
-
-    from gibbsmin.species import Species, ThermoTable
     from gibbsmin.study.model import Case, Layout
 
 FloatArray = NDArray[np.float64]
@@ -91,36 +86,3 @@ class Receipt:
             return Receipt(content["inputs"], dict(content["files"]), tuple(content["rows"]))
         except (ValueError, KeyError, TypeError):
             return None
-
-
-def conditions_of(layout: Layout, case: Case) -> Conditions:
-    """A case as the solver takes it."""
-    table = solver_table(layout)
-    dims = tuple(axis.name for axis in layout.axes)
-    return Conditions(
-        table=table,
-        feed_species=layout.feed_species,
-        feed=Labelled((*dims[:-2], "feed_species"), case.feed),
-        feed_composition=feed_atoms(layout.feed_species, table),
-        element_amounts=case.element_amounts,
-        factor=case.factor,
-        temperature=Labelled((dims[-2],), case.temperature),
-        pressure=Labelled((dims[-1],), case.pressure),
-        coordinates={},
-        amount_unit=layout.amount_unit,
-        held_back=layout.held_back,
-    )
-
-
-def solver_table(layout: Layout) -> ThermoTable:
-    """Gases first, then the condensed phases that take part."""
-    return thermo_table([*layout.species, *layout.condensed], layout.extrapolate)
-
-
-def gas_table(layout: Layout) -> ThermoTable:
-    return thermo_table(layout.species, layout.extrapolate)
-
-
-def feed_atoms(feed_species: Sequence[Species], table: ThermoTable) -> FloatArray:
-    """Atoms of the table's elements in each species of the feed, (J, E)."""
-    return composition_matrix(feed_species, table.elements, [])

@@ -17,7 +17,8 @@ from gibbsmin.outcome.saving import species_digest
 from gibbsmin.outcome.wanted import named_results, variable_name
 from gibbsmin.solving import solve
 from gibbsmin.study.block import derived_results, species_needed
-from gibbsmin.study.chunks import NOT_COMPUTED, PHASE_VARIABLES, Chunk, Group, conditions_of
+from gibbsmin.study.chunks import NOT_COMPUTED, PHASE_VARIABLES, Chunk, Group
+from gibbsmin.study.conditions import conditions_of
 from gibbsmin.study.model import Case, Layout, Study
 from gibbsmin.study.shards import ArrayPlan, cases_per_part
 

@@ -9,8 +9,8 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from gibbsmin.solving import composition_matrix
 from gibbsmin.study.block import Block, largest
+from gibbsmin.study.conditions import feed_atoms
 
 if TYPE_CHECKING:
     from gibbsmin.species import ThermoTable
@@ -123,7 +123,7 @@ def _chosen_points(chunk: Chunk, block: Block, table: ThermoTable) -> xr.Dataset
             "feed_species": [each.name for each in layout.feed_species],
             "feed_atoms": (
                 ("feed_species", "element"),
-                composition_matrix(layout.feed_species, table.elements, []),
+                feed_atoms(layout.feed_species, table),
             ),
         },
     )

@@ -18,7 +18,8 @@ from gibbsmin.constants import STANDARD_PRESSURE
 from gibbsmin.grid import GridSolution
 from gibbsmin.solving import solve_arrays
 from gibbsmin.study.block import Block, values_of
-from gibbsmin.study.chunks import STORE, Chunk, FloatArray, Receipt, conditions_of, solver_table
+from gibbsmin.study.chunks import STORE, Chunk, FloatArray, Receipt
+from gibbsmin.study.conditions import conditions_of, solver_table
 from gibbsmin.study.rows import rows_of
 from gibbsmin.study.shards import shard, write_whole
 from gibbsmin.study.trail import Trail

@@ -28,7 +28,8 @@ import xarray as xr
 
 from gibbsmin.outcome.assembling import RESULT_NAMES
 from gibbsmin.scenario.reading import identifier
-from gibbsmin.study.chunks import RECEIPTS, STORE, Chunk, Group, Receipt, solver_table
+from gibbsmin.study.chunks import RECEIPTS, STORE, Chunk, Group, Receipt
+from gibbsmin.study.conditions import solver_table
 from gibbsmin.study.planning import Plan, axis_dims, point_dims
 from gibbsmin.study.shards import UNFINISHED, file_digest, write_whole
 from gibbsmin.study.trail import TRAILS
